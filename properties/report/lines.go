@@ -1,0 +1,57 @@
+package report
+
+import (
+	"bufio"
+	"fmt"
+	"io"
+	"strconv"
+	"strings"
+)
+
+// Lines prints one line per place, each of which an editor can follow: a
+// finding's headline, then the steps of its path that have a place.
+func Lines(w io.Writer, run *Run, opt Options) error {
+	b := bufio.NewWriter(w)
+	for i := range run.Result.Findings {
+		f := &run.Result.Findings[i]
+		word := "broken"
+		if f.Advice {
+			word = "advice"
+		}
+		var counts []string
+		for k, n := range f.CountNames {
+			counts = append(counts, n+" "+strconv.FormatInt(f.Counts[k], 10))
+		}
+		fmt.Fprintf(b, "%s: %s %s/%s: %s [%s]\n", place(f.Cause.Place), word, f.Rule, f.Claim, f.Message, strings.Join(counts, ", "))
+		n := len(f.Path)
+		digits := len(strconv.Itoa(n))
+		for k := range f.Path {
+			s := &f.Path[k]
+			if s.Place.Line == 0 {
+				continue
+			}
+			text := s.Text
+			if s.Place == f.Cause.Place && f.CauseText != "" && s.Kind != "event" {
+				text = f.CauseText
+			}
+			var c []string
+			for _, v := range s.Counts {
+				c = append(c, strconv.FormatInt(v, 10))
+			}
+			fmt.Fprintf(b, "%s:   %*d/%d %s: %s [%s]\n", place(s.Place), digits, k+1, n, s.Function, text, strings.Join(c, ", "))
+		}
+	}
+	for i := range run.Result.Open {
+		o := &run.Result.Open[i]
+		inst := ""
+		if o.Instance != "" {
+			inst = " for " + o.Instance
+		}
+		fmt.Fprintf(b, "%s: undecided %s/%s: %s%s: %s\n", place(o.Place), o.Rule, o.Claim, o.Root.Name, inst, o.StoppedBy)
+	}
+	if !opt.Quiet {
+		total, parts := Sentence(run.Result)
+		fmt.Fprintf(b, "%s: %s\n", total, parts)
+	}
+	return b.Flush()
+}

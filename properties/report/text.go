@@ -1,0 +1,479 @@
+package report
+
+import (
+	"bufio"
+	"fmt"
+	"io"
+	"path"
+	"slices"
+	"strconv"
+	"strings"
+	"unicode/utf8"
+
+	"pathtally/properties/judge"
+)
+
+// foldAfter is the number of steps from which a path is folded.
+const foldAfter = 14
+
+// Text prints findings, undecided questions and the closing summary.
+func Text(w io.Writer, run *Run, opt Options) error {
+	b := bufio.NewWriter(w)
+	t := &texter{w: b, opt: opt, run: run}
+	for i := range run.Result.Findings {
+		t.finding(&run.Result.Findings[i])
+		t.line("")
+	}
+	for i := range run.Result.Open {
+		t.open(&run.Result.Open[i])
+		t.line("")
+	}
+	if opt.Assumptions && len(run.Result.Assumptions) > 0 {
+		t.line("assumptions")
+		for _, n := range run.Result.Assumptions {
+			t.line("    %s: %s: %s", place(n.Place), n.Kind, n.Text)
+		}
+		t.line("")
+	}
+	if !opt.Quiet {
+		t.summary()
+	}
+	return b.Flush()
+}
+
+type texter struct {
+	w   *bufio.Writer
+	opt Options
+	run *Run
+}
+
+func (t *texter) line(format string, args ...any) {
+	s := fmt.Sprintf(format, args...)
+	t.w.WriteString(strings.TrimRight(s, " "))
+	t.w.WriteByte('\n')
+}
+
+// The few styles there are, as SGR parameters.
+const (
+	bold   = "1"
+	red    = "31"
+	yellow = "33"
+	faint  = "2"
+)
+
+func (t *texter) paint(style, s string) string {
+	if !t.opt.Colour || s == "" {
+		return s
+	}
+	return "\x1b[" + style + "m" + s + "\x1b[0m"
+}
+
+// pad fills s with spaces to n columns; it counts characters, not bytes.
+func pad(s string, n int) string {
+	if d := n - utf8.RuneCountInString(s); d > 0 {
+		return s + strings.Repeat(" ", d)
+	}
+	return s
+}
+
+func padLeft(s string, n int) string {
+	if d := n - utf8.RuneCountInString(s); d > 0 {
+		return strings.Repeat(" ", d) + s
+	}
+	return s
+}
+
+// cut shortens s to n columns; what is left out shows as an ellipsis.
+func cut(s string, n int) string {
+	if utf8.RuneCountInString(s) <= n {
+		return s
+	}
+	r := []rune(s)
+	return string(r[:max(n-1, 0)]) + "…"
+}
+
+// short is the last part of a function's name: Book of (*Desk).Book.
+func short(name string) string {
+	return name[strings.LastIndexByte(name, '.')+1:]
+}
+
+func (t *texter) finding(f *judge.Finding) {
+	advice := ""
+	if f.Advice {
+		advice = "advice: "
+	}
+	t.line("%s: %s%s", t.paint(bold, place(f.Cause.Place)), advice, t.paint(bold, f.Message))
+
+	type fact struct{ label, at, text string }
+	var facts []fact
+	if f.Opened.Place.Line > 0 && (f.Opened.Place != f.Cause.Place || f.CauseText == "") {
+		facts = append(facts, fact{f.OpenedVerb, place(f.Opened.Place), f.Opened.Text})
+	}
+	if f.CauseText != "" {
+		facts = append(facts, fact{"lost at", place(f.Cause.Place), f.CauseText})
+	}
+	if len(facts) == 1 && facts[0].label == "lost at" && f.Opened.Place == f.Cause.Place {
+		facts[0].label = "broken at"
+	}
+	widest := 0
+	for _, c := range facts {
+		widest = max(widest, len(c.at))
+	}
+	label := func(name, rest string) {
+		t.line("    %s %s", t.paint(faint, pad(name, 11)), rest)
+	}
+	for _, c := range facts {
+		label(c.label, pad(c.at, widest)+"    "+c.text)
+	}
+	if f.OtherWay != "" {
+		label("right way", f.OtherWay)
+	}
+	label("claim", f.Rule+"/"+f.Claim+", "+f.Point+": "+f.Formula)
+	if f.Reason != "" {
+		label("reason", f.Reason)
+	}
+	if f.Root.Name != f.Blame.Name || f.Root.Package != f.Blame.Package {
+		from := f.Root.Name
+		if f.Root.Place.Line > 0 {
+			from += " in " + place(f.Root.Place)
+		}
+		if f.Starts > 1 {
+			from += fmt.Sprintf(", and from %s", plural(f.Starts-1, "other start", "other starts"))
+		}
+		label("reached from", from)
+	}
+	for i, n := range f.Assumptions {
+		if i == 3 && !t.opt.Assumptions {
+			label("", fmt.Sprintf("and %d more (--assumptions)", len(f.Assumptions)-3))
+			break
+		}
+		name := ""
+		if i == 0 {
+			name = "assumes"
+		}
+		label(name, n.Text+"  ("+place(n.Place)+")")
+	}
+	t.line("")
+	t.path(f)
+	t.line("")
+	target := t.run.Target
+	if target == "" {
+		target = relative(f.Blame.Package, t.run.Module)
+	}
+	t.line("    %s", t.paint(faint, fmt.Sprintf("again: pathtally check %s --only %s/%s:%s", target, f.Rule, f.Claim, f.ID())))
+}
+
+// relative writes an import path as a pattern for the module's root.
+func relative(pkg, module string) string {
+	if pkg == module || pkg == "" {
+		return "."
+	}
+	if rest, ok := strings.CutPrefix(pkg, module+"/"); ok && module != "" {
+		return "./" + rest
+	}
+	return pkg
+}
+
+// row is one line of the table; step -1 is a fold of skip steps.
+type row struct {
+	step int
+	skip int
+}
+
+// fold keeps the first and the last step, steps that count, steps beside them
+// that say where one is, and the cause; what is left out becomes one row.
+func fold(f *judge.Finding, all bool) []row {
+	n := len(f.Path)
+	rows := make([]row, 0, n)
+	if all || n <= foldAfter {
+		for i := range n {
+			rows = append(rows, row{step: i})
+		}
+		return rows
+	}
+	keep := make([]bool, n)
+	keep[0], keep[n-1] = true, true
+	for i := range f.Path {
+		s := &f.Path[i]
+		if s.Changed {
+			keep[i] = true
+		}
+		if s.Place == f.Cause.Place || (s.Place == f.Opened.Place && f.Opened.Place.Line > 0) {
+			keep[i] = true
+			if i > 0 {
+				keep[i-1] = true
+			}
+		}
+		// The call that leads to a kept deeper step tells where one is.
+		if s.Changed {
+			for j := i - 1; j >= 0; j-- {
+				if f.Path[j].Depth < s.Depth {
+					keep[j] = true
+					break
+				}
+			}
+		}
+	}
+	for i := 0; i < n; {
+		if keep[i] {
+			rows = append(rows, row{step: i})
+			i++
+			continue
+		}
+		j := i
+		for j < n && !keep[j] {
+			j++
+		}
+		if j-i == 1 {
+			rows = append(rows, row{step: i})
+		} else {
+			rows = append(rows, row{step: -1, skip: j - i})
+		}
+		i = j
+	}
+	return rows
+}
+
+func (t *texter) path(f *judge.Finding) {
+	if len(f.Path) == 0 {
+		return
+	}
+	// One file: its lines suffice. Several: each change of file is named.
+	several := false
+	for _, s := range f.Path {
+		if s.Place.File != "" && f.Path[0].Place.File != "" && s.Place.File != f.Path[0].Place.File {
+			several = true
+		}
+	}
+	rows := fold(f, t.opt.Verbose)
+	at := make([]string, len(rows))
+	name := make([]string, len(rows))
+	atHead := "line"
+	if several {
+		atHead = "place"
+	}
+	atWidth, nameWidth := len(atHead), len("function")
+	for i, r := range rows {
+		if r.step < 0 {
+			continue
+		}
+		s := &f.Path[r.step]
+		if s.Place.Line > 0 {
+			at[i] = strconv.Itoa(s.Place.Line)
+			if several {
+				at[i] = path.Base(s.Place.File) + ":" + at[i]
+			}
+		}
+		name[i] = strings.Repeat("  ", min(s.Depth, 6)) + short(s.Function)
+		atWidth = max(atWidth, utf8.RuneCountInString(at[i]))
+		nameWidth = max(nameWidth, utf8.RuneCountInString(name[i]))
+	}
+	nameWidth = min(nameWidth, 24)
+	countWidth := make([]int, len(f.CountNames))
+	counts := 0
+	for i, n := range f.CountNames {
+		countWidth[i] = len(n)
+		for _, s := range f.Path {
+			countWidth[i] = max(countWidth[i], len(strconv.FormatInt(s.Counts[i], 10)))
+		}
+		counts += countWidth[i] + 2
+	}
+	used := 4 + atWidth + 2 + nameWidth + 2 + counts
+	room := t.opt.width() - used
+	textWidth := 0
+	for _, r := range rows {
+		if r.step >= 0 {
+			textWidth = max(textWidth, utf8.RuneCountInString(f.Path[r.step].Text))
+		}
+	}
+	textWidth = min(max(textWidth, 20), max(room, 20))
+
+	head := padLeft(atHead, atWidth) + "  " + pad("function", nameWidth+2+textWidth)
+	for i, n := range f.CountNames {
+		head += "  " + padLeft(n, countWidth[i])
+	}
+	t.line("    %s", t.paint(faint, strings.TrimRight(head, " ")))
+	for i, r := range rows {
+		if r.step < 0 {
+			t.line("    %s  %s", strings.Repeat(" ", atWidth), t.paint(faint, fmt.Sprintf("… %d steps, counts unchanged", r.skip)))
+			continue
+		}
+		s := &f.Path[r.step]
+		lost := s.Place == f.Cause.Place && s.Place.Line > 0
+		body := pad(cut(name[i], nameWidth), nameWidth) + "  " + pad(cut(s.Text, textWidth), textWidth)
+		last := r.step == len(f.Path)-1
+		numbers := ""
+		if s.Changed || last {
+			for k, c := range s.Counts {
+				numbers += "  " + padLeft(strconv.FormatInt(c, 10), countWidth[k])
+			}
+		}
+		if last && f.Fact != "" {
+			if used+textWidth+4+len(f.Fact) <= t.opt.width()+20 {
+				numbers += "    " + t.paint(red, f.Fact)
+			} else {
+				numbers += "\n" + strings.Repeat(" ", 4+atWidth+2) + t.paint(red, f.Fact)
+			}
+		}
+		if lost {
+			body = t.paint(bold, body)
+		}
+		t.line("    %s  %s%s", padLeft(at[i], atWidth), body, numbers)
+	}
+}
+
+func (t *texter) open(o *judge.Open) {
+	who := o.Root.Name
+	what := fmt.Sprintf("does %s keep %s?", who, o.Formula)
+	if o.Instance != "" {
+		what = fmt.Sprintf("does %s keep %s for %s?", who, o.Formula, o.Instance)
+	}
+	t.line("%s: %s: %s", t.paint(bold, place(o.Place)), t.paint(yellow, "undecided"), t.paint(bold, what))
+	label := func(name, rest string) {
+		t.line("    %s %s", t.paint(faint, pad(name, 11)), rest)
+	}
+	label("claim", o.Rule+"/"+o.Claim+", "+o.Point+": "+o.Formula)
+	label("stopped by", o.StoppedBy)
+	if o.SoFar != "" {
+		label("so far", o.SoFar)
+	}
+	if o.Steps > 0 {
+		target := t.run.Target
+		if target == "" {
+			target = relative(o.Root.Package, t.run.Module)
+		}
+		label("to settle", fmt.Sprintf("pathtally check %s --only %s/%s --steps %d", target, o.Rule, o.Claim, o.Steps))
+	}
+}
+
+// Sentence is the first line of the summary: "412 questions   409 hold, 2 broken, 1 undecided".
+func Sentence(r *judge.Result) (total, parts string) {
+	y := r.Tally
+	total = plural(y.Questions, "question", "questions")
+	p := []string{thousands(int64(y.Holds)) + " hold"}
+	if y.Broken > 0 {
+		s := thousands(int64(y.Broken)) + " broken"
+		if n := len(r.Findings); n != y.Broken {
+			s += " in " + plural(n, "finding", "findings")
+		}
+		if y.Advice > 0 {
+			s += " (" + thousands(int64(y.Advice)) + " of them advice)"
+		}
+		p = append(p, s)
+	}
+	if y.Undecided > 0 {
+		p = append(p, thousands(int64(y.Undecided))+" undecided")
+	}
+	return total, strings.Join(p, ", ")
+}
+
+func (t *texter) summary() {
+	run, r := t.run, t.run.Result
+	total, parts := Sentence(r)
+	if r.Tally.Broken > 0 {
+		parts = t.paint(red, parts)
+	}
+	col := max(len(total)+3, 16)
+	t.line("%s%s", pad(total, col), parts)
+	t.wrap(pad("judged", col), []string{
+		plural(run.Packages, "package", "packages"),
+		thousands(int64(run.WithEvents)) + " of " + plural(run.Functions, "function", "functions") + " meet an event",
+		plural(r.Tally.Roots, "starting point", "starting points"),
+		"build " + strings.Join(run.Builds, ", "),
+	})
+	if len(run.NotJudged) > 0 {
+		var s []string
+		for _, l := range run.NotJudged {
+			s = append(s, l.What+" ("+l.Why+")")
+		}
+		t.wrap(pad("not judged", col), s)
+	}
+	if n := len(r.Assumptions); n > 0 {
+		under := map[string]bool{}
+		for i := range r.Findings {
+			for _, a := range r.Findings[i].Assumptions {
+				under[place(a.Place)+a.Kind+a.Text] = true
+			}
+		}
+		s := plural(n, "assumption", "assumptions")
+		if len(r.Findings) > 0 {
+			s += fmt.Sprintf(", %d of them under a finding", len(under))
+		}
+		if !t.opt.Assumptions {
+			s += "       (--assumptions)"
+		}
+		t.line("%s%s", pad("rests on", col), s)
+	}
+	for _, c := range r.Cut {
+		t.line("%s%s", pad("cut short", col), c)
+		if !t.opt.Verbose {
+			if n := len(r.Cut) - 1; n > 0 {
+				t.line("%sand %s (--verbose)", pad("", col), plural(n, "other start", "other starts"))
+			}
+			break
+		}
+	}
+}
+
+// wrap prints a list with commas, broken into lines that fit.
+func (t *texter) wrap(head string, items []string) {
+	width := t.opt.width()
+	indent := utf8.RuneCountInString(head)
+	cur := head
+	empty := true
+	for i, it := range items {
+		if i < len(items)-1 {
+			it += ","
+		}
+		if !empty && utf8.RuneCountInString(cur)+1+utf8.RuneCountInString(it) > width {
+			t.line("%s", cur)
+			cur, empty = strings.Repeat(" ", indent), true
+		}
+		if !empty {
+			cur += " "
+		}
+		cur += it
+		empty = false
+	}
+	t.line("%s", cur)
+}
+
+// About lists every verdict on functions that match, with its grounds: holds too.
+func About(w io.Writer, run *Run, match func(judge.Question) bool, opt Options) error {
+	b := bufio.NewWriter(w)
+	t := &texter{w: b, opt: opt, run: run}
+	var qs []judge.Question
+	for _, q := range run.Result.Questions {
+		if match(q) {
+			qs = append(qs, q)
+		}
+	}
+	if len(qs) == 0 {
+		t.line("no question was asked about it: it meets no event of a rule, or it is judged only through its callers")
+		return b.Flush()
+	}
+	w1, w2 := 0, 0
+	for _, q := range qs {
+		w1 = max(w1, utf8.RuneCountInString(aboutWho(q)))
+		w2 = max(w2, len(q.Rule)+1+len(q.Claim))
+	}
+	slices.SortStableFunc(qs, func(a, b judge.Question) int { return strings.Compare(aboutWho(a), aboutWho(b)) })
+	for _, q := range qs {
+		v := pad(q.Verdict.String(), 9)
+		switch q.Verdict {
+		case judge.Broken:
+			v = t.paint(red, v)
+		case judge.Undecided:
+			v = t.paint(yellow, v)
+		}
+		t.line("%s  %s  %s  %s", v, pad(aboutWho(q), w1), pad(q.Rule+"/"+q.Claim, w2), q.Grounds)
+	}
+	return b.Flush()
+}
+
+func aboutWho(q judge.Question) string {
+	if q.Instance == "" {
+		return q.Root.Name
+	}
+	return q.Root.Name + " " + q.Instance
+}
