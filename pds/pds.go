@@ -1,13 +1,5 @@
-// Package pds holds pushdown systems whose steps carry counted events.
-//
-// A pushdown system has a finite set of control states p, q, a finite set of
-// stack symbols g, h, and rules ⟨q, g⟩ —effect→ ⟨q', w⟩ with |w| ≤ 2: the top
-// symbol is popped (w empty), replaced (one symbol) or replaced by two, the
-// first of which is on top. A configuration is a state and a stack; a run is a
-// sequence of rules. The effect of a rule is a vector of numbers, one per
-// count of the rule under judgement, that is added up along the run.
-//
-// Naming: p, q states; g, h symbols; r rules; plural for slices.
+// This file holds the types that the rooms hand to each other.
+
 package pds
 
 // StateID names a control state; 0 is no state.

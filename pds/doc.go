@@ -1,0 +1,63 @@
+// Package pds holds pushdown systems whose steps carry counted events.
+//
+// # Words
+//
+// A pushdown system has a finite set of control states p, q, a finite set of
+// stack symbols g, h, and rules ⟨q, g⟩ —effect→ ⟨q', w⟩ with |w| ≤ 2: the top
+// symbol is popped (w empty), replaced (one symbol) or replaced by two, the
+// first of which is on top. A configuration is a state and a stack; a head is a
+// state with the symbol on top; a run is a sequence of rules. The effect of a
+// rule is a vector of numbers, one per count of the rule under judgement, that
+// is added up along the run. A [Stop] rule ends the run where it stands.
+//
+// Naming: p, q states; g, h symbols; r rules; plural for slices.
+//
+// # One Go function as a system
+//
+//	func drain(n int) { mu.Lock(); mu.Unlock(); if n > 0 { drain(n - 1) } }
+//
+// is, in the form that [Table.String] prints,
+//
+//	run drain -> run unlock         [taken 1]
+//	run unlock -> run fork          [released 1]
+//	run fork -> back
+//	run fork -> run drain, leave
+//	back leave -> back
+//
+// # Data
+//
+// [System] is the interface that the rest of the program works on: a system
+// given on demand, which is never listed as a whole. [Table] is a system listed
+// in full, made by a [Builder] or read from JSON with [Read]; [Table.WriteJSON]
+// writes it, and [Explore] lists what can be reached of any System.
+//
+// # Checks
+//
+// [Sanity] asks a system whether it keeps the promises of System. [Replay]
+// executes a run rule by rule with a real stack; it shares nothing with the
+// searches that find runs, and what it says is exact for the model.
+//
+// # The JSON form
+//
+// Every state, symbol and count is declared before it is used, so that a
+// misspelt name is an error and not a new state. Names are unique per list.
+//
+//	{
+//	  "format": "pathtally-system", "version": 1,
+//	  "counts": ["taken", "released"],
+//	  "states": ["run", "back"], "symbols": ["f", "g"],
+//	  "starts": [{"state": "run", "symbol": "f"}],
+//	  "rules": [
+//	    {"from": {"state": "run", "symbol": "f"}, "kind": "push", "state": "run", "top": "f", "below": "g",
+//	     "effect": {"taken": 1}, "label": "f calls itself"}
+//	  ]
+//	}
+//
+// A rule's kind is stop, pop, step or push; "doubt" names a doubt and
+// "doubtEffect" what the step counts if the doubt is taken; "marks" lists names
+// of points of interest ("loss" is [MarkLoss]); "spawn" lists heads. The members
+// "parameters" and "predicates" of a system and "event" and "guard" of a rule
+// are reserved for systems with parameters of the sorts ref, int, string and
+// bool: they may be absent or empty, and anything else in them is refused. Any
+// other unknown member is an error.
+package pds
