@@ -1,0 +1,2 @@
+// Package load turns package patterns into type-checked packages and SSA.
+package load
