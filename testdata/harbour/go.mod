@@ -1,0 +1,3 @@
+module example/harbour
+
+go 1.26
