@@ -1,0 +1,349 @@
+package judge
+
+import (
+	"fmt"
+
+	"pathtally/pds"
+	"pathtally/properties"
+)
+
+// maxLook bounds the search for what stands on the way not taken, in
+// configurations. It only feeds a sentence.
+const maxLook = 2000
+
+// blamed says where a finding stands.
+type blamed struct {
+	act     int // index into trace.acts of the function to blame
+	opening int // index into trace.moves of the event that opens it; -1 if none
+	opened  Spot
+	cause   Spot
+	kind    properties.StepKind // of the cause
+	passed  *Spot               // the event that the way not taken has
+	other   string              // the way not taken
+	byFork  bool                // the cause stands behind a fork
+	mask    []ruleAt            // switched off before asking again
+}
+
+// blame finds the frame and the step that lose the instance.
+func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leaving) (*blamed, *stopped) {
+	w := a.weights
+	b := &blamed{opening: t.opening(w, bound)}
+	if b.opening >= 0 {
+		b.opened = j.spot(t, b.opening)
+	}
+	act, stop := j.frame(s, w, t, b.opening, by)
+	if stop != nil {
+		return nil, stop
+	}
+	b.act = act
+	if by == byMoment {
+		j.causeAtMoment(a, t, b)
+		return b, nil
+	}
+	from := b.opening + 1
+	if !opens(w) {
+		from = 0 // one too many: any fork before it may be to blame
+	}
+	for i := len(t.moves) - 1; i >= from; i-- {
+		mv := &t.moves[i]
+		rules := j.m.Rules(mv.head, nil)
+		for r := range rules {
+			if r == t.choices[i].Rule {
+				continue
+			}
+			least, stop := j.s.beside(a, t, i, r)
+			if stop != nil {
+				return nil, stop
+			}
+			if !least.none && (least.infinite || least.n <= bound) {
+				j.causeAtFork(w, t, i, r, b)
+				return b, nil
+			}
+		}
+	}
+	if !opens(w) && b.opening >= 0 {
+		b.cause, b.kind = b.opened, properties.StepEvent
+	} else {
+		b.cause, b.kind = j.leaving(t, b.act)
+	}
+	switch {
+	case b.opening >= 0:
+		b.mask = []ruleAt{{t.moves[b.opening].head, t.choices[b.opening].Rule}}
+	case len(t.moves) > 0:
+		last := len(t.moves) - 1
+		b.mask = []ruleAt{{t.moves[last].head, t.choices[last].Rule}}
+	}
+	return b, nil
+}
+
+// frame climbs from the function of the opening event while a function, judged
+// alone, is right or keeps a contract.
+func (j *judge) frame(s *properties.Start, w []int64, t *trace, opening int, by leaving) (int, *stopped) {
+	if opening < 0 {
+		return 0, nil
+	}
+	act := t.moves[opening].act
+	lent := -1 // innermost function that was passed for its contract
+	for act > 0 {
+		right, contract, stop := j.alone(s, w, t, act)
+		if stop != nil {
+			return 0, stop
+		}
+		if !right && !contract {
+			return act, nil
+		}
+		if contract && lent < 0 {
+			lent = act
+		}
+		act = t.acts[act].parent
+	}
+	if lent >= 0 && by != byMoment {
+		// Everybody up to the root is uniform: then nobody on this path settles, and
+		// the innermost one is the place to look at, unless a settler is known.
+		u := direction(w)
+		own, stop := j.surplusOf(s.Head, s.Born, u)
+		if stop != nil {
+			return 0, stop
+		}
+		if own.uniform && own.always != 0 && !j.settled(s, u) {
+			return lent, nil
+		}
+	}
+	return 0, nil
+}
+
+// settled says that some start of the instance's place gives back.
+func (j *judge) settled(s *properties.Start, u []int64) bool {
+	if s.Home == "" {
+		return false
+	}
+	for _, ti := range j.homes[s.Home] {
+		gives, stop := j.surplusOf(j.starts[ti].Head, j.starts[ti].Born, u)
+		if stop == nil && gives.uniform && gives.always < 0 {
+			return true
+		}
+	}
+	return false
+}
+
+// alone judges an activation from its entry head: right if it leaves nothing
+// or hands all on; a contract if it counts once and returns with the same
+// surplus, or with it exactly on success.
+func (j *judge) alone(s *properties.Start, w []int64, t *trace, act int) (right, contract bool, stop *stopped) {
+	head := t.acts[act].entry
+	owed := func(e properties.Exit) bool {
+		return !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
+	}
+	all, stop := j.span(head, w, func(properties.Exit) bool { return true })
+	if stop != nil || all.none {
+		return false, false, stop
+	}
+	rest, stop := j.span(head, w, owed)
+	if stop != nil {
+		return false, false, stop
+	}
+	if rest.none || rest.is(0) {
+		return true, false, nil
+	}
+	if t.within(act, w) != 1 {
+		return false, false, nil
+	}
+	own, stop := j.surplusOf(head, s.Born, direction(w))
+	if stop != nil {
+		return false, false, stop
+	}
+	return false, (own.uniform && own.always != 0) || (own.split && own.success != 0), nil
+}
+
+// spot describes the step of a move.
+func (j *judge) spot(t *trace, i int) Spot {
+	mv := &t.moves[i]
+	fn := t.acts[mv.act].fn
+	if mv.rule.Label == 0 {
+		return Spot{Place: fn.Place, Function: fn.Name}
+	}
+	st := j.m.Step(mv.rule.Label)
+	name := st.Func.Name
+	if name == "" {
+		name = fn.Name
+	}
+	return Spot{Place: st.Place, Function: name, Text: st.Text}
+}
+
+// causeAtMoment blames the event itself: for `always` the one that was counted
+// last, for `before` the one that the path stands before.
+func (j *judge) causeAtMoment(a ask, t *trace, b *blamed) {
+	b.kind = properties.StepEvent
+	if a.stops != 0 && t.end.Symbol != 0 {
+		for i, r := range j.m.Rules(t.end, nil) {
+			if r.Mark&a.stops == 0 {
+				continue
+			}
+			b.mask = append(b.mask, ruleAt{t.end, i})
+			if b.cause.Place.Line == 0 && r.Label != 0 {
+				st := j.m.Step(r.Label)
+				b.cause = Spot{Place: st.Place, Function: st.Func.Name, Text: st.Text}
+			}
+		}
+		if len(b.mask) > 0 {
+			if b.cause.Place.Line == 0 {
+				fn := j.m.Frame(t.end).Func
+				b.cause = Spot{Place: fn.Place, Function: fn.Name}
+			}
+			if b.opening < 0 {
+				// Nothing was counted: the function that comes to the event is to blame.
+				b.act = j.actAtEnd(t)
+			}
+			return
+		}
+	}
+	i := b.opening
+	if i < 0 {
+		i = len(t.moves) - 1
+	}
+	if i < 0 {
+		fn := t.acts[0].fn
+		b.cause = Spot{Place: fn.Place, Function: fn.Name}
+		return
+	}
+	b.cause = j.spot(t, i)
+	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
+}
+
+// actAtEnd is the activation in which the path stopped.
+func (j *judge) actAtEnd(t *trace) int {
+	h := 0
+	if n := len(t.run.Configs); n > 0 {
+		h = t.run.Configs[n-1].Depth
+	}
+	for i := len(t.acts) - 1; i > 0; i-- {
+		if t.acts[i].base <= h && t.acts[i].fn.ID == j.m.Frame(t.end).Func.ID {
+			return i
+		}
+	}
+	return 0
+}
+
+// causeAtFork blames the step behind the last fork whose other side still had
+// a right way out. A fork at which the path leaves its line (a call that
+// panics) is itself that step.
+func (j *judge) causeAtFork(w []int64, t *trace, i, other int, b *blamed) {
+	b.byFork = true
+	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
+	at := i
+	kind := properties.StepKind("")
+	if l := t.moves[i].rule.Label; l != 0 {
+		kind = j.m.Step(l).Kind
+	}
+	if kind == properties.StepBranch || kind == "" {
+		for k := i + 1; k < len(t.moves); k++ {
+			l := t.moves[k].rule.Label
+			if l == 0 {
+				continue
+			}
+			// A step of a caller is no longer what this fork leads to.
+			if st := j.m.Step(l); st.Place.Line > 0 && (kind == "" || t.inside(t.moves[k].act, t.moves[i].act)) {
+				at, kind = k, st.Kind
+			}
+			break
+		}
+	}
+	b.cause = j.spot(t, at)
+	b.kind = kind
+	rule := j.m.Rules(t.moves[i].head, nil)[other]
+	if rule.Label != 0 {
+		st := j.m.Step(rule.Label)
+		if st.Kind == properties.StepBranch && st.Text != "" {
+			b.other = fmt.Sprintf("%s, in line %d", st.Text, st.Place.Line)
+		}
+	}
+	b.passed = j.look(w, t, i, rule)
+}
+
+// look finds the nearest event that lowers w on the way not taken.
+func (j *judge) look(w []int64, t *trace, i int, other pds.Rule) *Spot {
+	type config struct {
+		state pds.StateID
+		stack []pds.SymbolID
+	}
+	// The stack before move i, by executing the moves up to there again.
+	stack := []pds.SymbolID{t.moves[0].head.Symbol}
+	for k := range i {
+		stack = apply(stack, t.moves[k].rule)
+	}
+	lowers := func(r pds.Rule) *Spot {
+		if dot(w, j.m.Vector(r.Effect)) >= 0 || r.Label == 0 {
+			return nil
+		}
+		st := j.m.Step(r.Label)
+		if st.Place.Line == 0 {
+			return nil
+		}
+		return &Spot{Place: st.Place, Function: st.Func.Name, Text: st.Text}
+	}
+	if s := lowers(other); s != nil {
+		return s
+	}
+	type key struct {
+		head   pds.Head
+		height int
+	}
+	if other.Kind == pds.Stop {
+		return nil
+	}
+	queue := []config{{other.State, apply(stack, other)}}
+	seen := map[key]bool{}
+	for n := 0; n < len(queue) && n < maxLook; n++ {
+		c := queue[n]
+		if len(c.stack) == 0 {
+			continue
+		}
+		h := pds.Head{State: c.state, Symbol: c.stack[len(c.stack)-1]}
+		k := key{h, len(c.stack)}
+		if seen[k] {
+			continue
+		}
+		seen[k] = true
+		for _, r := range j.m.Rules(h, nil) {
+			if s := lowers(r); s != nil {
+				return s
+			}
+			if r.Kind != pds.Stop {
+				queue = append(queue, config{r.State, apply(c.stack, r)})
+			}
+		}
+	}
+	return nil
+}
+
+// apply gives the stack behind a rule, leaving the given one as it is.
+func apply(stack []pds.SymbolID, r pds.Rule) []pds.SymbolID {
+	next := append(make([]pds.SymbolID, 0, len(stack)+1), stack[:len(stack)-1]...)
+	switch r.Kind {
+	case pds.Step:
+		next = append(next, r.Top)
+	case pds.Push:
+		next = append(next, r.Below, r.Top)
+	}
+	return next
+}
+
+// leaving is the last step that the blamed function shows: its return, or its
+// closing brace.
+func (j *judge) leaving(t *trace, act int) (Spot, properties.StepKind) {
+	for i := len(t.moves) - 1; i >= 0; i-- {
+		mv := &t.moves[i]
+		if mv.act != act || mv.rule.Label == 0 {
+			continue
+		}
+		st := j.m.Step(mv.rule.Label)
+		if st.Place.Line > 0 && (st.Kind == properties.StepReturn || st.Kind == properties.StepPanic || st.Kind == properties.StepEnd) {
+			return j.spot(t, i), st.Kind
+		}
+	}
+	fn := t.acts[act].fn
+	if fn.End.Line > 0 {
+		return Spot{Place: fn.End, Function: fn.Name, Text: "}"}, properties.StepEnd
+	}
+	return Spot{Place: fn.Place, Function: fn.Name}, properties.StepEnd
+}

@@ -1,0 +1,464 @@
+package judge
+
+import (
+	"crypto/sha256"
+	"encoding/hex"
+	"fmt"
+	"slices"
+	"strings"
+
+	"pathtally/pds"
+	"pathtally/properties"
+)
+
+// Options bounds the work on one rule.
+type Options struct {
+	// Steps is the budget of one start, in steps of the search; 0 is DefaultSteps.
+	Steps int64
+	// Causes bounds the findings of one claim at one start; 0 is DefaultCauses.
+	Causes int
+}
+
+const (
+	DefaultSteps  = 50_000_000
+	DefaultCauses = 20
+)
+
+// A RuleResult is what one rule gave on one model, before Merge.
+type RuleResult struct {
+	findings    []Finding
+	keys        []string // parallel to findings
+	open        []Open
+	questions   []Question
+	assumptions []properties.Note
+	instances   int
+	roots       []string
+	cut         []string
+}
+
+// A judge works on one rule and one model.
+type judge struct {
+	rule      *properties.ResolvedRule
+	m         properties.Model
+	s         searcher
+	opt       Options
+	starts    []properties.Start
+	homes     map[string][]int // starts by Home, in order
+	surpluses map[string]surplus
+	res       *RuleResult
+	keyAt     map[string]int // index into res.findings
+}
+
+// Judge gives the verdicts of one rule on one model. It panics with a *Bug if
+// a witness does not replay.
+func Judge(rule *properties.ResolvedRule, m properties.Model, opt Options) *RuleResult {
+	return newJudge(rule, m, newEngine(m, opt.steps()), opt).run()
+}
+
+func (o Options) steps() int64 {
+	if o.Steps > 0 {
+		return o.Steps
+	}
+	return DefaultSteps
+}
+
+func (o Options) causes() int {
+	if o.Causes > 0 {
+		return o.Causes
+	}
+	return DefaultCauses
+}
+
+func newJudge(rule *properties.ResolvedRule, m properties.Model, s searcher, opt Options) *judge {
+	j := &judge{rule: rule, m: m, s: s, opt: opt, starts: m.Starts(), homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
+	for i := range j.starts {
+		if h := j.starts[i].Home; h != "" && !j.starts[i].Born {
+			j.homes[h] = append(j.homes[h], i)
+		}
+	}
+	return j
+}
+
+func (j *judge) run() *RuleResult {
+	seenRoot := map[string]bool{}
+	for si := range j.starts {
+		s := &j.starts[si]
+		root := s.Root.Package + "." + s.Root.Name + fmt.Sprint(s.Root.Place)
+		if !seenRoot[root] {
+			seenRoot[root] = true
+			j.res.roots = append(j.res.roots, root)
+		}
+		if s.Instance != "" || s.Born {
+			j.res.instances++
+		}
+		for ci := range j.rule.Claims {
+			j.question(si, &j.rule.Claims[ci])
+		}
+	}
+	j.res.assumptions = append(j.res.assumptions, j.m.Assumptions()...)
+	return j.res
+}
+
+// question gives one claim at one start its verdict.
+func (j *judge) question(si int, c *properties.Claim) {
+	s := &j.starts[si]
+	ask := Question{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice, Root: s.Root, RootKind: s.Kind, Instance: s.Instance}
+	var grounds []string
+	var open *Open
+	if !c.Linear {
+		open = j.openFor(s, c, "form of the claim: it needs the set of all count vectors, which this version does not build", 0)
+	} else {
+		for qi := range c.Questions {
+			v := j.answer(si, c, qi)
+			switch v.verdict {
+			case Broken:
+				ask.Verdict = Broken
+				grounds = []string{v.ground}
+			case Undecided:
+				if open == nil {
+					open = v.open
+				}
+			default:
+				grounds = append(grounds, v.ground)
+			}
+			if ask.Verdict == Broken {
+				break
+			}
+		}
+		if len(c.Questions) == 0 {
+			grounds = []string{"no count can break it"}
+		}
+	}
+	if ask.Verdict != Broken && open != nil {
+		ask.Verdict = Undecided
+		grounds = []string{"stopped by " + open.StoppedBy}
+		j.res.open = append(j.res.open, *open)
+	}
+	slices.Sort(grounds)
+	ask.Grounds = strings.Join(slices.Compact(grounds), "; ")
+	j.res.questions = append(j.res.questions, ask)
+}
+
+type answered struct {
+	verdict Verdict
+	ground  string
+	open    *Open
+}
+
+// answer decides one inequality of a claim at one start.
+func (j *judge) answer(si int, c *properties.Claim, qi int) answered {
+	s, q := &j.starts[si], &c.Questions[qi]
+	a := j.asks(s, c, q.Weights)
+	bound := q.Bound
+	undecided := func(stop *stopped) answered {
+		o := j.openFor(s, c, stop.reason, stop.steps)
+		if stop.at.Symbol != 0 {
+			if p := j.m.Frame(stop.at).Func.Place; p.Line > 0 {
+				o.Place = p
+				o.StoppedBy += "; most of them in " + j.m.Frame(stop.at).Func.Name
+			}
+		}
+		o.SoFar = "nothing broken on what was seen; that is not an answer"
+		return answered{verdict: Undecided, open: o}
+	}
+	most, stop := j.s.greatest(a)
+	if stop != nil {
+		return undecided(stop)
+	}
+	if !most.over(bound) {
+		return answered{ground: holdsText(q, j.rule.Counts, most)}
+	}
+	ex, stop := j.excuseOf(si, c, q)
+	if stop != nil {
+		return undecided(stop)
+	}
+	var notes []properties.Note
+	if ex != nil {
+		notes = []properties.Note{ex.note}
+		bound += ex.credit
+		if ex.returns && isEnd(c.Point) {
+			inner := a.accept
+			a.accept = func(q pds.StateID) bool { return inner(q) && j.m.Exit(q).Kind != properties.ExitReturn }
+		}
+		most, stop = j.s.greatest(a)
+		if stop != nil {
+			return undecided(stop)
+		}
+		if !most.over(bound) {
+			j.res.assumptions = append(j.res.assumptions, ex.note)
+			return answered{ground: ex.note.Text}
+		}
+	}
+	plain := a
+	a.mend = true
+	most, stop = j.s.greatest(a)
+	if stop != nil {
+		return undecided(stop)
+	}
+	if !most.over(bound) {
+		return answered{verdict: Undecided, open: j.doubtOf(s, c, plain, bound)}
+	}
+	return j.causes(si, c, qi, a, bound, notes)
+}
+
+// doubtOf names the doubt that an answer hangs on: the first one on the
+// shortest breaking path that would make the path lighter.
+func (j *judge) doubtOf(s *properties.Start, c *properties.Claim, a ask, bound int64) *Open {
+	o := j.openFor(s, c, "a doubt", 0)
+	choices, stop := j.s.witness(a, bound)
+	if stop != nil {
+		o.StoppedBy = stop.reason
+		return o
+	}
+	t, err := replay(j.m, a.start, choices)
+	if err != nil {
+		j.bug("replaying an undecided path", s, err.Error())
+	}
+	if d := j.firstDoubt(t.run, choices, a.weights); d != 0 {
+		n := j.m.Doubt(d)
+		o.Doubt = n
+		o.StoppedBy = "doubt: " + n.Text
+		if n.Place.Line > 0 {
+			o.Place = n.Place
+		}
+		o.SoFar = "the claim holds if this step concerns the instance, and is broken if it does not"
+	}
+	return o
+}
+
+func (j *judge) firstDoubt(r pds.Run, choices []pds.Choice, w []int64) pds.DoubtID {
+	for i := range choices {
+		rule := r.Configs[i].Rule
+		if rule.Doubt != 0 && !choices[i].Doubt && dot(w, j.m.Vector(rule.DoubtEffect)) < dot(w, j.m.Vector(rule.Effect)) {
+			return rule.Doubt
+		}
+		for k, sub := range r.Configs[i].Spawned {
+			if k < len(choices[i].Spawned) {
+				if d := j.firstDoubt(sub, choices[i].Spawned[k], w); d != 0 {
+					return d
+				}
+			}
+		}
+	}
+	return 0
+}
+
+// causes lists the ways in which a broken question is lost, each once.
+func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, notes []properties.Note) answered {
+	s := &j.starts[si]
+	limit := j.opt.causes()
+	found := map[string]bool{}
+	first := ""
+	// The same cause may show in several contexts: those turns are bounded too.
+	for turn := 0; ; turn++ {
+		if len(found) >= limit || turn >= 4*limit {
+			j.res.cut = append(j.res.cut, fmt.Sprintf("%s: %d findings of %s/%s, more may exist", s.Root.Name, len(found), j.rule.Name, c.Name))
+			break
+		}
+		choices, stop := j.s.witness(a, bound)
+		if stop != nil && turn == 0 {
+			// The weight is known, the path is not: nothing is broken without a path.
+			return answered{verdict: Undecided, open: j.openFor(s, c, stop.reason, stop.steps)}
+		}
+		if choices == nil {
+			if turn == 0 && stop == nil {
+				j.bug("finding a witness", s, fmt.Sprintf("%s has a path over %d and no witness", c.Name, bound))
+			}
+			break
+		}
+		t, by := j.confirm(s, c, a, bound, choices)
+		f, key, mask, stop := j.finding(s, c, &c.Questions[qi], a, bound, t, by)
+		if stop != nil {
+			if turn == 0 {
+				return answered{verdict: Undecided, open: j.openFor(s, c, stop.reason, stop.steps)}
+			}
+			break
+		}
+		f.Assumptions = sortedNotes(append(f.Assumptions, notes...))
+		if !found[key] {
+			found[key] = true
+			j.add(f, key)
+			if first == "" {
+				first = f.Message
+			}
+		}
+		if len(mask) == 0 {
+			break
+		}
+		a.off = append(slices.Clone(a.off), mask...)
+	}
+	return answered{verdict: Broken, ground: first}
+}
+
+// confirm replays a witness; a contradiction is a bug of the program.
+func (j *judge) confirm(s *properties.Start, c *properties.Claim, a ask, bound int64, choices []pds.Choice) (*trace, leaving) {
+	t, err := replay(j.m, a.start, choices)
+	if err != nil {
+		j.bug("replaying a broken path of "+c.Name, s, err.Error())
+	}
+	by, ok := a.ended(j.m, t)
+	if !ok {
+		j.bug("replaying a broken path of "+c.Name, s, fmt.Sprintf("the path ends in state %d (%s), where the claim is not judged", t.run.State, t.run.End))
+	}
+	if got := dot(a.weights, t.total()); got <= bound {
+		j.bug("replaying a broken path of "+c.Name, s, fmt.Sprintf("weights %v give %d on %v, not more than %d", a.weights, got, t.total(), bound))
+	}
+	return t, by
+}
+
+func (j *judge) bug(stage string, s *properties.Start, text string) {
+	panic(&Bug{Stage: stage, Rule: j.rule.Name, Where: s.Root.Name + " " + s.Instance, Text: text})
+}
+
+// finding words one broken path.
+func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.Question, a ask, bound int64, t *trace, by leaving) (Finding, string, []ruleAt, *stopped) {
+	b, stop := j.blame(s, a, bound, t, by)
+	if stop != nil {
+		return Finding{}, "", nil, stop
+	}
+	fn := t.acts[b.act].fn
+	subj := subject(j.rule, s)
+	f := Finding{
+		Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice, Point: pointText(c.Point), Formula: c.Text, Broken: q.Text, Reason: c.Reason,
+		Root: s.Root, RootKind: s.Kind, Blame: fn, Instance: s.Instance, Home: s.Home,
+		Opened: b.opened, Cause: b.cause, CountNames: j.rule.Counts, Counts: t.total(), Starts: 1, OtherWay: b.other,
+	}
+	f.Message = message(fn.Name, j.rule, c, *q, subj, by, f.Counts, b.cause.Text)
+	word := ""
+	f.OpenedVerb = "counted at"
+	if b.opening >= 0 {
+		// The count that the opening event adds to names it: "taken at".
+		for k, d := range t.moves[b.opening].delta {
+			if d > 0 && a.weights[k] > 0 {
+				f.OpenedVerb = j.rule.Counts[k] + " at"
+				if subj != "" && opens(a.weights) {
+					word = j.rule.Counts[k]
+				}
+				break
+			}
+		}
+	}
+	f.CauseText = causeText(b.kind, by, c.Point, b.passed, b.cause.Place.File, *q, word)
+	if text, ok := instantiate(q.Text, j.rule.Counts, f.Counts); ok {
+		f.Fact = text + " is false"
+	}
+	f.Path = t.steps(j.m, j.lastStep(t, by))
+	f.Assumptions = j.assumed(t)
+	what := s.Home
+	if what == "" {
+		what = s.Instance
+	}
+	if what == "" {
+		what = "born " + b.opened.Text
+	}
+	f.Fingerprint = fingerprint(j.rule.Name, c.Name, q.Text, fn.Package, fn.Name, what, b.cause.Function, string(b.kind), b.cause.Text)
+	parts := []string{j.rule.Set, j.rule.Name, c.Name, fn.Package, fn.Name, what, placeKey(b.cause.Place)}
+	if !b.byFork || s.Born {
+		parts = append(parts, placeKey(b.opened.Place))
+	}
+	return f, strings.Join(parts, "\x00"), b.mask, nil
+}
+
+func placeKey(p properties.Place) string { return fmt.Sprintf("%s:%d:%d", p.File, p.Line, p.Column) }
+
+// lastStep is the line behind the last step: how the path ended.
+func (j *judge) lastStep(t *trace, by leaving) PathStep {
+	p := PathStep{Function: t.acts[0].fn.Name, Kind: properties.StepEnd}
+	switch by {
+	case byReturn:
+		p.Text = "has returned"
+	case byPanic:
+		p.Text = "the panic leaves it"
+	case byGoexit:
+		p.Text = "the goroutine ends"
+	case byLoss:
+		act := j.actAtEnd(t)
+		p.Function, p.Depth = t.acts[act].fn.Name, t.acts[act].depth
+		p.Text = "no name of it is left"
+	default:
+		act := j.actAtEnd(t)
+		p.Function, p.Depth = t.acts[act].fn.Name, t.acts[act].depth
+		p.Text = "at this moment"
+		if t.end.Symbol != 0 {
+			for _, r := range j.m.Rules(t.end, nil) {
+				if r.Mark != 0 && r.Label != 0 {
+					st := j.m.Step(r.Label)
+					p.Place, p.Text = st.Place, st.Text
+					break
+				}
+			}
+		}
+	}
+	return p
+}
+
+// assumed lists what the steps of a path rest on.
+func (j *judge) assumed(t *trace) []properties.Note {
+	var notes []properties.Note
+	var add func(r pds.Run)
+	add = func(r pds.Run) {
+		for i := 0; i+1 < len(r.Configs); i++ {
+			if l := r.Configs[i].Rule.Label; l != 0 {
+				notes = append(notes, j.m.Step(l).Assumes...)
+			}
+			for _, s := range r.Configs[i].Spawned {
+				add(s)
+			}
+		}
+	}
+	add(t.run)
+	return sortedNotes(notes)
+}
+
+// add keeps a finding; of two with one key the shorter path stays.
+func (j *judge) add(f Finding, key string) {
+	if at, ok := j.keyAt[key]; ok {
+		mergeFinding(&j.res.findings[at], f)
+		return
+	}
+	j.keyAt[key] = len(j.res.findings)
+	j.res.findings = append(j.res.findings, f)
+	j.res.keys = append(j.res.keys, key)
+}
+
+func (j *judge) openFor(s *properties.Start, c *properties.Claim, by string, steps int64) *Open {
+	o := &Open{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice, Point: pointText(c.Point), Formula: c.Text,
+		Root: s.Root, Instance: s.Instance, Place: s.Root.Place, StoppedBy: by}
+	if steps > 0 {
+		o.Steps = 4 * steps
+	}
+	return o
+}
+
+// holdsText says why a question holds, in counts.
+func holdsText(q *properties.Question, names []string, g greatestWeight) string {
+	if g.none {
+		return "no path comes to this checkpoint"
+	}
+	var b strings.Builder
+	for i, w := range q.Weights {
+		switch {
+		case w == 0:
+			continue
+		case b.Len() == 0 && w < 0:
+			b.WriteString("-")
+		case b.Len() > 0 && w < 0:
+			b.WriteString(" - ")
+		case b.Len() > 0:
+			b.WriteString(" + ")
+		}
+		if w != 1 && w != -1 {
+			fmt.Fprintf(&b, "%d ", max(w, -w))
+		}
+		b.WriteString(names[i])
+	}
+	if b.Len() == 0 {
+		return "it speaks of no count"
+	}
+	return fmt.Sprintf("the greatest %s is %d", b.String(), g.n)
+}
+
+func fingerprint(parts ...string) string {
+	h := sha256.Sum256([]byte(strings.Join(parts, "\x00")))
+	return hex.EncodeToString(h[:8])
+}
