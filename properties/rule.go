@@ -4,6 +4,7 @@ import (
 	"go/types"
 
 	"pathtally/pds"
+	"pathtally/properties/syntax"
 )
 
 // A ResolvedRule is a rule whose names were found in the packages of the build. It is all that
@@ -21,6 +22,36 @@ type ResolvedRule struct {
 	Counts []string     // names; index = index into count vectors
 	Events []EventMatch // in source order; for one call the first match of each count counts (union of lines)
 	Claims []Claim
+	// Models are the rule's own models of code out of sight, for this rule only.
+	Models []CallModel
+	// BuiltIn: the rule comes with the tool.
+	BuiltIn bool
+	// Dir is the folder, relative to the module root with forward slashes, to whose packages (and those
+	// below it) the rule applies; "." for the whole module.
+	Dir string
+
+	decl *syntax.Rule // never nil in a rule that Resolve made
+	file *RuleFile
+}
+
+// An Effect is what a model says of code out of sight.
+type Effect uint8
+
+const (
+	Calls        Effect = iota + 1 // the function calls its argument Arg
+	Spawns                         // the function starts its argument Arg in a goroutine
+	Keeps                          // the function keeps its argument Arg: it is reachable from outside afterwards
+	Yields                         // the result is another name of the argument Arg
+	NeverReturns                   // the function does not return
+)
+
+// CallModel is a resolved `model` line: each of Callees has the effect.
+type CallModel struct {
+	Callees []Callee
+	Effect  Effect
+	Arg     int // 0 the receiver, from 1 the arguments; meaningless for NeverReturns
+	Pos     string
+	Text    string // the line as written
 }
 
 // EachParam is an instance parameter.
@@ -49,6 +80,9 @@ type EventMatch struct {
 type Callee struct {
 	Obj       *types.Func // origin (generic) object
 	Interface bool        // Obj is a method of an interface: matches calls through it and implementations of it
+	// Recv is the receiver's type as the rule names it, nil for a function. With Interface it can be larger
+	// than the interface that declares Obj: (io.ReadCloser).Close is declared by io.Closer.
+	Recv types.Type
 }
 
 // Pat is a pattern for one value; nil matches anything.
@@ -103,7 +137,10 @@ type Claim struct {
 	// Exact for a conjunction of linear inequalities. Empty if the claim needs the count image (Linear false).
 	Questions []Question
 	Linear    bool
-	Pos       string
+	// Cases is the negation of the claim in disjunctive form, exact in every case: the claim is broken iff
+	// some path to the checkpoint has Weights·counts > Bound for all questions of one of the cases. Never empty.
+	Cases [][]Question
+	Pos   string
 }
 
 // Question asks for a path with Weights·counts > Bound.
