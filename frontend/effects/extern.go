@@ -1,0 +1,146 @@
+package effects
+
+// This file says what a call of a function without body may do, from the types
+// of its arguments and from models.
+
+import (
+	"go/types"
+
+	"golang.org/x/tools/go/ssa"
+)
+
+// extern is what a call of a function without body may overwrite.
+type extern struct {
+	direct []*set // by argument: places of the object itself
+	deep   *set   // places of objects reached from the arguments
+}
+
+// reach is what code of one package may write through a value of one type.
+type reach struct{ direct, deep *set }
+
+type reachKey struct {
+	pkg *types.Package
+	typ int32
+}
+
+// externCall fills st.ext and adds sites for what the callee may call back.
+func (s *scanner) externCall(st *site, fn *ssa.Function) {
+	st.ext = &extern{direct: make([]*set, len(st.args))}
+	model := modelOf(fn)
+	var pkg *types.Package
+	if obj := fn.Object(); obj != nil {
+		pkg = obj.Pkg()
+	}
+	for k, a := range st.args {
+		dyn := a
+		if mi, ok := a.(*ssa.MakeInterface); ok {
+			dyn = mi.X
+			if iface, ok := a.Type().Underlying().(*types.Interface); ok && !model.noCalls {
+				s.callbackMethods(st, mi.X.Type(), iface)
+			}
+		}
+		if _, ok := a.Type().Underlying().(*types.Signature); ok && !model.noCalls {
+			if cb, _ := calleeOf(a); cb != nil {
+				s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(cb)})
+			}
+		}
+		if model.noWrites {
+			continue
+		}
+		r := s.t.reachOf(pkg, dyn.Type())
+		st.ext.direct[k] = r.direct
+		st.ext.deep = s.t.sets.union(st.ext.deep, r.deep)
+	}
+}
+
+// callbackMethods adds the methods of a value that code out of sight gets as an
+// interface.
+func (s *scanner) callbackMethods(st *site, typ types.Type, iface *types.Interface) {
+	for m := range iface.Methods() {
+		sel := s.t.prog.MethodSets.MethodSet(typ).Lookup(m.Pkg(), m.Name())
+		if sel == nil {
+			continue
+		}
+		if fn := s.t.prog.MethodValue(sel); fn != nil && !isBodyless(fn) {
+			s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(fn)})
+		}
+	}
+}
+
+// reachOf returns what code of pkg may write through a value of type typ. Fields
+// that only packages with loaded bodies can name are out of its reach.
+func (t *Table) reachOf(pkg *types.Package, typ types.Type) reach {
+	key := reachKey{pkg, t.places.typeID(typ)}
+	if r, ok := t.reaches[key]; ok {
+		return r
+	}
+	var direct, deep []placeID
+	seen := map[int32]bool{}
+	var walk func(typ types.Type, depth int)
+	var pointee func(typ types.Type, depth int)
+	writable := func(f *types.Var) bool {
+		return f.Exported() || f.Pkg() == pkg || f.Pkg() == nil || !t.bodies[f.Pkg()]
+	}
+	add := func(p placeID, depth int) {
+		if depth <= 1 {
+			direct = append(direct, p)
+		} else {
+			deep = append(deep, p)
+		}
+	}
+	// walk follows a value; pointee adds the places of a memory object.
+	walk = func(typ types.Type, depth int) {
+		switch u := typ.Underlying().(type) {
+		case *types.Pointer:
+			add(t.places.cellID(u.Elem()), depth+1)
+			pointee(u.Elem(), depth+1)
+		case *types.Slice:
+			add(t.places.elemID(u.Elem()), depth+1)
+			pointee(u.Elem(), depth+1)
+		case *types.Map:
+			add(t.places.elemID(u.Elem()), depth+1)
+			pointee(u.Elem(), depth+1)
+			pointee(u.Key(), depth+2)
+		case *types.Chan:
+			pointee(u.Elem(), depth+2)
+		case *types.Struct:
+			if depth > 0 {
+				break // pointee did it
+			}
+			for f := range u.Fields() {
+				if writable(f) {
+					walk(f.Type(), depth)
+				}
+			}
+		case *types.Array:
+			walk(u.Elem(), depth)
+		}
+	}
+	pointee = func(typ types.Type, depth int) {
+		id := t.places.typeID(typ)
+		if depth > 1 {
+			if seen[id] {
+				return
+			}
+			seen[id] = true
+		}
+		switch u := typ.Underlying().(type) {
+		case *types.Struct:
+			for f := range u.Fields() {
+				if writable(f) {
+					add(t.places.seeField(f), depth)
+					pointee(f.Type(), depth)
+				}
+			}
+		case *types.Array:
+			add(t.places.elemID(u.Elem()), depth)
+			pointee(u.Elem(), depth)
+		default:
+			walk(typ, depth)
+		}
+	}
+	walk(typ, 0)
+	r := reach{t.sets.of(direct...), t.sets.of(deep...)}
+	t.reaches[key] = r
+	return r
+}
