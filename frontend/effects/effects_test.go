@@ -186,9 +186,9 @@ func (b *built) find(name string) *ssa.Function {
 
 // TestSources checks the "want" comments of testdata: a line
 //
-//	//want NAME LINE
+//	// want NAME LINE
 //
-// says that the summary of function NAME prints LINE; "//want NAME !PREFIX" that
+// says that the summary of function NAME prints LINE; "// want NAME !PREFIX" that
 // no line starts with PREFIX.
 func TestSources(t *testing.T) {
 	files, err := filepath.Glob("testdata/*.go")
@@ -205,7 +205,7 @@ func TestSources(t *testing.T) {
 			wants := 0
 			for _, g := range b.file.Comments {
 				for _, c := range g.List {
-					rest, ok := strings.CutPrefix(c.Text, "//want ")
+					rest, ok := strings.CutPrefix(c.Text, "// want ")
 					if !ok {
 						continue
 					}
