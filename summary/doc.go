@@ -21,6 +21,7 @@
 // # Phases
 //
 //  1. Saturation ([Engine.Saturate]): which heads are reached, and their exits.
+//
 //  2. Grammar (grammar.go): nonterminals and productions, built when first used:
 //
 //     C[q g r]  from ⟨q, g⟩ until g is popped in r      closed
@@ -37,12 +38,15 @@
 //     Open nonterminals come from the system itself and not from the grammar of
 //     ended runs: for { mu.Lock() } has no ended run, and still every moment of it
 //     counts.
+//
 //  3. Greatest weights ([Solution]): what has no run is dropped; then, component
 //     by component, values rise from nothing over (max, +); a cycle among the best
 //     productions is a pump with a gain, and the component and all that uses it are
 //     unbounded.
+//
 //  4. Witnesses ([Solution.Witness]): not the heaviest run but a shortest one past
 //     a bound, as choices that [pds.Replay] executes.
+//
 //  5. Blame ([Solution.AlongPath]): what could still have come of each
 //     configuration of a run.
 //
