@@ -39,6 +39,9 @@ func (prog *Program) build(cfg *Config, progress func(string, int, int)) error {
 			continue
 		}
 		if p.Bodies {
+			if p.c != nil {
+				prog.SSA.CreatePackage(p.c, nil, nil, false)
+			}
 			p.SSA = prog.SSA.CreatePackage(p.Types, p.Syntax, p.Info, true)
 			todo = append(todo, p)
 		} else {
@@ -85,6 +88,7 @@ func (prog *Program) build(cfg *Config, progress func(string, int, int)) error {
 		return failed
 	}
 	prog.indexFiles()
+	prog.indexFunctions()
 	return nil
 }
 

@@ -7,14 +7,12 @@ import (
 	"go/types"
 	"slices"
 	"strings"
-	"sync"
 
 	"golang.org/x/tools/go/ssa"
 )
 
-// functionIndex is computed when it is first asked for.
+// functionIndex is what Functions, Wrappers and Uninstantiated answer from.
 type functionIndex struct {
-	once     sync.Once
 	list     []*ssa.Function
 	wrappers []*ssa.Function
 	unused   map[*ssa.Function]bool // generic functions without any instance
@@ -30,14 +28,12 @@ type functionIndex struct {
 // The order is fixed: by path of the package whose source holds the function,
 // then by position, then by name. The caller must not change the slice.
 func (prog *Program) Functions() []*ssa.Function {
-	prog.functions.once.Do(prog.indexFunctions)
 	return prog.functions.list
 }
 
 // Wrappers lists the functions with blocks that have no source of their own
 // and that Functions leaves out, in the same order.
 func (prog *Program) Wrappers() []*ssa.Function {
-	prog.functions.once.Do(prog.indexFunctions)
 	return prog.functions.wrappers
 }
 
@@ -45,13 +41,15 @@ func (prog *Program) Wrappers() []*ssa.Function {
 // nothing in the program instantiates. Its body has types with parameters,
 // so calls in it may have no callee.
 func (prog *Program) Uninstantiated(fn *ssa.Function) bool {
-	prog.functions.once.Do(prog.indexFunctions)
 	for fn.Parent() != nil {
 		fn = fn.Parent()
 	}
 	return prog.functions.unused[fn]
 }
 
+// indexFunctions finds the functions. Declared ones come from the packages;
+// instances and wrappers are met as operands, and methods of instantiated
+// types that only an interface calls through the types that are converted.
 func (prog *Program) indexFunctions() {
 	seen := map[*ssa.Function]bool{}
 	var todo []*ssa.Function
@@ -138,6 +136,7 @@ func (prog *Program) indexFunctions() {
 	}
 	prog.functions.list = prog.sortFunctions(list)
 	prog.functions.wrappers = prog.sortFunctions(wrappers)
+	prog.Stats.Functions = len(list)
 }
 
 // isInstance reports whether t is an instantiated named type or a pointer to one.
@@ -162,7 +161,6 @@ func (prog *Program) sortFunctions(fns []*ssa.Function) []*ssa.Function {
 	type key struct {
 		fn   *ssa.Function
 		path string
-		name string
 	}
 	keys := make([]key, len(fns))
 	for i, fn := range fns {
@@ -170,7 +168,6 @@ func (prog *Program) sortFunctions(fns []*ssa.Function) []*ssa.Function {
 		if p := prog.PackageOfFunction(fn); p != nil {
 			keys[i].path = p.Path
 		}
-		keys[i].name = fn.String()
 	}
 	slices.SortFunc(keys, func(a, b key) int {
 		if c := strings.Compare(a.path, b.path); c != 0 {
@@ -179,7 +176,7 @@ func (prog *Program) sortFunctions(fns []*ssa.Function) []*ssa.Function {
 		if c := cmp.Compare(a.fn.Pos(), b.fn.Pos()); c != 0 {
 			return c
 		}
-		return strings.Compare(a.name, b.name)
+		return strings.Compare(a.fn.String(), b.fn.String())
 	})
 	for i, k := range keys {
 		fns[i] = k.fn

@@ -180,7 +180,6 @@ func commandError(cfg *Config, dir, stderr string, err error) error {
 }
 
 var (
-	needsGo    = regexp.MustCompile(`(?:requires go >= |go )(\d[0-9A-Za-z.]*)`)
 	namesPlace = regexp.MustCompile(`^(\S+\.(?:mod|work|sum)(?::\d+(?::\d+)?)?):\s+(.*)$`)
 )
 
@@ -192,6 +191,9 @@ func classify(dir, stderr string) *Error {
 	for line := range strings.Lines(text) {
 		line = strings.TrimSpace(line)
 		line = strings.TrimPrefix(line, "go: ")
+		if strings.HasPrefix(line, "errors parsing ") && strings.HasSuffix(line, ":") {
+			continue // the next line says the same with a place
+		}
 		if line != "" && !strings.HasPrefix(line, "warning: ") {
 			lines = append(lines, line)
 		}
@@ -210,16 +212,20 @@ func classify(dir, stderr string) *Error {
 		strings.Contains(first, "golang.org/toolchain"):
 		e.Kind = NewerGo
 	case needsModule(first):
-		e.Kind = NoModule
-		e.Place = dir
-		e.Message = "no go.mod in this folder or above it; run pathtally inside of a module, or name packages of the standard library"
+		return noModule(dir)
 	case missing(first):
 		e.Kind = MissingModule
 		e.Message = withRemedy(first)
-	case strings.Contains(first, "errors parsing go.mod"), strings.Contains(first, "go.mod"), strings.Contains(first, "go.work"), strings.Contains(first, "go.sum"), strings.Contains(first, "vendor"):
+	case strings.Contains(place, "go."), strings.Contains(first, "go.mod"), strings.Contains(first, "go.work"), strings.Contains(first, "go.sum"), strings.Contains(first, "vendor"):
 		e.Kind = BadModule
 	}
 	return e
+}
+
+// noModule is the error for a folder outside of any module.
+func noModule(dir string) *Error {
+	return &Error{Kind: NoModule, Place: dir,
+		Message: "no go.mod in this folder or above it; run pathtally inside of a module, or name packages of the standard library"}
 }
 
 func needsModule(s string) bool {
@@ -227,8 +233,17 @@ func needsModule(s string) bool {
 		strings.Contains(s, "outside main module or its selected dependencies") && strings.Contains(s, "current directory outside")
 }
 
+// notCached reports whether s is what the go command says where it would
+// have to fetch.
+func notCached(s string) bool {
+	return strings.Contains(s, "GOPROXY=off") || strings.Contains(s, "GOVCS disallows")
+}
+
 func missing(s string) bool {
-	for _, w := range []string{"GOPROXY=off", "GOVCS disallows", "no required module provides package", "cannot find module providing package", "missing go.sum entry", "module lookup disabled"} {
+	if notCached(s) {
+		return true
+	}
+	for _, w := range []string{"no required module provides package", "cannot find module providing package", "missing go.sum entry"} {
 		if strings.Contains(s, w) {
 			return true
 		}
@@ -284,13 +299,29 @@ func (l *listing) check(cfg *Config) error {
 		switch {
 		case strings.Contains(e.Message, "requires go >= "):
 			e.Kind = NewerGo
-		case needsModule(e.Message):
-			e = classify(l.dir, e.Message)
+		case needsModule(e.Message), l.outside() && strings.Contains(e.Message, "does not contain main module"):
+			e = noModule(l.dir)
 		case missing(e.Message):
 			e.Kind = MissingModule
+			if notCached(e.Message) && !strings.Contains(e.Message, p.ImportPath) {
+				e.Message = "the module of package " + p.ImportPath + " is not in the module cache"
+			}
 			e.Message = withRemedy(e.Message)
 		case strings.Contains(e.Message, "directory not found"), strings.Contains(e.Message, "no such file or directory"), strings.Contains(e.Message, "permission denied"):
 			e.Kind = NoDirectory
+			// "pattern ./x/...: lstat ./x/: no such file or directory"
+			// or "stat /abs/x: directory not found"
+			if parts := strings.Split(strings.TrimPrefix(e.Message, "pattern "), ": "); e.Place == "" && len(parts) >= 2 {
+				if _, path, ok := strings.Cut(parts[len(parts)-2], " "); ok {
+					e.Message = parts[len(parts)-1]
+					e.Place = filepath.Clean(path)
+					if !filepath.IsAbs(e.Place) {
+						e.Place = filepath.Join(l.dir, path)
+					}
+				}
+			}
+		case strings.HasPrefix(e.Message, "import cycle not allowed") && len(p.Error.ImportStack) > 1:
+			e.Message = "import cycle: " + strings.Join(p.Error.ImportStack, " imports ")
 		case strings.Contains(e.Message, "no Go files"), strings.Contains(e.Message, "matched no packages"):
 			e.Kind = NoMatch
 		case strings.Contains(e.Message, "expected "), strings.Contains(e.Message, "illegal "):
@@ -310,11 +341,9 @@ func (l *listing) check(cfg *Config) error {
 		if slices.ContainsFunc(l.packages, func(p *listed) bool { return !p.DepOnly && filepath.ToSlash(filepath.Clean(pattern)) == p.ImportPath }) {
 			continue
 		}
-		if l.env.GOMOD == "" || l.env.GOMOD == os.DevNull {
-			if l.env.GOWORK == "" && pattern != "std" && pattern != "cmd" {
-				errs = append(errs, &Error{Kind: NoModule, Place: l.dir, Message: "no go.mod in this folder or above it; run pathtally inside of a module, or name packages of the standard library"})
-				continue
-			}
+		if l.outside() {
+			errs = append(errs, noModule(l.dir))
+			continue
 		}
 		e := &Error{Kind: NoMatch, Message: fmt.Sprintf("pattern %s names no package", pattern)}
 		if filepath.IsAbs(pattern) || strings.HasPrefix(pattern, ".") {
@@ -336,6 +365,11 @@ func (l *listing) check(cfg *Config) error {
 		return errs
 	}
 	return nil
+}
+
+// outside reports whether the go command found neither module nor workspace.
+func (l *listing) outside() bool {
+	return (l.env.GOMOD == "" || l.env.GOMOD == os.DevNull) && (l.env.GOWORK == "" || l.env.GOWORK == "off")
 }
 
 // harmless reports whether the error of a package only says that this build

@@ -77,6 +77,8 @@ type Program struct {
 	files     map[string]*fileInfo
 	functions functionIndex
 	texts     textCache
+	tags      []string
+	cgo       bool
 }
 
 // Package is one package of the build.
@@ -92,17 +94,17 @@ type Package struct {
 	Syntax []*ast.File
 	Info   *types.Info
 
-	Module     string   // path of its module; "std" and "cmd" for the standard library and the commands
-	Main       bool     // of a main module (the one around Dir, or one of the workspace)
-	Standard   bool     // of GOROOT
-	Bodies     bool     // function bodies were loaded (false if it has errors)
-	Named      bool     // a pattern names it
-	Vendored   bool     // in a vendor folder
-	UsesCgo    bool     // has files that import "C"
-	GoFiles    []string // the files that were read, absolute, sorted as the go command does, tests after them
-	Imports    []string // import paths after vendoring, sorted
-	CCalls     int      // calls into C in its files; they are not judged
-	CFunctions []string // functions left without a body because they speak to C, "file:line:column: name", in source order
+	Module   string        // path of its module; "std" and "cmd" for the standard library and the commands
+	Main     bool          // of a main module (the one around Dir, or one of the workspace)
+	Standard bool          // of GOROOT
+	Bodies   bool          // function bodies were loaded (false if it has errors)
+	Named    bool          // a pattern names it
+	Vendored bool          // in a vendor folder
+	UsesCgo  bool          // has files that import "C"
+	GoFiles  []string      // the files that were read, absolute, sorted as the go command does, tests after them
+	Imports  []string      // import paths after vendoring, sorted
+	CCalls   int           // calls into C in its files; they are not judged
+	Cut      []CutFunction // functions left without a body because they speak to C in a way that could not be made out, in source order
 
 	// LeftOut lists files in Dir that are not part of the build.
 	LeftOut []LeftOut
@@ -115,6 +117,8 @@ type Package struct {
 	Errors []*Error
 	Broken bool
 
+	moduleDir string              // root of its module, "" if unknown
+	c         *types.Package      // what stands for its "C", nil without cgo or bodies
 	goVersion string              // "go1.26"; "" means no limit
 	files     []*sourceFile       // same order as GoFiles
 	imports   map[string]*Package // by the path as the source writes it
@@ -156,11 +160,11 @@ type LeftOut struct {
 type Stats struct {
 	List, Read, Build time.Duration // go list; parse and check; SSA
 
-	Packages     int // of the import graph
-	WithBodies   int
-	Files        int // parsed
-	Bytes        int64
-	FuncsWithSSA int // members, methods and anonymous functions with blocks when first asked; see Functions
+	Packages   int   // of the import graph
+	WithBodies int   // of these, those with function bodies
+	Files      int   // that were parsed
+	Bytes      int64 // in these files
+	Functions  int   // len(Program.Functions())
 }
 
 // Load lists, reads, checks and builds what cfg asks for.

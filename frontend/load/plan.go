@@ -35,6 +35,8 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 		ModuleDir: l.dir,
 		byPath:    map[string]*Package{},
 		byTypes:   map[*types.Package]*Package{},
+		cgo:       l.env.CGO_ENABLED == "1",
+		tags:      buildTags(cfg, l.env.GOFLAGS),
 	}
 	if l.env.GOWORK != "" && l.env.GOWORK != "off" {
 		prog.Workspace = l.env.GOWORK
@@ -72,9 +74,8 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 		for _, path := range lp.Imports {
 			prog.link(p, path, nil)
 		}
-		for source, path := range lp.ImportMap {
+		for source := range lp.ImportMap {
 			prog.link(p, source, lp.ImportMap)
-			_ = path
 		}
 	}
 	if cfg.Tests {
@@ -100,6 +101,22 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 	return prog, nil
 }
 
+// buildTags lists the build tags in force: the last -tags wins, as for the go
+// command.
+func buildTags(cfg *Config, goflags string) []string {
+	tags := ""
+	flags := strings.Fields(goflags)
+	if cfg.Tags != "" {
+		flags = append(flags, "-tags="+cfg.Tags)
+	}
+	for _, f := range append(flags, cfg.BuildFlags...) {
+		if v, ok := strings.CutPrefix(strings.TrimLeft(f, "-"), "tags="); ok {
+			tags = v
+		}
+	}
+	return strings.FieldsFunc(tags, func(r rune) bool { return r == ',' || r == ' ' })
+}
+
 // isTestVariant reports whether lp is a package that exists for a test binary
 // only: "p [q.test]", "p_test [p.test]" or the generated "p.test".
 func isTestVariant(lp *listed) bool {
@@ -120,7 +137,7 @@ func newPackage(lp *listed, l *listing) *Package {
 	}
 	switch m := lp.Module; {
 	case m != nil:
-		p.Module, p.Main = m.Path, m.Main
+		p.Module, p.Main, p.moduleDir = m.Path, m.Main, m.Dir
 		if m.GoVersion != "" {
 			p.goVersion = "go" + m.GoVersion
 		} else {

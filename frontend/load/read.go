@@ -239,6 +239,9 @@ func (i importer) Import(path string) (*types.Package, error) {
 	if path == "unsafe" {
 		return types.Unsafe, nil
 	}
+	if path == "C" && i.p.c != nil {
+		return i.p.c, nil
+	}
 	q := i.p.imports[path]
 	if q == nil {
 		return nil, fmt.Errorf("package %s is not in the build", path)
@@ -267,10 +270,15 @@ func (r *reader) check(p *Package, files []*ast.File) {
 			FileVersions: make(map[*ast.File]string),
 		}
 	}
+	withC := p.UsesCgo && p.Bodies
+	if withC {
+		p.c = guessC(files)
+	}
+	var complaints []complaint
 	conf := &types.Config{
 		GoVersion:        p.goVersion,
 		IgnoreFuncBodies: !p.Bodies,
-		FakeImportC:      p.UsesCgo,
+		FakeImportC:      p.UsesCgo && !p.Bodies,
 		Importer:         importer{p},
 		Sizes:            r.sizes,
 		Error: func(err error) {
@@ -282,18 +290,21 @@ func (r *reader) check(p *Package, files []*ast.File) {
 			if strings.HasPrefix(te.Msg, "\t") {
 				return // continues the error before
 			}
-			if p.UsesCgo && (te.Soft || strings.Contains(te.Msg, "invalid type")) {
-				// A consequence of what C gives having no type here. Soft
-				// errors are unused names, whose use may be one of those.
-				return
-			}
-			e := &Error{Kind: TypeError, Package: p.Path, Message: oneLine(te.Msg)}
+			e := &Error{Kind: TypeError, Package: p.Path, Place: p.Dir, Message: oneLine(te.Msg)}
 			if te.Pos.IsValid() {
 				e.Place = te.Fset.PositionFor(te.Pos, false).String()
-			} else {
-				e.Place = p.Dir
 			}
-			p.fail(e)
+			switch {
+			case !p.UsesCgo:
+				p.fail(e)
+			case te.Soft, strings.HasSuffix(te.Msg, "not exported by package C"):
+				// C exports everything. Soft errors are unused names, whose
+				// use may be one that could not be checked.
+			case !p.Bodies && strings.Contains(te.Msg, "invalid type"):
+				// What C gives has no type here, and nobody will miss it.
+			default:
+				complaints = append(complaints, complaint{te.Pos, e})
+			}
 		},
 	}
 	p.Types = types.NewPackage(p.Path, p.Name)
@@ -301,10 +312,21 @@ func (r *reader) check(p *Package, files []*ast.File) {
 	checker.Files(files) // errors go to conf.Error
 	if p.Bodies {
 		p.Syntax, p.Info = files, info
-		if p.UsesCgo {
-			cutC(r.prog, p)
+	}
+	if withC {
+		p.CCalls = countC(files, p.c)
+		complaints = cut(p, complaints)
+	}
+	for _, c := range complaints {
+		if !withC || !aboutC(c.err.Message) {
+			p.fail(c.err)
 		}
 	}
+}
+
+// aboutC reports whether a type error speaks of what C gives.
+func aboutC(msg string) bool {
+	return strings.Contains(msg, "C.") || strings.Contains(msg, "invalid type")
 }
 
 // collectErrors ends the load if packages have errors, or, with Partial,

@@ -11,11 +11,21 @@ func stripBodies(src []byte) []byte {
 	out := make([]byte, len(src))
 	copy(out, src)
 	s := stripper{src: src}
+	first := true // at the first word of a line or after a semicolon
 	for s.i < len(src) {
 		switch c := src[s.i]; {
+		case c == '\n' || c == ';':
+			first = true
+			s.i++
+		case c == ' ' || c == '\t' || c == '\r':
+			s.i++
 		case s.skipText():
 		case isLetter(c):
-			if word := s.word(); word == "func" {
+			// Only declarations: the braces after "[...]func()" are no body,
+			// and the length of the array is what is in them.
+			declares := first
+			first = false
+			if word := s.word(); word == "func" && declares {
 				open, ok := s.signature()
 				if !ok {
 					continue // a function type, or a declaration without a body
@@ -31,12 +41,14 @@ func stripBodies(src []byte) []byte {
 				}
 			}
 		case c == '(' || c == '[' || c == '{':
-			// Group declarations, types and literals are kept whole: their
-			// function literals are rare.
+			// Group declarations, types and literals are kept whole: function
+			// literals in them are rare.
+			first = false
 			if s.block() < 0 {
 				return src
 			}
 		default:
+			first = false
 			s.i++
 		}
 	}
