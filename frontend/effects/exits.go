@@ -5,6 +5,7 @@ package effects
 import (
 	"go/constant"
 	"go/token"
+	"strings"
 
 	"golang.org/x/tools/go/ssa"
 )
@@ -208,7 +209,7 @@ func (t *Table) mayRecover(n *node) bool {
 		}
 	}
 	for _, anon := range n.fn.AnonFuncs {
-		if anon.Synthetic != "" {
+		if isYield(anon) {
 			if id, ok := t.byFn[anon]; ok && t.mayRecover(t.nodes[id]) {
 				return true
 			}
@@ -259,9 +260,17 @@ const (
 )
 
 // recovers says whether a deferred call of a node stops a panic.
-func (t *Table) recovers(id nodeID) recovery {
+func (t *Table) recovers(id nodeID) recovery { return t.recoversAt(id, 0) }
+
+// maxWrappers bounds chains of wrappers; longer ones may recover.
+const maxWrappers = 6
+
+func (t *Table) recoversAt(id nodeID, depth int) recovery {
 	if id == noNode {
 		return recoversNever // a deferred recover itself stops nothing
+	}
+	if depth > maxWrappers {
+		return recoversMaybe
 	}
 	n := t.nodes[id]
 	if n.fn == nil {
@@ -269,37 +278,65 @@ func (t *Table) recovers(id nodeID) recovery {
 			return recoversMaybe
 		}
 		for _, m := range n.members {
-			if t.recovers(m) != recoversNever {
+			if t.recoversAt(m, depth+1) != recoversNever {
 				return recoversMaybe
 			}
 		}
 		return recoversNever
 	}
-	r := recoversNever
-	for bi, b := range n.fn.Blocks {
-		for _, i := range b.Instrs {
-			c, ok := i.(*ssa.Call)
-			if !ok {
-				continue
-			}
-			if bl, ok := c.Call.Value.(*ssa.Builtin); ok && bl.Name() == "recover" {
-				if bi == 0 && n.sum.exits&Panics == 0 {
-					return recoversAlways
-				}
+	r := n.recovers
+	if r == recoversAlways && n.sum.exits&Panics != 0 {
+		r = recoversMaybe // it may panic anew
+	}
+	// The body of a loop over a function is part of its function.
+	for _, anon := range n.fn.AnonFuncs {
+		if isYield(anon) && r == recoversNever {
+			if id, ok := t.byFn[anon]; ok && t.recoversAt(id, depth+1) != recoversNever {
 				r = recoversMaybe
 			}
 		}
 	}
 	// A wrapper or bound method hands the right to recover to its method.
-	if n.fn.Synthetic != "" {
+	if isWrapper(n.fn) {
 		for i := range n.sites {
-			if s := &n.sites[i]; !s.callback && t.recovers(s.target) != recoversNever {
+			if s := &n.sites[i]; !s.callback && t.recoversAt(s.target, depth+1) != recoversNever {
 				r = max(r, recoversMaybe)
 			}
 		}
 	}
 	return r
 }
+
+// ownRecovery looks for recover in a body: in the entry block, before anything
+// else can end the function, it always runs.
+func ownRecovery(fn *ssa.Function) recovery {
+	found := recoversAlways
+	for _, b := range fn.Blocks {
+		for _, i := range b.Instrs {
+			c, ok := i.(*ssa.Call)
+			if !ok {
+				continue
+			}
+			bl, ok := c.Call.Value.(*ssa.Builtin)
+			if ok && bl.Name() == "recover" {
+				return found
+			}
+			if !ok {
+				found = recoversMaybe // a call before it may end the function
+			}
+		}
+		found = recoversMaybe // not in the entry block
+	}
+	return recoversNever
+}
+
+// isWrapper says whether fn only calls another method.
+func isWrapper(fn *ssa.Function) bool {
+	return strings.HasPrefix(fn.Synthetic, "wrapper for ") || strings.HasPrefix(fn.Synthetic, "bound method wrapper for ") || strings.HasPrefix(fn.Synthetic, "thunk for ")
+}
+
+// isYield says whether fn is the body of a loop over a function.
+func isYield(fn *ssa.Function) bool { return fn.Synthetic == "range-over-func yield" }
 
 // reach walks the blocks from the entry (and the Recover block); a call all of
 // whose callees never return, as far as is known by now, ends its block.

@@ -56,10 +56,11 @@ type node struct {
 	deps    []nodeID                      // summaries that results need besides those of callees
 	roots   int                           // parameters and free variables (group: most arguments)
 
-	local    *set   // stores of the body itself to unknown objects
-	localRel []*set // stores of the body itself, by root
-	reads    *set   // loads of the body itself
-	impure   bool   // the body itself does what a pure getter must not
+	local    *set     // stores of the body itself to unknown objects
+	localRel []*set   // stores of the body itself, by root
+	reads    *set     // loads of the body itself
+	recovers recovery // whether the body itself calls recover
+	impure   bool     // the body itself does what a pure getter must not
 
 	scc int32
 	sum Summary

@@ -48,6 +48,7 @@ func (t *Table) scanBody(n *node) {
 			s.instr(instr)
 		}
 	}
+	n.recovers = ownRecovery(fn)
 	n.local = t.sets.of(s.any...)
 	n.localRel = make([]*set, len(s.rel))
 	for i, r := range s.rel {
