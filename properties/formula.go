@@ -318,12 +318,12 @@ func (a atom) same(b atom) bool {
 func (r *resolver) question(c *Claim, f syntax.Formula, nonneg []bool) {
 	cases := simplify(r.cases(f, true), nonneg)
 	if len(cases) == 0 {
-		r.fail(syntax.Naming, f, "counts are never below 0; compare other counts or other bounds", "no path can break this claim")
+		r.fail(syntax.Naming, f, "it is true whatever the counts are, which are never below 0", "no path can break this claim")
 	}
 	c.Linear = true
 	for _, cs := range cases {
 		if len(cs) == 0 {
-			r.fail(syntax.Naming, f, "counts are never below 0; compare other counts or other bounds", "every path breaks this claim")
+			r.fail(syntax.Naming, f, "it is false whatever the counts are, which are never below 0", "every path breaks this claim")
 		}
 		c.Linear = c.Linear && len(cs) == 1
 		var qs []Question
@@ -390,5 +390,13 @@ func (r *resolver) countHint(name string) string {
 	if len(r.countNames) == 0 {
 		return "the rule has no counts"
 	}
-	return "there is " + syntax.Enumerate(r.countNames, "and")
+	return thereIs(r.countNames)
+}
+
+// thereIs is a hint at all of names, which are not empty.
+func thereIs(names []string) string {
+	if len(names) == 1 {
+		return "there is " + names[0]
+	}
+	return "there are " + syntax.Enumerate(names, "and")
 }

@@ -57,6 +57,7 @@ func Resolve(files []*RuleFile, u Universe, opt Options) (*RuleBook, error) {
 	r.declare(files)
 	for _, f := range files {
 		r.file = f
+		r.errs = append(r.errs, f.Errs...)
 		r.importsOf(f)
 		for _, d := range f.Tree.Decls {
 			switch d := d.(type) {
@@ -178,8 +179,11 @@ func (r *resolver) rule(d *syntax.Rule) {
 	r.counts, r.countNames = map[string]int{}, nil
 	r.phases, r.broken, r.marks = map[string]bool{}, map[string]bool{}, map[string]pds.Mark{}
 	before := len(r.errs)
+	bad := false
 
 	for _, c := range d.Clauses {
+		_, isBad := c.(*syntax.Bad)
+		bad = bad || isBad
 		r.clause(func() { r.name(c) })
 	}
 	for _, c := range d.Clauses {
@@ -213,7 +217,7 @@ func (r *resolver) rule(d *syntax.Rule) {
 			r.clause(func() { r.out.Models = append(r.out.Models, r.model(c)) })
 		}
 	}
-	if claims == 0 && len(r.errs) == before {
+	if claims == 0 && len(r.errs) == before && !bad {
 		r.clause(func() {
 			r.fail(syntax.Naming, d.Name, "add one: claim even at end: taken == released", "the rule %s claims nothing", d.Name.Text)
 		})
@@ -584,7 +588,10 @@ func (r *resolver) where(f syntax.Formula, sc *eventScope) []*syntax.Subject {
 				if n := syntax.Near(name, names); n != "" {
 					hint = "there is " + n
 				} else if len(names) > 0 {
-					hint = "there is " + syntax.Enumerate(names, "and")
+					hint = thereIs(names)
+				}
+				if r.broken[name] {
+					panic(bail{}) // its own clause has the error
 				}
 				r.fail(syntax.Naming, s, hint, "the event binds no name %s", name)
 			}

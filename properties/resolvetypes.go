@@ -148,6 +148,9 @@ func (r *resolver) nearPackage(p string) string {
 func (r *resolver) pkg(id *syntax.Ident) *types.Package {
 	p := r.imports[id.Text]
 	if p == nil {
+		if r.file.Tree.BadImport {
+			panic(bail{}) // perhaps it was meant there
+		}
 		hint := "write import " + quote("…") + " above the rules"
 		if n := syntax.Near(id.Text, r.importNames); n != "" {
 			hint = "imported is " + n

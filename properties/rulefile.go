@@ -21,12 +21,14 @@ const RuleFileName = "pathtally.rules"
 //go:embed rulesets/*.rules
 var ruleSets embed.FS
 
-// A RuleFile is a rule file that was read without lexical or grammatical errors.
+// A RuleFile is a rule file that was read.
 type RuleFile struct {
 	Name    string       // as the user should see it: relative to the module root, forward slashes
 	Dir     string       // folder, relative to the module root, forward slashes: the rules apply to packages in it and below; "." for all
 	BuiltIn bool         // comes with the tool; not applicable, silently, where its packages are not in the build
-	Tree    *syntax.File // never nil
+	Tree    *syntax.File // never nil; holds what could be read
+	// Errs are the lexical and grammatical errors; Resolve reports them with its own.
+	Errs syntax.Errors
 }
 
 // Set is the name of the rule set, "" without a `ruleset` line.
@@ -38,13 +40,14 @@ func (f *RuleFile) Set() string {
 }
 
 // ParseRuleFile reads the text of a rule file that stands in the folder dir
-// (see RuleFile.Dir). The error is a syntax.Errors.
-func ParseRuleFile(name, dir, src string) (*RuleFile, error) {
+// (see RuleFile.Dir). Errors are kept for Resolve, so that a person sees those
+// of all stages at once.
+func ParseRuleFile(name, dir, src string) *RuleFile {
+	f := &RuleFile{Name: name, Dir: path.Clean(dir)}
 	tree, err := syntax.Parse(name, src)
-	if err != nil {
-		return nil, err
-	}
-	return &RuleFile{Name: name, Dir: path.Clean(dir), Tree: tree}, nil
+	f.Tree = tree
+	errors.As(err, &f.Errs)
+	return f
 }
 
 // BuiltInRules gives the rule sets that come with the tool, sorted by name. A
@@ -60,9 +63,9 @@ func BuiltInRules() []*RuleFile {
 		if err != nil {
 			panic("properties: " + err.Error())
 		}
-		f, err := ParseRuleFile("built-in "+e.Name(), ".", string(src))
-		if err != nil {
-			panic("properties: " + err.Error())
+		f := ParseRuleFile("built-in "+e.Name(), ".", string(src))
+		if len(f.Errs) > 0 {
+			panic("properties: " + f.Errs.Error())
 		}
 		f.BuiltIn = true
 		files = append(files, f)
@@ -97,9 +100,8 @@ func RuleFilePaths(root, dir string) ([]string, error) {
 }
 
 // ReadRuleFiles reads all rule files that apply to packages in one of the
-// folders (each as for RuleFilePaths), outer folders before inner ones. A
-// syntax.Errors holds the errors of all of them; other errors are those of the
-// file system.
+// folders (each as for RuleFilePaths), outer folders before inner ones. Errors
+// are those of the file system; those of rules are in the files.
 func ReadRuleFiles(root string, dirs []string) ([]*RuleFile, error) {
 	seen := map[string]bool{}
 	var names []string
@@ -117,22 +119,28 @@ func ReadRuleFiles(root string, dirs []string) ([]*RuleFile, error) {
 	}
 	sortOuterFirst(names)
 	var files []*RuleFile
-	var errs syntax.Errors
 	for _, name := range names {
 		src, err := os.ReadFile(filepath.Join(root, filepath.FromSlash(name)))
 		if err != nil {
 			return nil, fmt.Errorf("reading rules: %w", err)
 		}
-		f, err := ParseRuleFile(name, path.Dir(name), string(src))
-		var list syntax.Errors
-		switch {
-		case errors.As(err, &list):
-			errs = append(errs, list...)
-		case err != nil:
-			return nil, err
-		default:
-			files = append(files, f)
+		files = append(files, ParseRuleFile(name, path.Dir(name), string(src)))
+	}
+	return files, nil
+}
+
+// RuleImports lists the import paths that the files of a module name, sorted.
+// Whoever loads the build should load them too, so that rules are right or
+// wrong whatever packages a run is asked for.
+func RuleImports(files []*RuleFile) []string {
+	var paths []string
+	for _, f := range files {
+		if f.BuiltIn {
+			continue
+		}
+		for _, im := range f.Tree.Imports {
+			paths = append(paths, im.Path.Value)
 		}
 	}
-	return files, errs.Err()
+	return sortedUnique(paths)
 }

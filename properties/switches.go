@@ -167,7 +167,7 @@ func (r *resolver) target(t *syntax.Target) {
 		if n := syntax.Near(t.Name.Text, names); n != "" {
 			hint = "there is " + n
 		} else if len(names) <= 16 {
-			hint = "there is " + syntax.Enumerate(names, "and")
+			hint = thereIs(names)
 		}
 		r.fail(syntax.Naming, t.Name, hint, "there is no rule or rule set %s", t.Name.Text)
 	}

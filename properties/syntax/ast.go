@@ -26,6 +26,8 @@ type File struct {
 	Imports  []*Import
 	Decls    []Decl // *Rule, *Model, *Setting, in source order
 	Comments []Comment
+	// BadImport: an import line has an error, so that names may be missing.
+	BadImport bool
 
 	lines []int // offsets of line starts
 }

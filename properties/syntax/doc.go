@@ -23,7 +23,7 @@
 // exactly one derivation and that parser and grammar accept the same files.
 //
 // Phases, in order: lex (lex.go), parse (parse.go); the tree is in ast.go, its
-// text form in print.go, errors in errors.go. Sorts and names are not looked at
+// layout as text in format.go, errors in errors.go. Sorts and names are not looked at
 // here: package properties does that.
 package syntax
 

@@ -481,7 +481,7 @@ func FuzzParse(f *testing.F) {
 		}
 		f.Add(string(src))
 	}
-	bad, err := filepath.Glob("testdata/bad/*.rules")
+	bad, err := filepath.Glob("../testdata/bad/*.rules")
 	if err != nil {
 		f.Fatal(err)
 	}
@@ -511,6 +511,7 @@ func FuzzParse(f *testing.F) {
 		if err != nil {
 			t.Fatal(err)
 		}
+		checkFormat(t, "x.rules", src)
 		if len(toks) < 3000 {
 			if n := e.parses(toks); n != 1 {
 				t.Fatalf("%d derivations", n)

@@ -91,22 +91,27 @@ func (p *parser) since(from int) Span {
 	return Span{from, to}
 }
 
-// shownToken is how a message names a token.
+// shownToken is how a message names the current token.
 func (p *parser) shownToken() string {
-	t := p.tok()
-	switch {
-	case t.Kind == EOF:
-		return "the end of the file"
-	case t.auto:
-		n := p.i + 1
-		if p.toks[n].Kind == EOF {
-			return "the end of the file"
-		}
-		return fmt.Sprintf("%s, which starts or ends something new,", p.toks[n].Text)
+	switch t := p.tok(); {
 	case t.Kind == Code:
 		return "code"
+	case t.Text == ",":
+		return "a comma"
+	default:
+		return t.Text
 	}
-	return t.Text
+}
+
+// ends names what ends before the current token, "" if nothing does.
+func (p *parser) ends() string {
+	switch t := p.tok(); {
+	case t.Kind == EOF || t.auto && p.toks[p.i+1].Kind == EOF:
+		return "the file"
+	case t.auto:
+		return "the clause"
+	}
+	return ""
 }
 
 // fail records an error at the current token and leaves the clause. what is
@@ -117,40 +122,63 @@ func (p *parser) fail(what string) {
 		p.errs = append(p.errs, t.err)
 		panic(bail{})
 	}
-	words := uniq(p.tried)
-	var msg, hint string
-	switch {
-	case what == "" && len(words) == 1:
-		msg = fmt.Sprintf("expected %s, found %s", words[0], p.shownToken())
-	case what == "":
-		msg = fmt.Sprintf("%s cannot stand here", strings.TrimSuffix(p.shownToken(), ","))
-	default:
-		msg = fmt.Sprintf("expected %s, found %s", what, p.shownToken())
+	tried := uniq(p.tried)
+	if what == "" && len(tried) == 1 {
+		what = tried[0]
 	}
-	msg = strings.TrimSuffix(msg, ",")
-	if t.Kind == Name || t.Kind == Word && !t.auto {
-		if n := Near(t.Text, words); n != "" && isLetters(n) {
-			hint = fmt.Sprintf("%s could stand here", n)
-		}
-	}
-	if hint == "" && t.Kind == Word && words0(t.Text) && strings.Contains(what, "name") {
-		hint = fmt.Sprintf("%s is a word of the language; choose another name", t.Text)
-	}
-	if hint == "" && len(words) > 1 && len(words) <= 16 {
-		hint = "here can stand " + Enumerate(words, "or")
-	}
+	found := "found " + p.shownToken()
 	at := t.Span
-	if t.auto || t.Kind == EOF { // the place is behind what was read, not where the next clause starts
-		if p.i > 0 {
+	if ends := p.ends(); ends != "" {
+		found = "but " + ends + " ends here"
+		if p.i > 0 { // behind what was read, not where the next clause starts
 			at = Span{p.toks[p.i-1].To, p.toks[p.i-1].To}
 		}
 	}
-	p.errs = append(p.errs, p.f.Errorf(Grammatical, at, hint, "%s", msg))
+	msg := fmt.Sprintf("expected %s, %s", what, found)
+	if what == "" {
+		msg = fmt.Sprintf("%s cannot stand here", p.shownToken())
+		if ends := p.ends(); ends != "" {
+			msg = ends + " ends too early"
+		}
+	}
+	p.errs = append(p.errs, p.f.Errorf(Grammatical, at, p.hint(what, tried), "%s", msg))
 	panic(bail{})
 }
 
-// words0 reports whether s is a reserved word made of letters.
-func words0(s string) bool { return words[s] && isLetters(s) }
+// hint says what could stand in the place of the current token.
+func (p *parser) hint(what string, tried []string) string {
+	t := p.tok()
+	var letters []string
+	closer := ""
+	for _, w := range tried {
+		switch {
+		case w == "nil" || w == "struct":
+			what = "" // formulas, patterns and types: too many words to be of help
+			tried = nil
+		case isLetters(w):
+			letters = append(letters, w)
+		case w == ")" || w == "]":
+			closer = w
+		}
+	}
+	if !t.auto && t.Kind != EOF {
+		if n := Near(t.Text, letters); n != "" {
+			return n + " could stand here"
+		}
+		if t.Kind == Word && isLetters(t.Text) && strings.Contains(what, "name") {
+			return t.Text + " is a word of the language; choose another name"
+		}
+	}
+	switch {
+	case tried == nil:
+		return ""
+	case closer != "" && what != closer:
+		return closer + " could stand here"
+	case len(letters) > 1:
+		return "here can stand " + Enumerate(letters, "or")
+	}
+	return ""
+}
 
 func isLetters(s string) bool { return s != "" && s[0] >= 'a' && s[0] <= 'z' }
 
@@ -233,7 +261,9 @@ func (p *parser) file() {
 		})
 	}
 	for p.at("import") {
-		p.guard(p.importLine)
+		if !p.guard(p.importLine) {
+			p.f.BadImport = true
+		}
 	}
 	for p.tok().Kind != EOF {
 		before := p.i
@@ -246,6 +276,7 @@ func (p *parser) file() {
 			case p.at("enable", "disable", "soften", "root", "noroot", "pin"):
 				p.setting()
 			case p.at("import"):
+				p.f.BadImport = true
 				p.errs = append(p.errs, p.f.Errorf(Grammatical, p.tok().Span, "", "import stands before all rules, models and settings"))
 				panic(bail{})
 			default:
@@ -304,8 +335,8 @@ func (p *parser) importLine() {
 func (p *parser) rule() {
 	from := p.expect("rule").From
 	r := &Rule{Doc: p.docBefore(from), Name: p.name("the rule's name")}
-	p.f.Decls = append(p.f.Decls, r)
 	p.expect("{")
+	p.f.Decls = append(p.f.Decls, r)
 	for !p.at("}") && p.tok().Kind != EOF && !p.atTop() {
 		start, before := p.tok().From, p.i
 		var c Clause
