@@ -87,11 +87,11 @@ func (t *Table) stepExits(n *node) bool {
 }
 
 func (t *Table) exitsOf(n *node) Exit {
-	model := modelOf(n.fn)
+	model := n.model
 	if model.exits != 0 {
 		return model.exits
 	}
-	if isBodyless(n.fn) {
+	if n.bodyless() {
 		if model.known {
 			return Returns
 		}

@@ -26,22 +26,19 @@ type reachKey struct {
 // externCall fills st.ext and adds sites for what the callee may call back.
 func (s *scanner) externCall(st *site, fn *ssa.Function) {
 	st.ext = &extern{direct: make([]*set, len(st.args))}
-	model := modelOf(fn)
-	var pkg *types.Package
-	if obj := fn.Object(); obj != nil {
-		pkg = obj.Pkg()
-	}
+	model := s.t.nodes[st.target].model
+	pkg := packageOf(fn)
 	for k, a := range st.args {
 		dyn := a
 		if mi, ok := a.(*ssa.MakeInterface); ok {
 			dyn = mi.X
 			if iface, ok := a.Type().Underlying().(*types.Interface); ok && !model.noCalls {
-				s.callbackMethods(st, mi.X.Type(), iface)
+				s.callbackMethods(st, a, mi.X.Type(), iface)
 			}
 		}
 		if _, ok := a.Type().Underlying().(*types.Signature); ok && !model.noCalls {
 			if cb, _ := calleeOf(a); cb != nil {
-				s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(cb)})
+				s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(cb), handed: a, args: st.args})
 			}
 		}
 		if model.noWrites {
@@ -55,14 +52,14 @@ func (s *scanner) externCall(st *site, fn *ssa.Function) {
 
 // callbackMethods adds the methods of a value that code out of sight gets as an
 // interface.
-func (s *scanner) callbackMethods(st *site, typ types.Type, iface *types.Interface) {
+func (s *scanner) callbackMethods(st *site, handed ssa.Value, typ types.Type, iface *types.Interface) {
 	for m := range iface.Methods() {
 		sel := s.t.prog.MethodSets.MethodSet(typ).Lookup(m.Pkg(), m.Name())
 		if sel == nil {
 			continue
 		}
 		if fn := s.t.prog.MethodValue(sel); fn != nil && !isBodyless(fn) {
-			s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(fn)})
+			s.n.sites = append(s.n.sites, site{instr: st.instr, callback: true, target: s.t.nodeOf(fn), handed: handed, args: st.args})
 		}
 	}
 }
@@ -143,4 +140,37 @@ func (t *Table) reachOf(pkg *types.Package, typ types.Type) reach {
 	r := reach{t.sets.of(direct...), t.sets.of(deep...)}
 	t.reaches[key] = r
 	return r
+}
+
+func packageOf(fn *ssa.Function) *types.Package {
+	if obj := fn.Object(); obj != nil {
+		return obj.Pkg()
+	}
+	return nil
+}
+
+// blindWrites fills the local part of a function without body from the types of
+// its parameters. Static calls of it say more: see externCall.
+func (t *Table) blindWrites(n *node) {
+	n.localRel = make([]*set, n.roots)
+	if n.model.noWrites {
+		return
+	}
+	sig := n.fn.Signature
+	i := 0
+	add := func(typ types.Type) {
+		if _, ok := typ.(*types.TypeParam); ok {
+			typ = types.NewInterfaceType(nil, nil)
+		}
+		r := t.reachOf(packageOf(n.fn), typ)
+		n.localRel[i] = r.direct
+		n.local = t.sets.union(n.local, r.deep)
+		i++
+	}
+	if sig.Recv() != nil {
+		add(sig.Recv().Type())
+	}
+	for p := range sig.Params().Variables() {
+		add(p.Type())
+	}
 }

@@ -84,8 +84,8 @@ func (t *Table) stepFlows(n *node) bool {
 	switch {
 	case n.fn == nil:
 		fl = t.groupFlows(n)
-	case isBodyless(n.fn):
-		fl = blindFlows(n.fn)
+	case n.bodyless():
+		fl = blindFlows(n)
 	default:
 		fl = t.flow.solve(n)
 	}
@@ -129,9 +129,9 @@ func (t *Table) groupFlows(n *node) []Flow {
 
 // blindFlows is the borrowing of code without body: results may hold the
 // arguments, nothing else keeps them, unless a model says so.
-func blindFlows(fn *ssa.Function) []Flow {
-	fl := make([]Flow, numRoots(fn))
-	m := modelOf(fn)
+func blindFlows(n *node) []Flow {
+	fl := make([]Flow, n.roots)
+	m := n.model
 	for i := range fl {
 		if !m.noFlow {
 			fl[i].Results = ^uint64(0)
@@ -166,6 +166,7 @@ func (s *flowSolver) solve(n *node) []Flow {
 	for _, b := range fn.Blocks {
 		for _, instr := range b.Instrs {
 			for site < len(n.sites) && n.sites[site].callback {
+				s.callback(&n.sites[site])
 				site++
 			}
 			if site < len(n.sites) && n.sites[site].instr == instr {
@@ -471,6 +472,54 @@ func (s *flowSolver) call(st *site) {
 					s.put(x, a)
 				}
 			}
+		}
+	}
+}
+
+// callback adds the flows of a function that code without body may call with
+// anything that it was handed.
+func (s *flowSolver) callback(st *site) {
+	callee := s.t.nodes[st.target]
+	own := len(callee.fn.Params) // roots from here on belong to the value handed
+	first := 0
+	if callee.fn.Signature.Recv() != nil {
+		first = 1 // so does the receiver
+	}
+	var fromOwn, fromArgs Flow
+	for i, f := range callee.sum.flows {
+		if i < first || i >= own {
+			fromOwn = fromOwn.union(f)
+		} else {
+			fromArgs = fromArgs.union(f)
+		}
+	}
+	toOwn := false
+	for k := range callee.sum.flows {
+		toOwn = toOwn || (k < first || k >= own) && fromArgs.ToRoot(k)
+	}
+	apply := func(x ssa.Value, f Flow) {
+		if plainValue(x) || !s.t.places.hasPointers(x.Type()) {
+			return
+		}
+		if f.Global {
+			s.edge(s.value(x), globalValue)
+		}
+		if f.Kept {
+			s.edge(s.value(x), keptValue)
+		}
+	}
+	apply(st.handed, fromOwn)
+	for _, a := range st.args {
+		if a == st.handed {
+			continue
+		}
+		apply(a, fromArgs)
+		if toOwn {
+			s.put(a, st.handed)
+		}
+		// The receiver or a captured variable may go into an argument.
+		if fromOwn.Roots != 0 {
+			s.put(st.handed, a)
 		}
 	}
 }

@@ -38,7 +38,8 @@ type site struct {
 	instr    ssa.CallInstruction
 	target   nodeID      // noNode: a builtin
 	callback bool        // the callee is handed to code without body, which may call it
-	args     []ssa.Value // nil for callbacks
+	handed   ssa.Value   // callback: the function value or the value with the method
+	args     []ssa.Value // callback: the arguments of the call that hands it on
 	origins  []mask      // by argument, then by free variable if bound != nil
 	bound    []ssa.Value // bindings of the closure called, if it is known
 	ext      *extern     // callee without body
@@ -62,8 +63,13 @@ type node struct {
 	recovers recovery // whether the body itself calls recover
 	impure   bool     // the body itself does what a pure getter must not
 
-	scc int32
-	sum Summary
+	model model
+	blind bool // taken as a function without body though it may have one
+
+	scc       int32
+	evalAt    int64 // when the current stage solved it last, in steps
+	changedAt int64 // when the current stage changed it last
+	sum       Summary
 }
 
 type groupKey struct {
@@ -75,12 +81,14 @@ type groupKey struct {
 // isBodyless says whether nothing is known about what fn does.
 func isBodyless(fn *ssa.Function) bool { return fn.Blocks == nil || isGenericOriginal(fn) }
 
+func (n *node) bodyless() bool { return n.blind || isBodyless(n.fn) }
+
 // nodeOf returns the node of fn, made if need be.
 func (t *Table) nodeOf(fn *ssa.Function) nodeID {
 	if id, ok := t.byFn[fn]; ok {
 		return id
 	}
-	n := &node{id: nodeID(len(t.nodes)), fn: fn, roots: numRoots(fn), scc: -1}
+	n := &node{id: nodeID(len(t.nodes)), fn: fn, roots: numRoots(fn), model: modelOf(fn), scc: -1}
 	t.nodes = append(t.nodes, n)
 	t.byFn[fn] = n.id
 	return n.id

@@ -227,8 +227,8 @@ func (t *Table) resultsOf(n *node) []Result {
 	fn := n.fn
 	res := fn.Signature.Results()
 	rs := make([]Result, res.Len())
-	m := modelOf(fn)
-	if isBodyless(fn) || m.joinsNil {
+	m := n.model
+	if n.bodyless() || m.joinsNil {
 		for j := range rs {
 			rs[j] = unknownResult(res.At(j).Type())
 			if j < len(m.nilness) && m.nilness[j] != 0 {
@@ -364,7 +364,7 @@ func (ev *evaluator) evalValue(v ssa.Value, b *ssa.BasicBlock, depth int) Result
 		if r.bottom {
 			return r
 		}
-		r.Nil, r.nilIff = NonNil, 0
+		r.Nil, r.Const, r.nilIff = NonNil, nil, 0
 		return r
 	case *ssa.ChangeInterface:
 		return ev.eval(x.X, b, depth)
@@ -617,7 +617,7 @@ func (ev *evaluator) evalCall(c *ssa.Call, j int, b *ssa.BasicBlock, depth int) 
 		}
 		return nil
 	}
-	if m := callee.fn; m != nil && modelOf(m).joinsNil {
+	if callee.model.joinsNil {
 		return ev.evalJoin(c, unknown, b, depth)
 	}
 	if r.Param >= 0 {

@@ -67,7 +67,7 @@ func (t *Table) writesOnce(n *node) (*set, []*set) {
 			}
 			return unknownRoot
 		}
-		if s.target != noNode {
+		if s.target != noNode && s.ext == nil {
 			put(t.nodes[s.target].sum.writes, unknownRoot)
 			for k, r := range t.nodes[s.target].sum.rel {
 				put(r, at(k))

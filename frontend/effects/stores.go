@@ -86,8 +86,7 @@ func (s *scanner) instr(instr ssa.Instruction) {
 		if addressTaken(i) {
 			ps.expose(id, f.Type())
 		}
-		if g, ok := i.X.(*ssa.Global); ok && !addressTaken(i) && !storedTo(i) {
-			s.useGlobal(g, i, true)
+		if g, ok := i.X.(*ssa.Global); ok && !addressTaken(i) && s.partOfGlobal(g, i) {
 			return
 		}
 	case *ssa.IndexAddr:
@@ -95,8 +94,7 @@ func (s *scanner) instr(instr ssa.Instruction) {
 		if addressTaken(i) {
 			ps.expose(ps.elemID(et), et)
 		}
-		if g, ok := i.X.(*ssa.Global); ok && !addressTaken(i) && !storedTo(i) {
-			s.useGlobal(g, i, true)
+		if g, ok := i.X.(*ssa.Global); ok && !addressTaken(i) && s.partOfGlobal(g, i) {
 			return
 		}
 	case *ssa.Index:
@@ -177,6 +175,20 @@ func (s *scanner) useGlobal(v ssa.Value, at ssa.Instruction, plain bool) {
 	case isStore:
 		u.leaks = true
 	}
+}
+
+// partOfGlobal notes the use of a part of g whose address is not taken; it says
+// no if the part is stored to outside of the initialisation.
+func (s *scanner) partOfGlobal(g *ssa.Global, part ssa.Value) bool {
+	if !storedTo(part) {
+		s.useGlobal(g, part.(ssa.Instruction), true)
+		return true
+	}
+	if s.fn.Pkg == g.Pkg && (s.fn.Name() == "init" && s.fn.Synthetic != "" || isInit(s.fn)) {
+		s.t.global(g).late = true
+		return true
+	}
+	return false
 }
 
 // isInit says whether fn is a declared func init.

@@ -38,6 +38,7 @@ type Table struct {
 	globals map[*ssa.Global]*globalUse
 	reaches map[reachKey]reach
 	scan    scanner
+	now     int64 // steps of fixpoints
 	flow    flowSolver
 
 	mu     sync.Mutex
@@ -137,11 +138,14 @@ func (t *Table) scanAll() {
 			continue
 		}
 		n.sum = Summary{t: t, params: numParams(n.fn)}
-		if !isBodyless(n.fn) {
+		if n.bodyless() {
+			t.blindWrites(n)
+		} else {
 			t.scanBody(n)
 		}
 	}
 	t.addInitDeps()
+	t.addYieldDeps()
 }
 
 // stage solves one kind of fact of a node from the facts of its callees and
@@ -168,13 +172,58 @@ func (t *Table) solve(c []nodeID) {
 		t.begin(t.nodes[n])
 	}
 	for _, st := range stages {
-		for {
-			changed := false
+		if len(c) == 1 && !t.selfCalls(c[0]) {
+			st.step(t, t.nodes[c[0]])
+			continue
+		}
+		for _, id := range c {
+			t.nodes[id].evalAt, t.nodes[id].changedAt = -1, -1
+		}
+		for again := true; again; {
+			again = false
 			for _, id := range c {
-				changed = st.step(t, t.nodes[id]) || changed
+				n := t.nodes[id]
+				if !t.stale(n) {
+					continue
+				}
+				t.now++
+				n.evalAt = t.now
+				if st.step(t, n) {
+					n.changedAt = t.now
+					again = true
+				}
 			}
-			if !changed || len(c) == 1 && !t.selfCalls(c[0]) {
-				break
+		}
+	}
+}
+
+// stale says whether a callee of n in the same component (or n itself) has
+// changed since n was solved.
+func (t *Table) stale(n *node) bool {
+	if n.evalAt < 0 {
+		return true
+	}
+	for i := 0; ; i++ {
+		id, ok := n.edge(i)
+		if !ok {
+			return n.changedAt >= n.evalAt
+		}
+		if id != noNode && t.nodes[id].scc == n.scc && t.nodes[id].changedAt >= n.evalAt {
+			return true
+		}
+	}
+}
+
+// addYieldDeps orders the bodies of loops over functions before the functions
+// that hold the loops: calls that they defer belong to those.
+func (t *Table) addYieldDeps() {
+	for _, n := range t.nodes {
+		if n.fn == nil {
+			continue
+		}
+		for _, anon := range n.fn.AnonFuncs {
+			if id, ok := t.byFn[anon]; ok && isYield(anon) {
+				n.deps = append(n.deps, id)
 			}
 		}
 	}
@@ -232,7 +281,7 @@ func (t *Table) solveWrites(c []nodeID) {
 		}
 		for i := range n.sites {
 			s := &n.sites[i]
-			if s.target != noNode && t.nodes[s.target].scc != scc {
+			if s.target != noNode && s.ext == nil && t.nodes[s.target].scc != scc {
 				any = t.sets.union(any, t.nodes[s.target].sum.writes)
 			}
 			if s.ext != nil {
@@ -276,7 +325,7 @@ func (t *Table) solveWrites(c []nodeID) {
 						put(r, m)
 					}
 				}
-				if s.target != noNode {
+				if s.target != noNode && s.ext == nil {
 					apply(t.nodes[s.target].sum.rel)
 				}
 				if s.ext != nil {
@@ -314,8 +363,8 @@ func (t *Table) stepPure(n *node) bool {
 	for _, r := range n.sum.rel {
 		pure = pure && r == nil
 	}
-	if n.fn != nil && isBodyless(n.fn) {
-		pure = modelOf(n.fn).pure
+	if n.fn != nil && n.bodyless() {
+		pure = n.model.pure
 	}
 	reads := n.reads
 	add := func(id nodeID) {
@@ -348,10 +397,7 @@ func (t *Table) stepPure(n *node) bool {
 // not see gets what is known of functions without body.
 func (t *Table) Of(fn *ssa.Function) *Summary {
 	if id, ok := t.byFn[fn]; ok {
-		n := t.nodes[id]
-		if !isBodyless(fn) {
-			return &n.sum
-		}
+		return &t.nodes[id].sum
 	}
 	t.mu.Lock()
 	defer t.mu.Unlock()
@@ -363,34 +409,15 @@ func (t *Table) Of(fn *ssa.Function) *Summary {
 	return s
 }
 
-// blindSummary summarises a function without body from its parameter types. A
-// call of it says more: see OfCall.
+// blindSummary summarises a function that has no node as one without body.
 func (t *Table) blindSummary(fn *ssa.Function) *Summary {
-	n := &node{id: noNode, fn: fn, roots: numRoots(fn)}
-	n.sum = Summary{t: t, params: numParams(fn), rel: make([]*set, numRoots(fn))}
+	n := &node{id: noNode, fn: fn, blind: true, model: modelOf(fn), roots: numRoots(fn)}
+	n.sum.params = numParams(fn)
+	t.places.mu.Lock()
+	t.blindWrites(n)
+	t.places.mu.Unlock()
 	t.begin(n)
-	model := modelOf(fn)
-	if !model.noWrites {
-		var pkg *types.Package
-		if obj := fn.Object(); obj != nil {
-			pkg = obj.Pkg()
-		}
-		sig := fn.Signature
-		var list []types.Type
-		if sig.Recv() != nil {
-			list = append(list, sig.Recv().Type())
-		}
-		for p := range sig.Params().Variables() {
-			list = append(list, p.Type())
-		}
-		t.places.mu.Lock()
-		for i, typ := range list {
-			r := t.reachOf(pkg, typ)
-			n.sum.rel[i] = r.direct
-			n.sum.writes = t.sets.union(n.sum.writes, r.deep)
-		}
-		t.places.mu.Unlock()
-	}
+	n.sum.writes, n.sum.rel = n.local, n.localRel
 	t.stepExits(n)
 	t.stepPure(n)
 	t.stepResults(n)
@@ -424,36 +451,33 @@ func (t *Table) ofCall(instr ssa.CallInstruction) *Summary {
 		panic(fmt.Sprintf("effects: call in %s, which was not scanned", instr.Parent()))
 	}
 	n := t.nodes[id]
+	t.mu.Lock()
+	defer t.mu.Unlock()
+	s := n.siteOf(instr)
+	if s == nil {
+		panic(fmt.Sprintf("effects: %s: no call site %s", instr.Parent(), instr))
+	}
+	callee := &t.nodes[s.target].sum
+	if s.ext == nil {
+		return callee
+	}
+	sum := *callee
+	sum.rel = s.ext.direct
+	sum.writes = s.ext.deep
 	for i := range n.sites {
-		s := &n.sites[i]
-		if s.instr != instr || s.callback {
+		cb := &n.sites[i]
+		if cb.instr != instr || !cb.callback {
 			continue
 		}
-		callee := &t.nodes[s.target].sum
-		if s.ext == nil {
-			return callee
+		c := &t.nodes[cb.target].sum
+		sum.writes = t.sets.union(sum.writes, c.writes)
+		for _, r := range c.rel {
+			sum.writes = t.sets.union(sum.writes, r)
 		}
-		sum := *callee
-		t.mu.Lock()
-		defer t.mu.Unlock()
-		sum.rel = s.ext.direct
-		sum.writes = s.ext.deep
-		for j := range n.sites {
-			cb := &n.sites[j]
-			if cb.instr != instr || !cb.callback {
-				continue
-			}
-			c := &t.nodes[cb.target].sum
-			sum.writes = t.sets.union(sum.writes, c.writes)
-			for _, r := range c.rel {
-				sum.writes = t.sets.union(sum.writes, r)
-			}
-			sum.exits |= c.exits &^ Returns
-			sum.pure = sum.pure && c.pure
-		}
-		return &sum
+		sum.exits |= c.exits &^ Returns
+		sum.pure = sum.pure && c.pure
 	}
-	panic(fmt.Sprintf("effects: %s: no call site %s", instr.Parent(), instr))
+	return &sum
 }
 
 func (s *Summary) touches(p placeID) bool {
