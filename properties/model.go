@@ -23,6 +23,14 @@ type Model interface {
 	Assumptions() []Note
 }
 
+// Ledger is what a model may implement beside Model, so that a run can say how
+// much of the code its rules met.
+type Ledger interface {
+	// WithEvents lists the functions that hold an event of the rule, each once,
+	// in a fixed order.
+	WithEvents() []Func
+}
+
 // Place is a position in the source. File is as the user should see it
 // (relative to the module root with forward slashes where it is inside).
 type Place struct {

@@ -17,6 +17,12 @@ type Options struct {
 	Steps int64
 	// Causes bounds the findings of one claim at one start; 0 is DefaultCauses.
 	Causes int
+	// State says what the switches of the rule files make of a claim in a
+	// package (import path); nil: everything is on.
+	State func(claim, pkg string) properties.State
+	// Asked is told about every question, as soon as it has its verdict; nil:
+	// nobody. Judge calls it from one goroutine.
+	Asked func(Verdict)
 }
 
 const (
@@ -92,17 +98,28 @@ func (j *judge) run() *RuleResult {
 			j.res.instances++
 		}
 		for ci := range j.rule.Claims {
-			j.question(si, &j.rule.Claims[ci])
+			if j.state(j.rule.Claims[ci].Name, s.Root.Package) != properties.Off {
+				j.question(si, &j.rule.Claims[ci])
+			}
 		}
 	}
 	j.res.assumptions = append(j.res.assumptions, j.m.Assumptions()...)
 	return j.res
 }
 
+// state is what the switches make of a claim in a package.
+func (j *judge) state(claim, pkg string) properties.State {
+	if j.opt.State == nil {
+		return properties.On
+	}
+	return j.opt.State(claim, pkg)
+}
+
 // question gives one claim at one start its verdict.
 func (j *judge) question(si int, c *properties.Claim) {
 	s := &j.starts[si]
-	ask := Question{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice, Root: s.Root, RootKind: s.Kind, Instance: s.Instance}
+	advice := c.Advice || j.state(c.Name, s.Root.Package) == properties.Softened
+	ask := Question{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: advice, Root: s.Root, RootKind: s.Kind, Instance: s.Instance}
 	var grounds []string
 	var open *Open
 	if !c.Linear {
@@ -113,6 +130,7 @@ func (j *judge) question(si int, c *properties.Claim) {
 			switch v.verdict {
 			case Broken:
 				ask.Verdict = Broken
+				ask.Advice = ask.Advice || v.soft
 				grounds = []string{v.ground}
 			case Undecided:
 				if open == nil {
@@ -137,12 +155,16 @@ func (j *judge) question(si int, c *properties.Claim) {
 	slices.Sort(grounds)
 	ask.Grounds = strings.Join(slices.Compact(grounds), "; ")
 	j.res.questions = append(j.res.questions, ask)
+	if j.opt.Asked != nil {
+		j.opt.Asked(ask.Verdict)
+	}
 }
 
 type answered struct {
 	verdict Verdict
 	ground  string
 	open    *Open
+	soft    bool // all that is broken stands in packages where the claim is softened
 }
 
 // answer decides one inequality of a claim at one start.
@@ -248,7 +270,7 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 	s := &j.starts[si]
 	limit := j.opt.causes()
 	found := map[string]bool{}
-	first := ""
+	first, off, soft := "", "", true
 	// The same cause may show in several contexts: those turns are bounded too.
 	for turn := 0; ; turn++ {
 		if len(found) >= limit || turn >= 4*limit {
@@ -277,7 +299,16 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 		f.Assumptions = sortedNotes(append(f.Assumptions, notes...))
 		if !found[key] {
 			found[key] = true
-			j.add(f, key)
+			switch j.state(c.Name, f.Blame.Package) {
+			case properties.Off:
+				off = f.Blame.Package
+			case properties.Softened:
+				f.Advice = true
+				j.add(f, key)
+			default:
+				soft = soft && f.Advice
+				j.add(f, key)
+			}
 			if first == "" {
 				first = f.Message
 			}
@@ -287,7 +318,20 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 		}
 		a.off = append(slices.Clone(a.off), mask...)
 	}
-	return answered{verdict: Broken, ground: first}
+	if len(found) > 0 && !j.reported(found) {
+		return answered{ground: "switched off in " + off + ", where it is broken"}
+	}
+	return answered{verdict: Broken, ground: first, soft: soft}
+}
+
+// reported says that a finding with one of the keys was kept.
+func (j *judge) reported(keys map[string]bool) bool {
+	for k := range keys {
+		if _, ok := j.keyAt[k]; ok {
+			return true
+		}
+	}
+	return false
 }
 
 // confirm replays a witness; a contradiction is a bug of the program.
@@ -422,7 +466,7 @@ func (j *judge) add(f Finding, key string) {
 }
 
 func (j *judge) openFor(s *properties.Start, c *properties.Claim, by string, steps int64) *Open {
-	o := &Open{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice, Point: pointText(c.Point), Formula: c.Text,
+	o := &Open{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: c.Advice || j.state(c.Name, s.Root.Package) == properties.Softened, Point: pointText(c.Point), Formula: c.Text,
 		Root: s.Root, Instance: s.Instance, Place: s.Root.Place, StoppedBy: by}
 	if steps > 0 {
 		o.Steps = 4 * steps

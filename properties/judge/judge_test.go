@@ -389,3 +389,24 @@ func TestInstantiate(t *testing.T) {
 		t.Errorf("a capacity became %q", got)
 	}
 }
+
+func TestSwitches(t *testing.T) {
+	for _, c := range []struct {
+		state    properties.State
+		broken   int
+		advice   int
+		findings int
+		asked    int
+	}{{properties.On, 1, 0, 1, 3}, {properties.Softened, 1, 1, 1, 3}, {properties.Off, 0, 0, 0, 2}} {
+		b, s := book()
+		r := Merge([]*RuleResult{Judge(mutex(), newFake(t, b, s), Options{State: func(claim, pkg string) properties.State {
+			if claim == "balanced" && pkg == "example/berth" {
+				return c.state
+			}
+			return properties.On
+		}})})
+		if r.Tally.Broken != c.broken || r.Tally.Advice != c.advice || len(r.Findings) != c.findings || r.Tally.Questions != c.asked {
+			t.Errorf("state %d: %+v, %d findings", c.state, r.Tally, len(r.Findings))
+		}
+	}
+}

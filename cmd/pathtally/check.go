@@ -1,0 +1,476 @@
+package main
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"os"
+	"path/filepath"
+	"runtime"
+	"runtime/debug"
+	"runtime/pprof"
+	"slices"
+	"strings"
+	"sync"
+	"sync/atomic"
+	"time"
+
+	"github.com/spf13/cobra"
+
+	"pathtally/frontend/load"
+	"pathtally/properties"
+	"pathtally/properties/judge"
+	"pathtally/properties/report"
+	"pathtally/properties/syntax"
+)
+
+const checkHelp = `pathtally check [packages]      judge every rule on every call path
+
+  what      --tests  --deps  --tags LIST  -C DIR
+  which     --only RULE[/CLAIM[:ID]]  --about FUNCTION  --rules FILE
+  answers   --format text|lines|json  --assumptions
+  limits    --steps N  --jobs N  --undecided stop|note
+  comfort   --quiet  --verbose  --timings FILE
+
+exit  0 nothing is broken or undecided   1 broken   2 could not run   3 undecided only
+`
+
+// checkFlags are the flags of check.
+type checkFlags struct {
+	dir         string
+	tests, deps bool
+	tags        string
+	only        []string
+	about       string
+	rules       []string
+	format      string
+	assumptions bool
+	steps       int64
+	jobs        int
+	undecided   string
+	quiet       bool
+	verbose     bool
+	timings     string
+	cpuProfile  string
+}
+
+func checkCommand(ctx context.Context, s streams) *cobra.Command {
+	var f checkFlags
+	c := &cobra.Command{
+		Use:  "check [packages]",
+		RunE: func(_ *cobra.Command, args []string) error { return check(ctx, s, &f, args) },
+	}
+	fl := c.Flags()
+	fl.StringVarP(&f.dir, "dir", "C", "", "run in this folder")
+	fl.BoolVar(&f.tests, "tests", false, "judge test files too")
+	fl.BoolVar(&f.deps, "deps", false, "bring in the bodies of dependencies")
+	fl.StringVar(&f.tags, "tags", "", "build tags")
+	fl.StringArrayVar(&f.only, "only", nil, "judge only this rule, claim or finding")
+	fl.StringVar(&f.about, "about", "", "list every verdict on a function")
+	fl.StringArrayVar(&f.rules, "rules", nil, "a further rule file")
+	fl.StringVar(&f.format, "format", "text", "text, lines or json")
+	fl.BoolVar(&f.assumptions, "assumptions", false, "list every assumption")
+	fl.Int64Var(&f.steps, "steps", 0, "budget of one start")
+	fl.IntVar(&f.jobs, "jobs", 0, "rules judged at a time")
+	fl.StringVar(&f.undecided, "undecided", "stop", "stop or note")
+	fl.BoolVar(&f.quiet, "quiet", false, "findings only")
+	fl.BoolVar(&f.verbose, "verbose", false, "whole paths")
+	fl.StringVar(&f.timings, "timings", "", "write times and memory to a file")
+	fl.StringVar(&f.cpuProfile, "cpuprofile", "", "write a CPU profile")
+	if err := fl.MarkHidden("cpuprofile"); err != nil {
+		panic(err)
+	}
+	setHelp(c, checkHelp)
+	return c
+}
+
+func usage(format string, args ...any) error {
+	m := fmt.Sprintf(format, args...)
+	return &failure{stage: "usage", message: m, text: "pathtally: " + m + "\nSee: pathtally check --help"}
+}
+
+func (f *checkFlags) validate() error {
+	if !slices.Contains([]string{"text", "lines", "json"}, f.format) {
+		return usage("--format %s: there are text, lines and json", f.format)
+	}
+	if f.undecided != "stop" && f.undecided != "note" {
+		return usage("--undecided %s: there are stop and note", f.undecided)
+	}
+	if f.steps < 0 {
+		return usage("--steps %d: at least 1", f.steps)
+	}
+	if f.jobs < 0 {
+		return usage("--jobs %d: at least 1", f.jobs)
+	}
+	if f.about != "" && f.format != "text" {
+		return usage("--about prints text: leave --format %s out", f.format)
+	}
+	return nil
+}
+
+// check runs the command.
+func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (err error) {
+	if err := f.validate(); err != nil {
+		return err
+	}
+	only, err := parseOnly(f.only)
+	if err != nil {
+		return err
+	}
+	if f.cpuProfile != "" {
+		stop, err := profile(f.cpuProfile)
+		if err != nil {
+			return err
+		}
+		defer stop()
+	}
+	times := &timings{began: time.Now()}
+	bar := newProgress(s.err, s.errTerminal, f.quiet)
+	defer bar.clear()
+
+	prog, book, err := loadAll(ctx, f, patterns, bar, times)
+	if err != nil {
+		return err
+	}
+	if err := only.known(book); err != nil {
+		return err
+	}
+	result, ledger, err := judgeAll(prog, book, only, f, bar, times)
+	if err != nil {
+		return err
+	}
+	bar.clear()
+	if f.timings != "" {
+		if err := times.write(f.timings); err != nil {
+			return &failure{stage: "usage", message: err.Error()}
+		}
+	}
+	run := reportRun(prog, book, result, ledger, patterns)
+	missing := only.keep(result)
+	opt := report.Options{Colour: s.outTerminal && !s.noColour, Width: s.width, Assumptions: f.assumptions, Quiet: f.quiet, Verbose: f.verbose}
+	switch {
+	case f.about != "":
+		err = report.About(s.out, run, func(q judge.Question) bool { return sameFunction(f.about, q.Root) }, opt)
+	case f.format == "json":
+		err = report.JSON(s.out, run)
+	case f.format == "lines":
+		err = report.Lines(s.out, run, opt)
+	default:
+		err = report.Text(s.out, run, opt)
+	}
+	if err != nil {
+		return &failure{stage: "internal", message: "writing the result: " + err.Error()}
+	}
+	if missing != "" {
+		fmt.Fprintf(s.err, "pathtally: finding %s is not among the findings of this run\n", missing)
+	}
+	return statusOf(result, only, f.undecided == "note")
+}
+
+// statusOf gives the exit status: findings of claims stop, advice never does.
+func statusOf(r *judge.Result, only onlyList, note bool) error {
+	if only.byID() {
+		for i := range r.Findings {
+			if !r.Findings[i].Advice {
+				return status(exitBroken)
+			}
+		}
+		return nil
+	}
+	switch {
+	case r.Tally.Broken > r.Tally.Advice:
+		return status(exitBroken)
+	case r.Tally.Undecided > r.Tally.UndecidedAdvice && !note:
+		return status(exitUndecided)
+	}
+	return nil
+}
+
+func profile(file string) (stop func(), err error) {
+	w, err := os.Create(file)
+	if err != nil {
+		return nil, &failure{stage: "usage", message: "--cpuprofile: " + err.Error()}
+	}
+	if err := pprof.StartCPUProfile(w); err != nil {
+		w.Close()
+		return nil, &failure{stage: "usage", message: "--cpuprofile: " + err.Error()}
+	}
+	return func() { pprof.StopCPUProfile(); w.Close() }, nil
+}
+
+// loadAll reads the packages and the rules that apply to them.
+func loadAll(ctx context.Context, f *checkFlags, patterns []string, bar *progress, times *timings) (*load.Program, *properties.RuleBook, error) {
+	from := time.Now()
+	cfg := load.Config{Dir: f.dir, Patterns: patterns, Deps: f.deps, Tests: f.tests, Tags: f.tags, Workers: f.jobs, Progress: bar.stage, Context: ctx}
+	prog, err := load.Load(cfg)
+	if err != nil {
+		return nil, nil, loadFailure(err)
+	}
+	files, err := ruleFiles(prog, f.rules)
+	if err != nil {
+		return nil, nil, err
+	}
+	// A rule is right or wrong whatever packages are asked for: what its file
+	// imports must be in the build. That is nearly always so already.
+	if missing := missingImports(prog, files); len(missing) > 0 {
+		cfg.Patterns = append(slices.Clone(patterns), missing...)
+		if len(patterns) == 0 {
+			cfg.Patterns = append([]string{"."}, missing...)
+		}
+		if prog, err = load.Load(cfg); err != nil {
+			return nil, nil, loadFailure(err)
+		}
+	}
+	times.done("load", from)
+	bar.clear()
+	from = time.Now()
+	book, err := properties.Resolve(files, prog.Universe(), properties.Options{})
+	times.done("rules", from)
+	if err != nil {
+		return nil, nil, ruleFailure(err)
+	}
+	return prog, book, nil
+}
+
+// missingImports lists what the rule files of the module import and the build
+// does not hold.
+func missingImports(prog *load.Program, files []*properties.RuleFile) []string {
+	var missing []string
+	for _, p := range properties.RuleImports(files) {
+		if prog.Universe().Package(p) == nil {
+			missing = append(missing, p)
+		}
+	}
+	return missing
+}
+
+// loadFailure turns what is wrong with the packages into a failure.
+func loadFailure(err error) error {
+	f := &failure{stage: "load", message: err.Error(), text: "pathtally: " + err.Error()}
+	var list load.Errors
+	if errors.As(err, &list) {
+		f.text = err.Error()
+		f.message = list[0].Message
+		for _, e := range list {
+			if e.Place != "" {
+				f.places = append(f.places, e.Place)
+			}
+		}
+	}
+	return f
+}
+
+func ruleFiles(prog *load.Program, extra []string) ([]*properties.RuleFile, error) {
+	var dirs []string
+	for _, p := range prog.Packages {
+		if p.Bodies && p.Main {
+			dirs = append(dirs, dirOf(prog, p))
+		}
+	}
+	slices.Sort(dirs)
+	return readRules(prog.ModuleDir, slices.Compact(dirs), extra)
+}
+
+// dirOf is a package's folder relative to the module root, "." outside of it.
+func dirOf(prog *load.Program, p *load.Package) string {
+	rel, err := filepath.Rel(prog.ModuleDir, p.Dir)
+	if err != nil || rel == ".." || strings.HasPrefix(rel, ".."+string(filepath.Separator)) {
+		return "."
+	}
+	return filepath.ToSlash(rel)
+}
+
+func readRules(root string, dirs, extra []string) ([]*properties.RuleFile, error) {
+	own, err := properties.ReadRuleFiles(root, dirs)
+	if err != nil {
+		return nil, ruleFailure(err)
+	}
+	files := append(properties.BuiltInRules(), own...)
+	for _, name := range extra {
+		src, err := os.ReadFile(name)
+		if err != nil {
+			return nil, &failure{stage: "rules", message: "--rules: " + err.Error(), places: []string{filepath.ToSlash(name)}}
+		}
+		files = append(files, properties.ParseRuleFile(filepath.ToSlash(name), ".", string(src)))
+	}
+	return files, nil
+}
+
+func ruleFailure(err error) error {
+	f := &failure{stage: "rules", message: err.Error()}
+	var list syntax.Errors
+	if errors.As(err, &list) {
+		f.text = list.Text()
+		for _, e := range list {
+			f.places = append(f.places, fmt.Sprintf("%s:%d:%d", e.File, e.Line, e.Column))
+		}
+	}
+	return f
+}
+
+// ledger counts what was looked at.
+type ledger struct {
+	withEvents int
+	idle       []string // rules of the module whose events are met nowhere
+}
+
+// judgeAll makes the model of each rule and judges it, several at a time.
+func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *checkFlags, bar *progress, times *timings) (*judge.Result, ledger, error) {
+	from := time.Now()
+	low := analyze(prog)
+	times.done("analyze", from)
+	from = time.Now()
+	refs := map[string]properties.PackageRef{}
+	for _, p := range prog.Packages {
+		if p.Bodies {
+			refs[p.Path] = properties.PackageRef{Path: p.Path, Dir: dirOf(prog, p)}
+		}
+	}
+	var rules []*properties.ResolvedRule
+	for _, r := range book.Rules {
+		if r := only.claims(r); r != nil {
+			rules = append(rules, r)
+		}
+	}
+	jobs := f.jobs
+	if jobs == 0 {
+		jobs = runtime.GOMAXPROCS(0)
+	}
+	results := make([]*judge.RuleResult, len(rules))
+	failures := make([]error, len(rules))
+	met := make([][]properties.Func, len(rules))
+	idle := make([]bool, len(rules))
+	var next, finished atomic.Int32
+	one := func(i int) {
+		defer func() {
+			if p := recover(); p != nil {
+				failures[i] = internal(rules[i], p)
+			}
+		}()
+		rule := rules[i]
+		m := low.Lower(rule)
+		results[i] = judge.Judge(rule, m, judge.Options{
+			Steps: f.steps,
+			State: func(claim, pkg string) properties.State {
+				ref, ok := refs[pkg]
+				if !ok {
+					ref = properties.PackageRef{Path: pkg, Dir: "."}
+				}
+				return book.State(rule, claim, ref)
+			},
+			Asked: func(v judge.Verdict) { bar.judged(v == judge.Broken, int(finished.Load()), len(rules)) },
+		})
+		idle[i] = !rule.BuiltIn && len(m.Starts()) == 0
+		if l, ok := m.(properties.Ledger); ok {
+			met[i] = l.WithEvents()
+		}
+		finished.Add(1)
+	}
+	var wg sync.WaitGroup
+	for range min(jobs, max(len(rules), 1)) {
+		wg.Go(func() {
+			for {
+				i := int(next.Add(1)) - 1
+				if i >= len(rules) {
+					return
+				}
+				one(i)
+			}
+		})
+	}
+	wg.Wait()
+	// The first rule in the order of the files speaks, whichever failed first.
+	for _, err := range failures {
+		if err != nil {
+			return nil, ledger{}, err
+		}
+	}
+	times.done("judge", from)
+	var led ledger
+	seen := map[string]bool{}
+	for i := range rules {
+		for _, fn := range met[i] {
+			seen[fmt.Sprint(fn.Package, fn.Name, fn.Place)] = true
+		}
+		if idle[i] {
+			led.idle = append(led.idle, rules[i].Name)
+		}
+	}
+	led.withEvents = len(seen)
+	return judge.Merge(results), led, nil
+}
+
+// internal describes a bug: the stage, the rule, and a stack for who mends it.
+func internal(rule *properties.ResolvedRule, p any) error {
+	var bug *judge.Bug
+	if err, ok := p.(error); ok && errors.As(err, &bug) {
+		return &failure{stage: "internal", message: "a bug of pathtally: " + bug.Error(),
+			text: "pathtally: this is a bug of pathtally, not of your code\n    while       " + bug.Stage + "\n    rule        " + bug.Rule + "\n    at          " + bug.Where + "\n    found       " + bug.Text}
+	}
+	m := fmt.Sprintf("a bug of pathtally: judging rule %s: %v", rule.Name, p)
+	return &failure{stage: "internal", message: m, places: []string{rule.Pos},
+		text: fmt.Sprintf("pathtally: this is a bug of pathtally, not of your code\n    while       judging rule %s\n    found       %v\n\n%s", rule.Name, p, debug.Stack())}
+}
+
+// reportRun puts the numbers around the result.
+func reportRun(prog *load.Program, book *properties.RuleBook, r *judge.Result, led ledger, patterns []string) *report.Run {
+	run := &report.Run{Version: version, Module: prog.ModulePath, Builds: []string{prog.GOOS + "/" + prog.GOARCH}, Result: r,
+		Functions: len(prog.Functions()), WithEvents: led.withEvents}
+	sets := map[string]bool{}
+	for _, rule := range book.Rules {
+		if rule.Set != "" && !sets[rule.Set] {
+			sets[rule.Set] = true
+			run.Rulesets = append(run.Rulesets, report.Ruleset{Name: rule.Set, Version: version})
+		}
+	}
+	slices.SortFunc(run.Rulesets, func(a, b report.Ruleset) int { return strings.Compare(a.Name, b.Name) })
+	why := map[string]int{}
+	calls, cut := 0, 0
+	for _, p := range prog.Packages {
+		if !p.Bodies {
+			continue
+		}
+		run.Packages++
+		for _, l := range p.LeftOut {
+			// Tests that nobody asked for are no gap.
+			if l.Why != "tests are not asked for" {
+				why[l.Why]++
+			}
+		}
+		calls += p.CCalls
+		cut += len(p.Cut)
+	}
+	var whys []string
+	for w := range why {
+		whys = append(whys, w)
+	}
+	slices.Sort(whys)
+	left := func(n int, one, many, w string) {
+		if n == 1 {
+			run.NotJudged = append(run.NotJudged, report.Left{What: "1 " + one, Why: w})
+		} else if n > 1 {
+			run.NotJudged = append(run.NotJudged, report.Left{What: fmt.Sprintf("%d %s", n, many), Why: w})
+		}
+	}
+	for _, w := range whys {
+		left(why[w], "file", "files", w)
+	}
+	left(calls, "call into C", "calls into C", "C code is out of sight")
+	left(cut, "function", "functions", "its dealings with C could not be made out")
+	for _, name := range led.idle {
+		run.NotJudged = append(run.NotJudged, report.Left{What: "rule " + name, Why: "no call path meets its events"})
+	}
+	if len(patterns) == 1 && patterns[0] != "./..." && !strings.HasSuffix(patterns[0], "...") {
+		run.Target = patterns[0]
+	}
+	return run
+}
+
+// sameFunction compares a name that a person wrote with a function: Book,
+// Desk.Book, (*Desk).Book, berth.Book and the import path before it all do.
+func sameFunction(given string, fn properties.Func) bool {
+	bare := strings.NewReplacer("(", "", ")", "", "*", "").Replace
+	g, name := bare(given), bare(fn.Name)
+	full := fn.Package + "." + name
+	return g == name || g == full || strings.HasSuffix(full, "/"+g) || strings.HasSuffix(full, "."+g)
+}

@@ -1,0 +1,27 @@
+// Pathtally asks, for all call paths of a Go module, whether things that belong
+// in pairs come out even: locks, files, transactions, slots of a pool.
+//
+// This package holds the command: flags, terminal, files and exit statuses. It
+// analyses nothing itself.
+//
+//	pathtally check [packages]      judge the rules
+//	pathtally rules list|show|try   look at the rules, run their examples
+//
+// # Exit statuses of check
+//
+//	0  nothing is broken or undecided; an advice never stops
+//	1  something is broken (wins over 3)
+//	2  it could not run: usage, load or rule error, or a bug
+//	3  nothing is broken, something is undecided (not with --undecided note)
+//
+// Results go to standard output, everything else to standard error. With
+// --format json standard output holds exactly one JSON object, whatever
+// happens.
+//
+// # How a run goes
+//
+// loading (package frontend/load), rule files (package properties), one shared
+// analysis of the program, then one model and one judge per rule, several rules
+// at a time (--jobs), and the report. Work is spread over threads by rule; the
+// output does not depend on it.
+package main
