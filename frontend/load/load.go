@@ -106,7 +106,8 @@ type Package struct {
 	CCalls   int           // calls into C in its files; they are not judged
 	Cut      []CutFunction // functions left without a body because they speak to C in a way that could not be made out, in source order
 
-	// LeftOut lists files in Dir that are not part of the build.
+	// LeftOut lists Go files in Dir that are not part of the build, sorted.
+	// Complete for packages with bodies.
 	LeftOut []LeftOut
 
 	// TestVariant says what of its tests it holds.
@@ -152,7 +153,7 @@ func (v TestVariant) String() string {
 // LeftOut is a file that is not part of the build.
 type LeftOut struct {
 	File string // absolute
-	Why  string // "build constraints", "cgo is off", "tests are not asked for", "cannot be parsed"
+	Why  string // "build constraints", "cgo is off", "tests are not asked for", "cannot be parsed", or a cycle among tests
 }
 
 // Stats are sizes and times of a load. Times are for people; nothing that is

@@ -329,13 +329,18 @@ func TestTests(t *testing.T) {
 		"a/in_test.go", "package a\n\nimport \"testing\"\n\nfunc TestIn(t *testing.T) { B() }\n\nfunc B() {}\n",
 		"a/ex_test.go", "package a_test\n\nimport (\n\t\"testing\"\n\n\t\"example/harbour/a\"\n\t\"example/harbour/b\"\n)\n\nfunc TestEx(t *testing.T) { a.B(); b.Use() }\n",
 		"b/b.go", "package b\n\nimport \"example/harbour/a\"\n\nfunc Use() { a.A() }\n",
+		// Only tests need util, and it needs what they test.
+		"util/util.go", "package util\n\nimport \"example/harbour/a\"\n\nfunc Util() { a.A() }\n",
+		"a/more_test.go", "package a_test\n\nimport \"example/harbour/util\"\n\nfunc more() { util.Util() }\n",
 		"only/only_test.go", "package only\n\nimport \"testing\"\n\nfunc TestOnly(t *testing.T) {}\n",
 		// The tests of p need q, and those of q need p.
 		"p/p.go", "package p\n", "p/p_test.go", "package p\n\nimport _ \"example/harbour/q\"\n\nfunc helpP() {}\n",
 		"q/q.go", "package q\n", "q/q_test.go", "package q\n\nimport _ \"example/harbour/p\"\n\nfunc helpQ() {}\n",
 	)
 	without := mustLoad(t, Config{Dir: dir, Patterns: []string{"./..."}})
-	equal(t, "without tests", withoutInit(describe(without)), []string{"example/harbour/a.A a/a.go:3:6", "example/harbour/b.Use b/b.go:5:6"})
+	equal(t, "left out", leftOut(without), []string{"ex_test.go: tests are not asked for", "in_test.go: tests are not asked for", "more_test.go: tests are not asked for",
+		"p_test.go: tests are not asked for", "q_test.go: tests are not asked for"})
+	equal(t, "without tests", withoutInit(describe(without)), []string{"example/harbour/a.A a/a.go:3:6", "example/harbour/b.Use b/b.go:5:6", "example/harbour/util.Util util/util.go:5:6"})
 
 	prog := mustLoad(t, Config{Dir: dir, Patterns: []string{"./..."}, Tests: true})
 	equal(t, "with tests", withoutInit(describe(prog)), []string{
@@ -343,9 +348,21 @@ func TestTests(t *testing.T) {
 		"example/harbour/a.TestIn a/in_test.go:5:6",
 		"example/harbour/a.B a/in_test.go:7:6",
 		"example/harbour/a_test.TestEx a/ex_test.go:10:6",
+		"example/harbour/a_test.more a/more_test.go:5:6",
 		"example/harbour/b.Use b/b.go:5:6",
 		"example/harbour/only.TestOnly only/only_test.go:5:6",
 		"example/harbour/p.helpP p/p_test.go:5:6",
+		"example/harbour/util.Util util/util.go:5:6",
+	})
+	alone := mustLoad(t, Config{Dir: dir, Patterns: []string{"./a"}, Tests: true})
+	equal(t, "a alone", withoutInit(describe(alone)), []string{
+		"example/harbour/a.A a/a.go:3:6",
+		"example/harbour/a.TestIn a/in_test.go:5:6",
+		"example/harbour/a.B a/in_test.go:7:6",
+		"example/harbour/a_test.TestEx a/ex_test.go:10:6",
+		"example/harbour/a_test.more a/more_test.go:5:6",
+		"example/harbour/b.Use b/b.go:5:6",
+		"example/harbour/util.Util util/util.go:5:6",
 	})
 	if v := prog.Package("example/harbour/a").TestVariant; v != WithTests {
 		t.Errorf("a is %s", v)
@@ -357,6 +374,17 @@ func TestTests(t *testing.T) {
 	if len(q.LeftOut) != 1 || filepath.Base(q.LeftOut[0].File) != "q_test.go" {
 		t.Errorf("q leaves out %v, want q_test.go", q.LeftOut)
 	}
+}
+
+func leftOut(prog *Program) (out []string) {
+	for _, p := range prog.Packages {
+		if p.Main {
+			for _, l := range p.LeftOut {
+				out = append(out, filepath.Base(l.File)+": "+l.Why)
+			}
+		}
+	}
+	return out
 }
 
 func withoutInit(list []string) []string {
@@ -374,14 +402,7 @@ func TestBuilds(t *testing.T) {
 	)
 	load := func(tags string, env ...string) (funcs, out []string) {
 		prog := mustLoad(t, Config{Dir: dir, Patterns: []string{"./..."}, Tags: tags, Env: env})
-		for _, p := range prog.Packages {
-			if p.Main {
-				for _, l := range p.LeftOut {
-					out = append(out, filepath.Base(l.File)+": "+l.Why)
-				}
-			}
-		}
-		return withoutInit(describe(prog)), out
+		return withoutInit(describe(prog)), leftOut(prog)
 	}
 	funcs, out := load("", "GOOS=windows", "GOARCH=arm64", "CGO_ENABLED=0")
 	equal(t, "windows", funcs, []string{"example/harbour.windows a_windows.go:3:6"})

@@ -47,10 +47,7 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 	}
 
 	byListed := map[string]*listed{}
-	for _, lp := range l.packages {
-		if isTestVariant(lp) {
-			continue
-		}
+	for _, lp := range plain(l.packages) {
 		byListed[lp.ImportPath] = lp
 		p := newPackage(lp, l)
 		prog.Packages = append(prog.Packages, p)
@@ -83,6 +80,7 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 	}
 
 	prog.chooseBodies(cfg)
+	prog.explainLeftOut(cfg, byListed)
 	for _, p := range prog.Packages {
 		p.deps = nil
 		for _, d := range p.imports {
@@ -115,6 +113,31 @@ func buildTags(cfg *Config, goflags string) []string {
 		}
 	}
 	return strings.FieldsFunc(tags, func(r rune) bool { return r == ',' || r == ' ' })
+}
+
+// plain lists the packages as they are outside of test binaries. One that only
+// external tests need may be listed as a variant only, "q [p.test]", because
+// it needs the tested package in turn; then it is made out of the variant.
+func plain(all []*listed) []*listed {
+	var out []*listed
+	seen := map[string]bool{}
+	for _, lp := range all {
+		if !isTestVariant(lp) {
+			seen[lp.ImportPath] = true
+			out = append(out, lp)
+		}
+	}
+	for _, lp := range all {
+		path, _, variant := strings.Cut(lp.ImportPath, " [")
+		if !variant || lp.ForTest == "" || seen[path] || path == lp.ForTest || path == lp.ForTest+"_test" {
+			continue
+		}
+		seen[path] = true
+		q := *lp
+		q.ImportPath = path
+		out = append(out, &q)
+	}
+	return out
 }
 
 // isTestVariant reports whether lp is a package that exists for a test binary
@@ -162,18 +185,47 @@ func newPackage(lp *listed, l *listing) *Package {
 		p.addFile(f, cgo[f])
 	}
 	for _, f := range lp.IgnoredGoFiles {
-		why := "build constraints"
-		if l.env.CGO_ENABLED == "0" && importsC(filepath.Join(lp.Dir, f)) {
-			why = "cgo is off"
-		}
-		p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(lp.Dir, f), Why: why})
+		p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(lp.Dir, f), Why: leftByConstraints})
 	}
 	for _, f := range lp.InvalidGoFiles {
 		if !slices.Contains(names, f) {
-			p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(lp.Dir, f), Why: "cannot be parsed"})
+			p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(lp.Dir, f), Why: leftUnparsed})
 		}
 	}
 	return p
+}
+
+// The reasons of LeftOut.
+const (
+	leftByConstraints = "build constraints"
+	leftByCgo         = "cgo is off"
+	leftTests         = "tests are not asked for"
+	leftByCycle       = "its tests and those of another package need each other"
+	leftUnparsed      = "cannot be parsed"
+)
+
+// explainLeftOut completes LeftOut for the packages with bodies; of the
+// others nobody asks, and there are many.
+func (prog *Program) explainLeftOut(cfg *Config, byListed map[string]*listed) {
+	for _, p := range prog.Packages {
+		lp := byListed[p.Path]
+		if !p.Bodies || lp == nil {
+			continue
+		}
+		if !prog.cgo {
+			for i := range p.LeftOut {
+				if out := &p.LeftOut[i]; out.Why == leftByConstraints && importsC(out.File) {
+					out.Why = leftByCgo
+				}
+			}
+		}
+		if !cfg.Tests || !p.Named {
+			for _, f := range slices.Concat(lp.TestGoFiles, lp.XTestGoFiles) {
+				p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(p.Dir, f), Why: leftTests})
+			}
+		}
+		slices.SortFunc(p.LeftOut, func(a, b LeftOut) int { return strings.Compare(a.File, b.File) })
+	}
 }
 
 func (p *Package) addFile(name string, cgo bool) {
@@ -186,10 +238,11 @@ func (p *Package) addFile(name string, cgo bool) {
 
 // link notes that p's source imports path.
 func (prog *Program) link(p *Package, path string, imap map[string]string) {
-	source := path
+	source, _, _ := strings.Cut(path, " [")
 	if to := imap[path]; to != "" {
-		path, _, _ = strings.Cut(to, " [")
+		path = to
 	}
+	path, _, _ = strings.Cut(path, " [")
 	if q := prog.byPath[path]; q != nil && q != p {
 		p.imports[source] = q
 	}
@@ -204,20 +257,33 @@ func (prog *Program) link(p *Package, path string, imap map[string]string) {
 // only the tests of several packages taken together can close a cycle. Then
 // the tests of the later package, in the order of paths, are left out.
 func (prog *Program) addTests(l *listing, byListed map[string]*listed) {
-	maps := map[string]map[string]string{} // import maps of the variants
+	// Import maps of the variants, by their path without the "[p.test]".
+	maps := map[string]map[string]string{}
 	for _, lp := range l.packages {
 		if lp.ForTest == "" {
 			continue
 		}
-		m := maps[lp.ForTest]
-		if m == nil {
-			m = map[string]string{}
-			maps[lp.ForTest] = m
+		self, _, _ := strings.Cut(lp.ImportPath, " [")
+		if self != lp.ForTest && self != lp.ForTest+"_test" {
+			continue
 		}
+		m := map[string]string{}
 		for from, to := range lp.ImportMap {
-			to, _, _ = strings.Cut(to, " [")
-			if to != from && to != lp.ForTest {
-				m[from] = to
+			m[from], _, _ = strings.Cut(to, " [")
+		}
+		maps[self] = m
+	}
+	// connect adds the imports of test files: as the source writes them, and,
+	// where that differs, as they were resolved.
+	connect := func(p *Package, key string, imports []string) {
+		for _, path := range imports {
+			if q := prog.byPath[path]; q != nil && q != p {
+				p.imports[path] = q
+			}
+		}
+		for from, to := range maps[key] {
+			if q := prog.byPath[to]; q != nil && q != p {
+				p.imports[from] = q
 			}
 		}
 	}
@@ -227,9 +293,8 @@ func (prog *Program) addTests(l *listing, byListed map[string]*listed) {
 		if !p.Named || lp == nil {
 			continue
 		}
-		imap := maps[p.Path]
 		resolve := func(path string) *Package {
-			if to := imap[path]; to != "" {
+			if to := maps[p.Path][path]; to != "" {
 				path = to
 			}
 			return prog.byPath[path]
@@ -242,7 +307,7 @@ func (prog *Program) addTests(l *listing, byListed map[string]*listed) {
 		}
 		if cycle {
 			for _, f := range slices.Concat(lp.TestGoFiles, lp.XTestGoFiles) {
-				p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(p.Dir, f), Why: "its tests and those of another package need each other"})
+				p.LeftOut = append(p.LeftOut, LeftOut{File: filepath.Join(p.Dir, f), Why: leftByCycle})
 			}
 			continue
 		}
@@ -251,11 +316,7 @@ func (prog *Program) addTests(l *listing, byListed map[string]*listed) {
 			for _, f := range lp.TestGoFiles {
 				p.addFile(f, false)
 			}
-			for _, path := range lp.TestImports {
-				if q := resolve(path); q != nil && q != p {
-					p.imports[path] = q
-				}
-			}
+			connect(p, p.Path, lp.TestImports)
 		}
 		if len(lp.XTestGoFiles) > 0 {
 			x := &Package{
@@ -266,11 +327,7 @@ func (prog *Program) addTests(l *listing, byListed map[string]*listed) {
 			for _, f := range lp.XTestGoFiles {
 				x.addFile(f, false)
 			}
-			for _, path := range lp.XTestImports {
-				if q := resolve(path); q != nil {
-					x.imports[path] = q
-				}
-			}
+			connect(x, x.Path, lp.XTestImports)
 			external = append(external, x)
 		}
 	}
