@@ -22,9 +22,9 @@
 // grammar.ebnf and nothing of the parser, that each rule file of the project has
 // exactly one derivation and that parser and grammar accept the same files.
 //
-// Phases, in order: lex (lex.go), parse (parse.go); the tree is in ast.go, its
-// layout as text in format.go, errors in errors.go. Sorts and names are not looked at
-// here: package properties does that.
+// Phases, in order: lex (lex.go), parse (parse.go); the tree is in ast.go, the
+// layout of files in format.go, errors in errors.go. Sorts and names are not
+// looked at here: package properties does that.
 package syntax
 
 import _ "embed"
