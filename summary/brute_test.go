@@ -319,15 +319,7 @@ func check(t *testing.T, sys *pds.Table, q Question, limit int, wide bool) Value
 		if wide && least >= 0 && p.Len() != least {
 			fail("bound %d: witness of %d steps, shortest %d: %+v", bound, p.Len(), least, p)
 		}
-		for i, f := range s.AlongPath(p, accept) {
-			if i > 0 && i <= len(p.Steps) {
-				// What the step before could still reach includes what is left now.
-				continue
-			}
-			if i == 0 && f.Here.String() != v.String() {
-				fail("along the path: %v at the start, greatest %v", f.Here, v)
-			}
-		}
+		checkAlong(s, p, accept, v, o, fail)
 	}
 	return v
 }
@@ -378,6 +370,49 @@ func TestSpawnedAgainstEnumeration(t *testing.T) {
 	for _, k := range []ValueKind{NoPath, Finite, Unbounded} {
 		if kinds[k] < 30 {
 			t.Errorf("only %d answers of kind %d", kinds[k], k)
+		}
+	}
+}
+
+// checkAlong checks that values along a path hang together: the first is the
+// greatest of all, every one is the best of its ways out (or of stopping here),
+// and the way taken is worth what is worth behind it.
+func checkAlong(s *Solution, p Path, accept func(pds.StateID) bool, v Value, o *oracle, fail func(string, ...any)) {
+	forks := s.AlongPath(p, accept)
+	if len(forks) != len(p.Steps)+1 {
+		fail("%d forks for %d steps", len(forks), len(p.Steps))
+	}
+	if got := forks[0].Here; got.String() != v.String() {
+		fail("along the path: %v at the start, greatest %v", got, v)
+	}
+	past := FiniteValue(0)
+	for i, f := range forks {
+		here := Value{Kind: NoPath}
+		if s.q.AnyMoment {
+			here = past
+		}
+		for _, w := range f.Ways {
+			here = best(here, w)
+		}
+		stopped := p.End == pds.EndStop && i == len(p.Steps)
+		if !stopped && (i < len(p.Steps) || p.Last.Symbol != 0) && here.String() != f.Here.String() {
+			fail("step %d: %v, but the best way is worth %v: %+v", i, f.Here, here, p)
+		}
+		if i < len(p.Steps) {
+			st := &p.Steps[i]
+			if len(f.Ways) != len(o.sys.Rules(st.Head, nil)) {
+				fail("step %d: %d ways", i, len(f.Ways))
+			}
+			next := forks[i+1].Here
+			if st.Rule.Mark&s.q.StopMarks != 0 {
+				next = best(next, past)
+			}
+			if f.Ways[st.Index].String() != next.String() {
+				fail("step %d: the way taken is worth %v, then %v", i, f.Ways[st.Index], next)
+			}
+			c := completer{s: s}
+			n := s.e.nodeOf[st.Head]
+			past = plus(past, c.stepValue(s.e.nodes[n].ruleStart+int32(st.Index)))
 		}
 	}
 }

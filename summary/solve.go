@@ -156,6 +156,8 @@ type Solution struct {
 	pumps map[NT][]pumpStep
 	// exact: look for pumps after every improvement, whatever it costs.
 	exact bool
+	// allowance of every component, see pumpAllowance; tests lower it.
+	allowance int
 }
 
 // Solve prepares the answers to a question. It panics if the number of weights
@@ -164,7 +166,7 @@ func (e *Engine) Solve(q Question) *Solution {
 	if len(q.Weights) != e.sys.NumCounts() {
 		panic(fmt.Sprintf("summary: solve: %d weights for %d counts", len(q.Weights), e.sys.NumCounts()))
 	}
-	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}}
+	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, allowance: pumpAllowance}
 	s.q.Weights = slices.Clone(q.Weights)
 	if q.TakeDoubts {
 		s.doubt = 1
@@ -637,7 +639,10 @@ func (k *ask) component(comp []int32) {
 		return
 	}
 	r := &relaxation{k: k, in: in, comp: comp}
-	r.allowance = pumpAllowance + 64*len(comp)
+	r.allowance = s.allowance
+	if s.allowance > 0 {
+		r.allowance += 64 * len(comp)
+	}
 	if s.exact {
 		r.allowance = 1 << 62
 	}

@@ -1,0 +1,289 @@
+package summary
+
+import (
+	"fmt"
+	"reflect"
+	"strings"
+	"testing"
+
+	"pathtally/pds"
+)
+
+func replayed(t *testing.T, sys pds.System, p Path) pds.Run {
+	t.Helper()
+	run, err := pds.Replay(sys, p.Start, p.Choices())
+	if err != nil {
+		t.Fatal(err)
+	}
+	return run
+}
+
+// A loop that takes: past a far bound the path is the loop as often as needed,
+// and says so.
+func TestPumpedLoop(t *testing.T) {
+	b := pds.NewBuilder("taken")
+	b.Start("run", "top")
+	b.Step("run", "top", "run", "body")
+	b.Pop("run", "top", "back")
+	b.Step("run", "body", "run", "top", pds.Adds("taken", 3))
+	sys := b.Table()
+	s := New(sys, 0).Solve(Question{Weights: []int64{1}})
+	h := sys.Starts()[0]
+	p, ok := s.Witness(h, all, 1000)
+	if !ok {
+		t.Fatal("no witness")
+	}
+	run := replayed(t, sys, p)
+	if got := run.Total[0]; got != 1002 {
+		t.Errorf("taken %d, want 1002, the first multiple of 3 past 1000", got)
+	}
+	if len(p.Steps) != 2*334+1 {
+		t.Errorf("%d steps", len(p.Steps))
+	}
+	if want := []Repeat{{0, 2, 334}}; !reflect.DeepEqual(p.Repeats, want) {
+		t.Errorf("repeats %v, want %v", p.Repeats, want)
+	}
+	// Once is enough for a near bound, and then nothing is pumped.
+	if p, _ := s.Witness(h, all, 1); len(p.Steps) != 3 || p.Repeats != nil {
+		t.Errorf("near bound: %d steps, %v", len(p.Steps), p.Repeats)
+	}
+	if _, err := s.FindWitness(h, all, 1<<40); err != ErrTooLong {
+		t.Errorf("bound 2^40: %v", err)
+	}
+}
+
+// A recursion that takes on the way down and again on the way up: two blocks.
+func TestPumpedRecursion(t *testing.T) {
+	b := pds.NewBuilder("taken")
+	b.Start("run", "f")
+	b.Push("run", "f", "run", "f", "up", pds.Adds("taken", 1))
+	b.Pop("run", "f", "back")
+	b.Step("back", "up", "run", "up2", pds.Adds("taken", 1))
+	b.Pop("run", "up2", "back")
+	sys := b.Table()
+	s := New(sys, 0).Solve(Question{Weights: []int64{1}})
+	p, ok := s.Witness(sys.Starts()[0], all, 199)
+	if !ok {
+		t.Fatal("no witness")
+	}
+	if run := replayed(t, sys, p); run.Total[0] != 200 || run.End != pds.EndEmpty {
+		t.Errorf("taken %d, %v", run.Total[0], run.End)
+	}
+	if want := []Repeat{{0, 1, 100}, {101, 2, 100}}; !reflect.DeepEqual(p.Repeats, want) {
+		t.Errorf("repeats %v, want %v", p.Repeats, want)
+	}
+	for _, r := range p.Repeats {
+		for i := range r.Len * (r.Times - 1) {
+			if a, b := p.Steps[r.From+i], p.Steps[r.From+i+r.Len]; a.Head != b.Head || a.Index != b.Index {
+				t.Fatalf("%v: steps %d and %d differ", r, r.From+i, r.From+i+r.Len)
+			}
+		}
+	}
+}
+
+// serve: for { mu.Lock() }. No run ends; every moment counts.
+func TestNeverEnds(t *testing.T) {
+	b := pds.NewBuilder("taken")
+	b.Start("run", "loop")
+	b.Step("run", "loop", "run", "loop", pds.Adds("taken", 1))
+	sys := b.Table()
+	h := sys.Starts()[0]
+	e := New(sys, 0)
+	if v := e.Solve(Question{Weights: []int64{1}}).Greatest(h, all); v.Kind != NoPath {
+		t.Errorf("at the end: %v", v)
+	}
+	s := e.Solve(Question{Weights: []int64{1}, AnyMoment: true})
+	p, ok := s.Witness(h, all, 1)
+	if !ok || len(p.Steps) != 2 || p.End != pds.EndMiddle {
+		t.Errorf("at some moment: %v, %+v", ok, p)
+	}
+}
+
+// A claim about moments counts spawned work at the moment that keeps it.
+func TestSpawnedAtMoments(t *testing.T) {
+	b := pds.NewBuilder("taken", "released")
+	b.Start("run", "main")
+	b.Step("run", "main", "run", "next", pds.Adds("taken", 1), pds.Spawns("run", "work"))
+	b.Step("run", "next", "run", "last", pds.Adds("taken", 1))
+	b.Pop("run", "last", "back", pds.Marked("here"))
+	// The work takes once more and then releases twice.
+	b.Step("run", "work", "run", "w2", pds.Adds("taken", 1))
+	b.Pop("run", "w2", "back", pds.Adds("released", 2))
+	sys := b.Table()
+	e := New(sys, 0)
+	h := sys.Starts()[0]
+	none := func(pds.StateID) bool { return false }
+	for _, c := range []struct {
+		q    Question
+		want string
+	}{
+		{Question{Weights: []int64{1, -1}, AnyMoment: true}, "1"},
+		{Question{Weights: []int64{1, -1}, StopMarks: 2}, "1"},
+		{Question{Weights: []int64{-1, 1}, AnyMoment: true}, "0"},
+		{Question{Weights: []int64{-1, 1}, StopMarks: 2}, "-3"},
+		{Question{Weights: []int64{1, 0}, StopMarks: 2}, "2"},
+	} {
+		s := e.Solve(c.q)
+		v := s.Greatest(h, none)
+		if v.String() != c.want {
+			t.Errorf("%+v: %v, want %s", c.q, v, c.want)
+		}
+		n, _ := v.Int64()
+		p, ok := s.Witness(h, none, n-1)
+		if !ok {
+			t.Fatal("no witness")
+		}
+		run := replayed(t, sys, p)
+		if got := run.Total[0]*c.q.Weights[0] + run.Total[1]*c.q.Weights[1]; got != n {
+			t.Errorf("%+v: witness weighs %d, want %d", c.q, got, n)
+		}
+	}
+	// Spawned work that can release for ever keeps any upper bound on taken.
+	b = pds.NewBuilder("taken", "released")
+	b.Start("run", "main")
+	b.Step("run", "main", "run", "next", pds.Spawns("run", "work"))
+	b.Pop("run", "next", "back", pds.Adds("taken", 5))
+	b.Step("run", "work", "run", "work", pds.Adds("released", 1))
+	sys = b.Table()
+	s := New(sys, 0).Solve(Question{Weights: []int64{1, -1}, AnyMoment: true})
+	if v := s.Greatest(sys.Starts()[0], all); v.String() != "0" {
+		t.Errorf("released for ever: %v, want 0 (before the work was spawned)", v)
+	}
+}
+
+// Spawned work without an end counts at any moment of it at ends, and is listed.
+func TestEndlessWork(t *testing.T) {
+	b := pds.NewBuilder("added", "done")
+	b.Start("run", "main")
+	b.Step("run", "main", "run", "next", pds.Adds("added", 1), pds.Spawns("run", "serve"))
+	b.Pop("run", "next", "back", pds.Spawns("run", "once"))
+	b.Step("run", "serve", "run", "serve", pds.Adds("added", 1))
+	b.Pop("run", "once", "back", pds.Adds("done", 1))
+	sys := b.Table()
+	e := New(sys, 0)
+	h := sys.Starts()[0]
+	s := e.Solve(Question{Weights: []int64{1, -1}})
+	if v := s.Greatest(h, all); v.Kind != Unbounded {
+		t.Errorf("added - done: %v", v)
+	}
+	if v := e.Solve(Question{Weights: []int64{-1, 1}}).Greatest(h, all); v.String() != "0" {
+		t.Errorf("done - added: %v", v)
+	}
+	heads, ok := e.Endless(h)
+	if want := []pds.Head{sys.Head("run", "serve")}; !ok || !reflect.DeepEqual(heads, want) {
+		t.Errorf("endless %v, want %v", heads, want)
+	}
+	p, ok := s.Witness(h, all, 3)
+	if !ok {
+		t.Fatal("no witness")
+	}
+	if run := replayed(t, sys, p); run.Total[0]-run.Total[1] != 4 || !p.Steps[0].Spawned[0].Endless || p.Steps[1].Spawned[0].Endless {
+		t.Errorf("%+v", p)
+	}
+}
+
+func TestAlongPathFindsCause(t *testing.T) {
+	// Book and settle of the deferred unlock: after urgent nothing unlocks.
+	b := pds.NewBuilder("taken", "released")
+	b.Start("run", "42")
+	b.Step("run", "42", "run", "43", pds.Adds("taken", 1))
+	b.Push("run", "43", "run", "44", "settle")
+	b.Pop("run", "44", "back")
+	b.Step("back", "settle", "run", "55")
+	b.Pop("run", "55", "back", pds.Labelled("urgent"))
+	b.Step("run", "55", "run", "59", pds.Labelled("not urgent"))
+	b.Pop("run", "59", "back", pds.Adds("released", 1))
+	sys := b.Table()
+	e := New(sys, 0)
+	h := sys.Starts()[0]
+	p, ok := e.Solve(Question{Weights: []int64{1, -1}}).Witness(h, all, 0)
+	if !ok {
+		t.Fatal("no witness")
+	}
+	// Least taken - released: greatest of its negation.
+	var got []string
+	for _, f := range e.Solve(Question{Weights: []int64{-1, 1}}).AlongPath(p, all) {
+		got = append(got, fmt.Sprint(f.Here, f.Ways))
+	}
+	want := "0 [0]|0 [0]|0 [0]|0 [0]|0 [-1 0]|-1 []"
+	if s := strings.Join(got, "|"); s != want {
+		t.Errorf("got  %s\nwant %s", s, want)
+	}
+}
+
+func TestGrammar(t *testing.T) {
+	for _, c := range []struct {
+		grammar string
+		q       Question
+	}{
+		{"S -> a S T | b | D ; T -> eps ; D -> a D", Question{}},
+	} {
+		sys := grammarSystem(t, c.grammar)
+		e := New(sys, 0)
+		h := sys.Starts()[0]
+		g, err := e.Grammar(h, all, c.q)
+		if err != nil {
+			t.Fatal(err)
+		}
+		// Every nonterminal has a production, every production stands in the
+		// system, and the dead D is gone.
+		has := make([]int, g.NumNT)
+		for _, p := range g.Prods {
+			has[p.Lhs]++
+			if p.Lhs == g.Start {
+				continue
+			}
+			rules := sys.Rules(p.Rule.Head, nil)
+			if rules[p.Rule.Index].Effect != p.Effect {
+				t.Errorf("%+v has another effect than its rule", p)
+			}
+			if g.Heads[p.Lhs] != p.Rule.Head {
+				t.Errorf("%+v under %v", p, g.Heads[p.Lhs])
+			}
+		}
+		for a, n := range has {
+			if n == 0 {
+				t.Errorf("%s has no production", g.Names[a])
+			}
+			if g.Heads[a] == sys.Head("q", "D") {
+				t.Error("the dead nonterminal is there")
+			}
+		}
+		if g.NumNT != 3 || len(g.Prods) != 4 {
+			t.Errorf("%d nonterminals, %d productions: %+v", g.NumNT, len(g.Prods), g)
+		}
+		if _, err := e.Grammar(sys.Head("q", "D"), all, c.q); err != ErrNoWitness {
+			t.Errorf("empty grammar: %v", err)
+		}
+		// At moments the dead part lives.
+		g, err = e.Grammar(sys.Head("q", "D"), all, Question{AnyMoment: true})
+		if err != nil || g.NumNT != 2 || len(g.Prods) != 3 {
+			t.Errorf("moments of D: %v, %+v", err, g)
+		}
+	}
+}
+
+// Answers do not depend on what was asked before.
+func TestOrderOfQuestions(t *testing.T) {
+	sys := recursion(30)
+	heads := []pds.Head{{State: 1, Symbol: 1}, {State: 1, Symbol: 41}, {State: 1, Symbol: 10}, {State: 1, Symbol: 78}}
+	paths := map[pds.Head]string{}
+	for round := range 2 {
+		e := New(sys, 0)
+		for i := range heads {
+			h := heads[i]
+			if round == 1 {
+				h = heads[len(heads)-1-i]
+			}
+			p, ok := e.Solve(Question{Weights: []int64{1, 0}, AnyMoment: true}).Witness(h, all, 2)
+			if !ok {
+				t.Fatalf("%v: no witness", h)
+			}
+			text := fmt.Sprint(p)
+			if old, seen := paths[h]; seen && old != text {
+				t.Errorf("%v: %s, asked in other order %s", h, text, old)
+			}
+			paths[h] = text
+		}
+	}
+}
