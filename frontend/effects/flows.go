@@ -13,7 +13,9 @@ package effects
 //
 // and a store *a = b is the edge b → a with stored(a) ⊇ holds(b). Fields and
 // elements are not told apart, nor is the order of instructions (an
-// over-approximation). In spirit: Andersen, Program analysis and specialization
+// over-approximation). The package variables together, and whatever keeps (open
+// channels, panics under way), are two more roots: what was put there by one
+// call may come back by another. In spirit: Andersen, Program analysis and specialization
 // for the C programming language, 1994, chapter 4, with all fields collapsed.
 
 import (
@@ -27,7 +29,7 @@ import (
 // Flow says where a root, or what it reaches, may go by one call.
 type Flow struct {
 	Results uint64 // bit j: into result j (bit 63: some result from 63 on)
-	Roots   uint64 // bit k: into the memory of root k (bit 63: some root from 59 on)
+	Roots   uint64 // bit k: into the memory of root k (bit 63: some root from 59 on); its own bit: one part of it into another
 	Global  bool   // into a package variable
 	Kept    bool   // into a channel, a goroutine, a panic or unknown code
 }
@@ -54,7 +56,7 @@ func (f Flow) union(g Flow) Flow {
 // flowBit is the mask bit of root i: roots from maxRoots on share bit 63.
 func flowBit(i int) uint64 {
 	if i >= maxRoots {
-		i = 63
+		i = overflowBit
 	}
 	return 1 << uint(i)
 }
@@ -78,18 +80,33 @@ const (
 	keptValue   int32 = 1
 )
 
+// Mask bits of the two roots that are no parameters; roots from maxRoots on
+// share overflowBit.
+const (
+	globalBit   = 60
+	keptBit     = 61
+	overflowBit = 63
+)
+
 // stepFlows is a stage.
 func (t *Table) stepFlows(n *node) bool {
 	var fl []Flow
+	var outside [2]Flow
 	switch {
 	case n.fn == nil:
-		fl = t.groupFlows(n)
+		fl, outside = t.groupFlows(n)
 	case n.bodyless():
 		fl = blindFlows(n)
 	default:
-		fl = t.flow.solve(n)
+		fl, outside = t.flow.solve(n)
 	}
 	changed := false
+	for i, f := range outside {
+		if u := n.sum.outside[i].union(f); u != n.sum.outside[i] {
+			n.sum.outside[i] = u
+			changed = true
+		}
+	}
 	for i, f := range fl {
 		if u := n.sum.flows[i].union(f); u != n.sum.flows[i] {
 			n.sum.flows[i] = u
@@ -101,30 +118,38 @@ func (t *Table) stepFlows(n *node) bool {
 
 // groupFlows joins the flows of the candidates; root n.roots is the function
 // value called, for its captured variables.
-func (t *Table) groupFlows(n *node) []Flow {
-	fl := make([]Flow, n.roots+1)
+func (t *Table) groupFlows(n *node) (fl []Flow, outside [2]Flow) {
+	fl = make([]Flow, n.roots+1)
 	for _, m := range n.members {
 		mn := t.nodes[m]
 		p := numParams(mn.fn)
 		low := uint64(1)<<uint(min(p, maxRoots)) - 1
+		rename := func(f Flow) Flow {
+			if f.Roots&^low != 0 { // into captured variables
+				f.Roots = f.Roots&low | flowBit(n.roots)
+			}
+			return f
+		}
 		for i, f := range mn.sum.flows {
 			k := i
 			if i >= p {
 				k = n.roots
 			}
-			if f.Roots&^low != 0 { // into captured variables
-				f.Roots = f.Roots&low | flowBit(n.roots)
-			}
-			fl[k] = fl[k].union(f)
+			fl[k] = fl[k].union(rename(f))
+		}
+		for i, f := range mn.sum.outside {
+			outside[i] = outside[i].union(rename(f))
 		}
 	}
 	if n.partial {
+		// Anything may go anywhere.
+		all := Flow{^uint64(0), ^uint64(0) &^ (1<<globalBit | 1<<keptBit), true, true}
 		for i := range fl {
-			fl[i].Results = ^uint64(0)
-			fl[i].Kept = true
+			fl[i] = all
 		}
+		outside = [2]Flow{all, all}
 	}
-	return fl
+	return fl, outside
 }
 
 // blindFlows is the borrowing of code without body: results may hold the
@@ -141,11 +166,11 @@ func blindFlows(n *node) []Flow {
 	return fl
 }
 
-func (s *flowSolver) solve(n *node) []Flow {
+func (s *flowSolver) solve(n *node) (fl []Flow, outside [2]Flow) {
 	s.n = n
 	fn := n.fn
 	clear(s.index)
-	s.holds = append(s.holds[:0], 0, 0)
+	s.holds = append(s.holds[:0], 1<<globalBit, 1<<keptBit)
 	s.stored = append(s.stored[:0], 0, 0)
 	s.edges, s.puts = s.edges[:0], s.puts[:0]
 	roots := 0
@@ -161,7 +186,7 @@ func (s *flowSolver) solve(n *node) []Flow {
 	for _, f := range fn.FreeVars {
 		root(f)
 	}
-	fl := make([]Flow, roots)
+	fl = make([]Flow, roots)
 	site := 0
 	for _, b := range fn.Blocks {
 		for _, instr := range b.Instrs {
@@ -208,13 +233,17 @@ func (s *flowSolver) solve(n *node) []Flow {
 	}
 	each := func(m uint64, f func(*Flow)) {
 		for ; m != 0; m &= m - 1 {
-			i := bits.TrailingZeros64(m)
-			if i < maxRoots {
+			switch i := bits.TrailingZeros64(m); i {
+			case globalBit:
+				f(&outside[0])
+			case keptBit:
+				f(&outside[1])
+			case overflowBit:
+				for k := maxRoots; k < len(fl); k++ {
+					f(&fl[k])
+				}
+			default:
 				f(&fl[i])
-				continue
-			}
-			for k := maxRoots; k < len(fl); k++ {
-				f(&fl[k])
 			}
 		}
 	}
@@ -244,7 +273,7 @@ func (s *flowSolver) solve(n *node) []Flow {
 	for _, f := range fn.FreeVars {
 		into(f)
 	}
-	return fl
+	return fl, outside
 }
 
 // value returns the index of v.
@@ -290,10 +319,8 @@ func (s *flowSolver) put(x, a ssa.Value) {
 		return
 	}
 	from, to := s.value(x), s.value(a)
-	if from != to {
-		s.edge(from, to)
-		s.puts = append(s.puts, flowEdge{from, to})
-	}
+	s.edge(from, to)
+	s.puts = append(s.puts, flowEdge{from, to})
 }
 
 // keep adds a flow of x into whatever keeps.
@@ -438,42 +465,57 @@ func (s *flowSolver) call(st *site) {
 		}
 		return c.Value
 	}
-	single := res != nil && c.Signature().Results().Len() == 1
-	for i, f := range callee.sum.flows {
-		if f == (Flow{}) {
-			continue
-		}
+	// index is value i of this body, -1 if it has no memory.
+	index := func(i int) int32 {
 		x := value(i)
 		if x == nil || plainValue(x) || !s.t.places.hasPointers(x.Type()) {
-			continue
+			return -1
 		}
-		if f.Results != 0 && res != nil && (!single || f.ToResult(0)) {
-			s.flow(x, res)
+		return s.value(x)
+	}
+	result := int32(-1)
+	single := false
+	if res != nil && s.t.places.hasPointers(res.Type()) {
+		result = s.value(res)
+		single = c.Signature().Results().Len() == 1
+	}
+	apply := func(x int32, f Flow) {
+		if x < 0 || f == (Flow{}) {
+			return
+		}
+		if result >= 0 && f.Results != 0 && (!single || f.ToResult(0)) {
+			s.edge(x, result)
 		}
 		if f.Global {
-			s.edge(s.value(x), globalValue)
+			s.edge(x, globalValue)
 		}
 		if f.Kept {
-			s.edge(s.value(x), keptValue)
-			if res != nil && callee.fn == nil && callee.partial && s.t.places.hasPointers(res.Type()) {
-				s.edge(keptValue, s.value(res))
+			s.edge(x, keptValue)
+		}
+		put := func(k int) {
+			if a := index(k); a >= 0 {
+				s.edge(x, a)
+				s.puts = append(s.puts, flowEdge{x, a})
 			}
 		}
 		for m := f.Roots; m != 0; m &= m - 1 {
-			k := bits.TrailingZeros64(m)
-			if k < maxRoots {
-				if a := value(k); a != nil && a != x {
-					s.put(x, a)
+			switch k := bits.TrailingZeros64(m); {
+			case k == overflowBit:
+				for k := maxRoots; k < len(callee.sum.flows); k++ {
+					put(k)
 				}
-				continue
-			}
-			for k := maxRoots; k < len(callee.sum.flows); k++ {
-				if a := value(k); a != nil && a != x {
-					s.put(x, a)
-				}
+			case k < len(callee.sum.flows):
+				put(k)
 			}
 		}
 	}
+	for i, f := range callee.sum.flows {
+		if f != (Flow{}) {
+			apply(index(i), f)
+		}
+	}
+	apply(globalValue, callee.sum.outside[0])
+	apply(keptValue, callee.sum.outside[1])
 }
 
 // callback adds the flows of a function that code without body may call with
@@ -493,6 +535,9 @@ func (s *flowSolver) callback(st *site) {
 			fromArgs = fromArgs.union(f)
 		}
 	}
+	if fromOwn.Roots != 0 && len(st.args) > 0 {
+		s.put(st.handed, st.handed) // one captured variable into another
+	}
 	toOwn := false
 	for k := range callee.sum.flows {
 		toOwn = toOwn || (k < first || k >= own) && fromArgs.ToRoot(k)
@@ -509,6 +554,15 @@ func (s *flowSolver) callback(st *site) {
 		}
 	}
 	apply(st.handed, fromOwn)
+	if !plainValue(st.handed) && s.t.places.hasPointers(st.handed.Type()) {
+		for i, from := range []int32{globalValue, keptValue} {
+			if f := callee.sum.outside[i]; f.Roots != 0 {
+				to := s.value(st.handed)
+				s.edge(from, to)
+				s.puts = append(s.puts, flowEdge{from, to})
+			}
+		}
+	}
 	for _, a := range st.args {
 		if a == st.handed {
 			continue

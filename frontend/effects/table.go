@@ -87,7 +87,8 @@ type Summary struct {
 	rel     []*set // by root
 	exits   Exit
 	results []Result
-	flows   []Flow // by root
+	flows   []Flow  // by root
+	outside [2]Flow // of what package variables reach, and of what is kept
 	pure    bool
 	reads   *set // pure only
 }
@@ -645,6 +646,10 @@ func (s *Summary) Flow(i int) Flow {
 	}
 	return s.flows[i]
 }
+
+// FlowOfGlobals says where what package variables reach may go; its Global bit
+// means nothing.
+func (s *Summary) FlowOfGlobals() Flow { return s.outside[0] }
 
 // Const returns the constant that result j always is, or nil.
 func (s *Summary) Const(j int) constant.Value { return s.results[j].Const }
