@@ -65,7 +65,8 @@ type listing struct {
 	env      goEnv
 	dir      string // absolute
 	packages []*listed
-	warnings string // standard error of go list
+	warnings string              // standard error of go list
+	broken   map[string][]*Error // with Partial: by path, what the go command says of a package
 }
 
 const listFields = "-json=ImportPath,Name,Dir,Standard,DepOnly,ForTest,Match,GoFiles,CgoFiles,IgnoredGoFiles,InvalidGoFiles," +
@@ -90,7 +91,7 @@ func environment(cfg *Config) []string {
 }
 
 func list(cfg *Config) (*listing, error) {
-	l := &listing{}
+	l := &listing{broken: map[string][]*Error{}}
 	dir, err := filepath.Abs(cfg.Dir)
 	if err != nil {
 		return nil, err
@@ -180,6 +181,7 @@ func commandError(cfg *Config, dir, stderr string, err error) error {
 }
 
 var (
+	asksForGo  = regexp.MustCompile(`^(?:(?:\S*[/\\])?(go\.mod|go\.work) requires go >= |download(?:ing)? go)(\d[0-9A-Za-z.]*)`)
 	namesPlace = regexp.MustCompile(`^(\S+\.(?:mod|work|sum)(?::\d+(?::\d+)?)?):\s+(.*)$`)
 )
 
@@ -211,6 +213,12 @@ func classify(dir, stderr string) *Error {
 	case strings.Contains(first, "requires go >= "), strings.Contains(first, "toolchain not available"), strings.Contains(first, "download go1"),
 		strings.Contains(first, "golang.org/toolchain"):
 		e.Kind = NewerGo
+		// "go.mod requires go >= 1.30 (running go 1.26; GOTOOLCHAIN=local)" or
+		// "downloading go1.30 (linux/amd64); ...: toolchain not available".
+		if m := asksForGo.FindStringSubmatch(first); m != nil {
+			e.Place = nearest(dir, m[1])
+			e.Message = fmt.Sprintf("this asks for Go %s; this pathtally was built with %s", m[2], strings.TrimPrefix(runtime.Version(), "go"))
+		}
 	case needsModule(first):
 		return noModule(dir)
 	case missing(first):
@@ -220,6 +228,26 @@ func classify(dir, stderr string) *Error {
 		e.Kind = BadModule
 	}
 	return e
+}
+
+// nearest finds the file name, or if that is "" the go.work or go.mod in
+// force, in dir or above it; "" if there is none.
+func nearest(dir, name string) string {
+	names := []string{name}
+	if name == "" {
+		names = []string{"go.work", "go.mod"}
+	}
+	for _, name := range names {
+		for d := dir; ; d = filepath.Dir(d) {
+			if st, err := os.Stat(filepath.Join(d, name)); err == nil && st.Mode().IsRegular() {
+				return filepath.Join(d, name)
+			}
+			if d == filepath.Dir(d) {
+				break
+			}
+		}
+	}
+	return ""
 }
 
 // noModule is the error for a folder outside of any module.
@@ -295,7 +323,7 @@ func (l *listing) check(cfg *Config) error {
 		if p.ForTest != "" && !cfg.Tests {
 			continue
 		}
-		e := &Error{Kind: BadPackage, Package: p.ImportPath, Place: p.Error.Pos, Message: oneLine(p.Error.Err)}
+		e := &Error{Kind: BadPackage, Package: p.ImportPath, Place: l.place(p.Error.Pos), Message: oneLine(p.Error.Err)}
 		switch {
 		case strings.Contains(e.Message, "requires go >= "):
 			e.Kind = NewerGo
@@ -327,8 +355,14 @@ func (l *listing) check(cfg *Config) error {
 		case strings.Contains(e.Message, "expected "), strings.Contains(e.Message, "illegal "):
 			e.Kind = SyntaxError
 		}
-		if e.Kind == SyntaxError && cfg.Partial {
-			continue // met again, and told, when the file is read
+		if cfg.Partial {
+			switch {
+			case e.Kind == SyntaxError:
+				continue // met again, and told, when the file is read
+			case e.Kind == MissingModule, e.Kind == BadPackage && !strings.HasPrefix(e.Message, "import cycle"):
+				l.broken[p.ImportPath] = append(l.broken[p.ImportPath], e)
+				continue
+			}
 		}
 		errs = append(errs, e)
 	}
@@ -365,6 +399,33 @@ func (l *listing) check(cfg *Config) error {
 		return errs
 	}
 	return nil
+}
+
+// root is the folder that places are relative to: of the module around dir,
+// else of the workspace, else dir itself.
+func (l *listing) root() string {
+	switch {
+	case l.env.GOMOD != "" && l.env.GOMOD != os.DevNull:
+		return filepath.Dir(l.env.GOMOD)
+	case l.env.GOWORK != "" && l.env.GOWORK != "off":
+		return filepath.Dir(l.env.GOWORK)
+	}
+	return l.dir
+}
+
+// place writes a place that the go command printed, relative to the folder it
+// ran in, as Program.Position does.
+func (l *listing) place(pos string) string {
+	if pos == "" {
+		return ""
+	}
+	if !filepath.IsAbs(pos) {
+		pos = filepath.Join(l.dir, pos)
+	}
+	if rel, ok := inside(l.root(), pos); ok {
+		return rel
+	}
+	return pos
 }
 
 // outside reports whether the go command found neither module nor workspace.

@@ -268,7 +268,7 @@ func TestErrors(t *testing.T) {
 		{"no match", []string{"a.go", "package a\n", "sub/readme", ""}, "./sub/...", NoMatch, "", "pattern ./sub/... names no package"},
 		{"no folder", []string{"a.go", "package a\n"}, "./quay", NoDirectory, "/quay", "directory not found"},
 		{"no folder, wildcard", []string{"a.go", "package a\n"}, "./quay/...", NoDirectory, "/quay", "no such file or directory"},
-		{"newer Go", []string{"go.mod", "module m\n\ngo 1.999\n", "a.go", "package a\n"}, "./...", NewerGo, "", "1.999"},
+		{"newer Go", []string{"go.mod", "module m\n\ngo 1.999\n", "a.go", "package a\n"}, "./...", NewerGo, "/go.mod", "asks for Go 1.999"},
 		{"module not required", []string{"a.go", "package a\n\nimport _ \"example.com/nowhere\"\n"}, "./...", MissingModule, "a.go:3:8", "run `go mod tidy` here"},
 		{"module not downloaded", []string{"go.mod", "module m\n\ngo 1.24\n\nrequire example.com/nowhere v1.0.0\n", "go.sum", "example.com/nowhere v1.0.0 h1:AAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAA=\nexample.com/nowhere v1.0.0/go.mod h1:AAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAAA=\n", "a.go", "package a\n\nimport _ \"example.com/nowhere\"\n"}, "./...", MissingModule, "a.go:3:8", "example.com/nowhere is not in the module cache; run `go mod download` here"},
 		{"bad go.mod", []string{"go.mod", "modul m\n", "a.go", "package a\n"}, "./...", BadModule, "go.mod:1", "unknown directive"},
@@ -301,11 +301,38 @@ func TestErrors(t *testing.T) {
 	}
 }
 
+// Places are relative to the module root, wherever the command runs.
+func TestErrorPlaces(t *testing.T) {
+	dir := module(t, "a/a.go", "package a\n\nimport _ \"example.com/nowhere\"\n", "b/b.go", "package b\n\nvar x = y\n", "c/c.go", "package c\n\nfunc f( {\n")
+	for _, tt := range []struct{ pattern, want string }{{"../a", "a/a.go:3:8"}, {".", "b/b.go:3:9"}, {"../c", "c/c.go:3:9"}} {
+		_, err := Load(Config{Dir: filepath.Join(dir, "b"), Patterns: []string{tt.pattern}})
+		var e *Error
+		if !errors.As(err, &e) || e.Place != tt.want {
+			t.Errorf("%s: got %v, want it at %s", tt.pattern, err, tt.want)
+		}
+	}
+}
+
+func TestNewerGo(t *testing.T) {
+	dir := module(t, "go.mod", "module m\n\ngo 1.999\n", "a/a.go", "package a\n")
+	for _, toolchain := range []string{"local", "auto"} {
+		_, err := Load(Config{Dir: filepath.Join(dir, "a"), Env: []string{"GOTOOLCHAIN=" + toolchain, "GOWORK=off"}})
+		var e *Error
+		if !errors.As(err, &e) || e.Kind != NewerGo {
+			t.Fatalf("GOTOOLCHAIN=%s: got %v", toolchain, err)
+		}
+		if e.Place != filepath.Join(dir, "go.mod") || !strings.Contains(e.Message, "asks for Go 1.999") || !strings.Contains(e.Message, "built with 1.") {
+			t.Errorf("GOTOOLCHAIN=%s: got %v", toolchain, e)
+		}
+	}
+}
+
 func TestPartial(t *testing.T) {
 	dir := module(t,
 		"good/good.go", "package good\n\nfunc F() {}\n",
 		"bad/bad.go", "package bad\n\nfunc G() { x }\n",
 		"odd/odd.go", "package odd\n\nfunc H() {\n",
+		"lost/lost.go", "package lost\n\nimport \"example.com/nowhere\"\n\nfunc L() { nowhere.X() }\n",
 		"user/user.go", "package user\n\nimport \"example/harbour/bad\"\n\nfunc U() { bad.G() }\n",
 	)
 	prog := mustLoad(t, Config{Dir: dir, Patterns: []string{"./..."}, Partial: true})
@@ -317,7 +344,9 @@ func TestPartial(t *testing.T) {
 		}
 	}
 	equal(t, "broken", got, []string{
+		"example.com/nowhere [lost/lost.go:3:8: no required module provides package example.com/nowhere; run `go mod tidy` here]",
 		"example/harbour/bad [bad/bad.go:3:12: undefined: x]",
+		"example/harbour/lost []",
 		"example/harbour/odd [odd/odd.go:3:12: expected '}', found 'EOF']",
 		"example/harbour/user []",
 	})
@@ -574,7 +603,7 @@ func TestGeneratedAndText(t *testing.T) {
 // number of workers.
 func TestDeterminism(t *testing.T) {
 	dump := func(workers int) string {
-		prog := mustLoad(t, Config{Patterns: []string{"bufio", "go/scanner", "golang.org/x/tools/go/cfg"}, Workers: workers})
+		prog := mustLoad(t, Config{Patterns: []string{"golang.org/x/tools/go/ssa", "unicode/utf8"}, Workers: workers})
 		var b strings.Builder
 		for _, fn := range slices.Concat(prog.Functions(), prog.Wrappers()) {
 			fmt.Fprintln(&b, fn.String(), fn.Pos())
@@ -591,7 +620,7 @@ func TestDeterminism(t *testing.T) {
 }
 
 func TestStandardLibrary(t *testing.T) {
-	prog := mustLoad(t, Config{Patterns: []string{"sync", "cmd/internal/pathcache"}})
+	prog := mustLoad(t, Config{Patterns: []string{"sync", "cmd/internal/pathcache", "vendor/golang.org/x/net/http/httpguts"}})
 	for _, path := range []string{"sync", "runtime", "cmd/internal/pathcache"} {
 		p := prog.Package(path)
 		if p == nil || !p.Bodies || p.SSA == nil {
@@ -606,7 +635,6 @@ func TestStandardLibrary(t *testing.T) {
 		t.Errorf("(*sync.Mutex).Lock is in %q", file)
 	}
 	// Vendored packages of std are found through the import map.
-	prog = mustLoad(t, Config{Patterns: []string{"vendor/golang.org/x/net/http/httpguts"}})
 	if p := prog.Package("vendor/golang.org/x/net/idna"); p == nil || !p.Vendored || !p.Bodies {
 		t.Error("the vendored idna was not loaded with bodies")
 	}
@@ -627,7 +655,7 @@ func TestCancel(t *testing.T) {
 func TestProgress(t *testing.T) {
 	var stages []string
 	last := map[string][2]int{}
-	mustLoad(t, Config{Patterns: []string{"errors"}, Progress: func(stage string, done, total int) {
+	mustLoad(t, Config{Dir: module(t, "a.go", "package a\n\nimport _ \"errors\"\n"), Progress: func(stage string, done, total int) {
 		if len(stages) == 0 || stages[len(stages)-1] != stage {
 			stages = append(stages, stage)
 		}
@@ -645,7 +673,7 @@ func TestProgress(t *testing.T) {
 }
 
 func TestNoReturn(t *testing.T) {
-	prog := mustLoad(t, Config{Patterns: []string{"testing", "log"}})
+	prog := mustLoad(t, Config{Dir: module(t, "a.go", "package a\n\nimport (\n\t_ \"log\"\n\t_ \"testing\"\n)\n")})
 	find := func(path, typ, name string) *types.Func {
 		pkg := prog.Package(path).Types
 		if typ == "" {

@@ -32,18 +32,14 @@ func plan(cfg *Config, l *listing) (*Program, error) {
 		GOOS:      l.env.GOOS,
 		GOARCH:    l.env.GOARCH,
 		GOROOT:    l.env.GOROOT,
-		ModuleDir: l.dir,
+		ModuleDir: l.root(),
 		byPath:    map[string]*Package{},
 		byTypes:   map[*types.Package]*Package{},
 		cgo:       l.env.CGO_ENABLED == "1",
 		tags:      buildTags(cfg, l.env.GOFLAGS),
 	}
-	if l.env.GOWORK != "" && l.env.GOWORK != "off" {
+	if l.env.GOWORK != "off" {
 		prog.Workspace = l.env.GOWORK
-		prog.ModuleDir = filepath.Dir(l.env.GOWORK)
-	}
-	if l.env.GOMOD != "" && l.env.GOMOD != os.DevNull {
-		prog.ModuleDir = filepath.Dir(l.env.GOMOD)
 	}
 
 	byListed := map[string]*listed{}
@@ -156,6 +152,7 @@ func newPackage(lp *listed, l *listing) *Package {
 		Standard: lp.Standard,
 		Named:    !lp.DepOnly,
 		UsesCgo:  len(lp.CgoFiles) > 0,
+		Errors:   l.broken[lp.ImportPath],
 		imports:  map[string]*Package{},
 	}
 	switch m := lp.Module; {

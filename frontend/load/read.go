@@ -13,6 +13,7 @@ import (
 	"go/token"
 	"go/types"
 	"os"
+	"path"
 	"path/filepath"
 	"runtime/debug"
 	"strconv"
@@ -257,6 +258,9 @@ func (r *reader) check(p *Package, files []*ast.File) {
 		p.Types = types.Unsafe
 		return
 	}
+	if p.Name == "" {
+		p.Name = path.Base(p.Path) // of a package that is missing
+	}
 	var info *types.Info
 	if p.Bodies {
 		info = &types.Info{
@@ -274,6 +278,15 @@ func (r *reader) check(p *Package, files []*ast.File) {
 	if withC {
 		p.c = guessC(files)
 	}
+	// Of a package that needs one with errors, errors are not told: they may
+	// be consequences, and the go command would not get to it either.
+	for _, d := range p.deps {
+		if d.Broken {
+			p.Broken = true
+		}
+	}
+	broken := p.Broken
+	defer func() { p.Broken = p.Broken || len(p.Errors) > 0 }()
 	var complaints []complaint
 	conf := &types.Config{
 		GoVersion:        p.goVersion,
@@ -282,6 +295,9 @@ func (r *reader) check(p *Package, files []*ast.File) {
 		Importer:         importer{p},
 		Sizes:            r.sizes,
 		Error: func(err error) {
+			if broken {
+				return
+			}
 			var te types.Error
 			if !errors.As(err, &te) {
 				p.fail(&Error{Kind: TypeError, Package: p.Path, Place: p.Dir, Message: err.Error()})
@@ -338,9 +354,6 @@ func (prog *Program) collectErrors(cfg *Config) error {
 			e.Place = prog.shortPlace(e.Place)
 			errs = append(errs, e)
 		}
-		if len(p.Errors) > 0 {
-			p.Broken = true
-		}
 	}
 	if len(errs) == 0 {
 		return nil
@@ -348,12 +361,7 @@ func (prog *Program) collectErrors(cfg *Config) error {
 	if !cfg.Partial {
 		return errs
 	}
-	for _, p := range importsFirst(prog.Packages) {
-		for _, d := range p.deps {
-			if d.Broken {
-				p.Broken = true
-			}
-		}
+	for _, p := range prog.Packages {
 		if p.Broken && p.Bodies {
 			p.Bodies = false
 			prog.Stats.WithBodies--
