@@ -1,0 +1,1254 @@
+package frontend
+
+import (
+	"go/types"
+
+	"golang.org/x/tools/go/ssa"
+
+	"pathtally/frontend/effects"
+	"pathtally/pds"
+	"pathtally/properties"
+)
+
+// resultAccess reads a result summary as an access path of a root.
+func resultAccess(r effects.Result) (root int, path []*types.Var, ok bool) {
+	if r.Param < 0 {
+		return 0, nil, false
+	}
+	for _, s := range r.Path {
+		path = append(path, s.Field)
+	}
+	return r.Param, path, true
+}
+
+// link is one way in which a call site is executed: the callee, and where its
+// parameters and captured variables come from.
+type link struct {
+	fi      *fnInfo
+	site    ssa.CallInstruction
+	closure Expr             // the function value called; 0 for a static callee
+	made    *ssa.MakeClosure // a closure that is called where it is made
+	args    []Expr
+	vals    []ssa.Value
+	// callback: a function handed to code out of sight, which calls it with
+	// arguments nobody knows.
+	callback bool
+}
+
+func (m *Model) linkOf(site ssa.CallInstruction, g *ssa.Function, closure Expr) *link {
+	l := &link{fi: m.info(g), site: site, closure: closure}
+	c := site.Common()
+	if c.IsInvoke() {
+		l.args = append(l.args, m.x.name(c.Value))
+		l.vals = append(l.vals, c.Value)
+	} else if mc, ok := c.Value.(*ssa.MakeClosure); ok {
+		l.made = mc
+	}
+	for _, a := range c.Args {
+		l.args = append(l.args, m.x.name(a))
+		l.vals = append(l.vals, a)
+	}
+	return l
+}
+
+// callbackLink is the link of a function value that the callee of site calls.
+func (m *Model) callbackLink(site ssa.CallInstruction, arg ssa.Value, g *ssa.Function) *link {
+	l := &link{fi: m.info(g), site: site, callback: true}
+	if mc, ok := arg.(*ssa.MakeClosure); ok {
+		l.made = mc
+	} else {
+		l.closure = m.x.name(arg)
+	}
+	return l
+}
+
+func (m *Model) linkFree(l *link, i int) Expr {
+	if l.made != nil {
+		if i < len(l.made.Bindings) {
+			return m.x.name(l.made.Bindings[i])
+		}
+		return 0
+	}
+	if l.closure != 0 {
+		return m.x.capt(l.closure, i)
+	}
+	return 0
+}
+
+// toCallee writes what the frame knows of the instance over the callee's frame.
+func (m *Model) toCallee(ns nset, l *link) nset {
+	out := nset{phase: ns.phase, outside: ns.outside}
+	for _, e := range ns.names {
+		if m.x.rootKind(e) == kGlobal {
+			out.add(e)
+		}
+		for i, a := range l.args {
+			out.add(m.x.rebase(e, a, m.x.param(i)))
+			if mc, ok := l.vals[i].(*ssa.MakeClosure); ok {
+				for k, b := range mc.Bindings {
+					out.add(m.x.rebase(e, m.x.name(b), m.x.capt(m.x.param(i), k)))
+				}
+			}
+		}
+		for i := range l.fi.fn.FreeVars {
+			if f := m.linkFree(l, i); f != 0 {
+				out.add(m.x.rebase(e, f, m.x.free(i)))
+			}
+		}
+	}
+	return out
+}
+
+// factsToCallee passes what the callee asks of its parameters, captures and globals.
+func (m *Model) factsToCallee(fr *frame, l *link, at *ssa.BasicBlock) factset {
+	var fs factset
+	for _, k := range m.flowOf(l.fi).entry {
+		var a Abs
+		switch n := m.x.nodes[k]; n.kind {
+		case kParam:
+			if int(n.n) < len(l.vals) {
+				a = m.absOf(fr, l.vals[n.n], at)
+			}
+		default:
+			for _, t := range m.upKeys(k, l, at) {
+				if a = fr.fs.get(t); a != 0 {
+					break
+				}
+			}
+		}
+		if a != 0 {
+			fs = fs.with(k, a)
+		}
+	}
+	return fs
+}
+
+// upKeys writes a key of the callee over the caller's frame, in the forms the
+// caller may keep it under.
+func (m *Model) upKeys(k Expr, l *link, at *ssa.BasicBlock) []Expr {
+	var out []Expr
+	if e := m.upKey(k, l, func(v ssa.Value) Expr { return m.key(v, at) }); e != 0 {
+		out = append(out, e)
+	}
+	if e := m.upKey(k, l, m.x.name); e != 0 && (len(out) == 0 || out[0] != e) {
+		out = append(out, e)
+	}
+	return out
+}
+
+func (m *Model) upKey(k Expr, l *link, form func(ssa.Value) Expr) Expr {
+	if k == 0 {
+		return 0
+	}
+	n := m.x.nodes[k]
+	switch n.kind {
+	case kGlobal, kConst, kReg:
+		return k
+	case kParam:
+		if int(n.n) < len(l.vals) {
+			return form(l.vals[n.n])
+		}
+		return 0
+	case kFree:
+		if l.made != nil && int(n.n) < len(l.made.Bindings) {
+			return form(l.made.Bindings[n.n])
+		}
+		return m.linkFree(l, int(n.n))
+	case kBin:
+		x, y := m.upKey(n.x, l, form), m.upKey(n.y, l, form)
+		if x == 0 || y == 0 {
+			return 0
+		}
+		return m.x.intern(exprNode{kind: kBin, op: n.op, x: x, y: y})
+	case kUn:
+		x := m.upKey(n.x, l, form)
+		if x == 0 {
+			return 0
+		}
+		n.x = x
+		return m.x.intern(n)
+	}
+	if m.x.isSel(k) {
+		x := m.upKey(n.x, l, form)
+		y := n.y
+		if y != 0 {
+			y = m.upKey(y, l, form)
+			if y == 0 {
+				return 0
+			}
+		}
+		return m.x.sel(n.kind, x, n.n, y, n.ref)
+	}
+	return 0
+}
+
+// fromCallee adds to fr what an exit brings back.
+func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
+	ns := m.t.nsets[st.ns]
+	if ns.outside {
+		fr.ns.outside = true
+	}
+	if ns.phase == born && fr.ns.phase == unborn {
+		fr.ns = nset{phase: born, outside: ns.outside}
+	}
+	for _, e := range ns.names {
+		root := m.x.root[e]
+		n := m.x.nodes[root]
+		switch n.kind {
+		case kGlobal:
+			fr.ns.add(e)
+		case kResult:
+			if call != nil && !l.callback {
+				fr.ns.add(m.x.rebase(e, root, m.resultName(call, int(n.n))))
+			}
+		case kParam:
+			if int(n.n) >= len(l.args) {
+				if l.callback {
+					fr.ns.outside = true
+				}
+				continue
+			}
+			fr.ns.add(m.x.rebase(e, root, l.args[n.n]))
+			m.alsoReturned(fr, e, root, l.vals[n.n])
+		case kFree:
+			f := m.linkFree(l, int(n.n))
+			fr.ns.add(m.x.rebase(e, root, f))
+			if l.made != nil && int(n.n) < len(l.made.Bindings) {
+				m.alsoReturned(fr, e, root, l.made.Bindings[n.n])
+			}
+		}
+	}
+	for _, f := range m.t.facts[st.fs] {
+		if n := m.x.nodes[f.key]; n.kind == kResult {
+			if call != nil && !l.callback {
+				m.setFact(fr, m.resultName(call, int(n.n)), f.val)
+			}
+			continue
+		}
+		for _, t := range m.upKeys(f.key, l, fr.b) {
+			m.setFact(fr, t, f.val)
+		}
+	}
+}
+
+// alsoReturned: what came back under an argument also shows under the place
+// the argument was loaded from.
+func (m *Model) alsoReturned(fr *frame, e, root Expr, v ssa.Value) {
+	if _, ok := v.(*ssa.UnOp); !ok {
+		return
+	}
+	for _, o := range m.origins(fr.fi, v) {
+		switch m.x.rootKind(o.s) {
+		case kParam, kFree, kGlobal:
+			if m.x.frameFree(o.s) {
+				fr.ns.add(m.x.rebase(e, root, o.s))
+			} else {
+				m.heldUnder(fr, o)
+			}
+		default:
+			if m.x.loads[e] > 0 {
+				m.heldUnder(fr, o)
+			}
+		}
+	}
+}
+
+// call executes a call instruction.
+func (m *Model) call(fr *frame, c *ssa.Call, dst []pds.Rule) ([]pds.Rule, bool) {
+	if b, ok := c.Call.Value.(*ssa.Builtin); ok {
+		return m.builtin(fr, c, b.Name(), dst)
+	}
+	s, targets, closure := m.resolve(fr, c)
+	if ms := m.matchEvents(s); len(ms) > 0 {
+		if out, done := m.event(fr, c, s, ms, dst); done {
+			return out, true
+		}
+		// An event of the rule, but of another instance.
+		if s.obj != nil && m.isEventObj(s) {
+			m.define(fr, c)
+			return m.bornAt(fr, c, dst, fr.i+1)
+		}
+	}
+	var enter []*link
+	for _, g := range targets {
+		l := m.linkOf(c, g, closure)
+		if m.enters(fr, l) {
+			enter = append(enter, l)
+		}
+	}
+	if len(enter) == 0 {
+		if out, done := m.callbacks(fr, c, targets, dst); done {
+			return out, true
+		}
+		return m.silent(fr, c, targets, dst)
+	}
+	before := fr.clone()
+	for _, l := range enter {
+		fr := before.clone()
+		ns := m.toCallee(fr.ns, l)
+		fs := m.factsToCallee(fr, l, fr.b)
+		m.kill(fr, c)
+		m.define(fr, c)
+		dst = append(dst, pds.Rule{Kind: pds.Push, State: runState,
+			Top: m.entry(l.fi, ns, fs, recNo),
+			Below: m.symbol(symbol{kind: symCont, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i),
+				ns: m.t.nset(fr.ns), fs: m.t.factset(fr.fs),
+				aux: m.cont(contRef{callee: int32(l.fi.id), closure: l.closure, rec: fr.rec})}),
+			Label: m.label(label{kind: lblCall, instr: c, fn: l.fi.fn})})
+	}
+	if len(enter) < len(targets) {
+		out, done := m.silent(fr, c, targets, dst)
+		if done {
+			return out, true
+		}
+		fr.i++
+		return append(dst, m.goTo(fr, 0)), true
+	}
+	return dst, true
+}
+
+func (m *Model) entry(fi *fnInfo, ns nset, fs factset, rec int8) pds.SymbolID {
+	return m.symbol(symbol{kind: symEntry, fn: int32(fi.id), ns: m.t.nset(ns), fs: m.t.factset(fs), aux: int32(rec)})
+}
+
+// resolve says what a call site runs, as far as the source and the path's
+// facts know: its shape for the rule, its candidate callees, and the function
+// value if there is one.
+func (m *Model) resolve(fr *frame, site ssa.CallInstruction) (*shape, []*ssa.Function, Expr) {
+	s := m.siteShape(site)
+	c := site.Common()
+	targets := m.sh.targets[site]
+	if c.IsInvoke() {
+		if a := m.t.abs[m.absOf(fr, c.Value, fr.b)]; a.kind == aType && !types.IsInterface(a.typ) {
+			if fn := m.method(a.typ, c.Method); fn != nil {
+				t := *s
+				t.recvT = a.typ
+				if obj := funcObject(fn); obj != nil {
+					t.obj, t.invoke = obj, false
+				}
+				return &t, []*ssa.Function{fn}, 0
+			}
+		}
+		return s, targets, 0
+	}
+	if c.StaticCallee() != nil {
+		return s, targets, 0
+	}
+	closure := m.x.name(c.Value)
+	if a := m.t.abs[m.absOf(fr, c.Value, fr.b)]; a.kind == aFunc {
+		if isBound(a.fn) || a.fn.Synthetic != "" && a.fn.Object() != nil && len(a.fn.FreeVars) == 0 {
+			t := *s
+			t.fn, t.obj = 0, funcObject(a.fn)
+			if isBound(a.fn) {
+				t.recv, t.recvT = m.x.capt(closure, 0), a.fn.FreeVars[0].Type()
+				if types.IsInterface(t.recvT) {
+					t.invoke = true
+				}
+			} else if len(t.args) > 0 && t.obj.Signature().Recv() != nil { // method expression
+				t.recv, t.recvT = t.args[0], t.vals[0].Type()
+				t.args, t.vals = t.args[1:], t.vals[1:]
+			}
+			return &t, []*ssa.Function{a.fn}, closure
+		}
+		if obj := funcObject(a.fn); obj != nil && a.fn.Parent() == nil {
+			t := *s
+			t.fn, t.obj = 0, obj
+			return &t, []*ssa.Function{a.fn}, closure
+		}
+		return s, []*ssa.Function{a.fn}, closure
+	}
+	return s, targets, closure
+}
+
+func (m *Model) method(t types.Type, obj *types.Func) *ssa.Function {
+	sel := m.sh.prog.SSA.MethodSets.MethodSet(t).Lookup(obj.Pkg(), obj.Name())
+	if sel == nil {
+		return nil
+	}
+	return m.sh.prog.SSA.MethodValue(sel)
+}
+
+func (m *Model) isEventObj(s *shape) bool {
+	if yes, ok := m.eventFunc[s.obj]; ok {
+		return yes
+	}
+	for i := range m.rule.Events {
+		for _, c := range m.rule.Events[i].Callees {
+			if c.Obj == s.obj {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// enters tells whether a call has to be followed into its callee's body: an
+// instance may be born there, the callee does something to the instance, or
+// hands it on in a way that is worth following.
+func (m *Model) enters(fr *frame, l *link) bool {
+	g := l.fi
+	if g.fn.Blocks == nil || m.isEventFunc(g.fn) {
+		return false
+	}
+	switch fr.ns.phase {
+	case anyInst:
+		return g.cone
+	case unborn:
+		return g.bearing || m.callsBack(fr, l)
+	}
+	if len(fr.ns.names) == 0 {
+		return false
+	}
+	in := m.toCallee(fr.ns, l)
+	for _, e := range in.names {
+		x := e
+		if n := m.x.nodes[e]; n.kind == kMaybe {
+			x = n.x
+		}
+		if g.subjects[x] {
+			return true
+		}
+	}
+	if len(in.names) > 0 {
+		sum := m.sh.eff.Of(g.fn)
+		for _, e := range in.names {
+			i := -1
+			switch n := m.x.nodes[m.x.root[e]]; n.kind {
+			case kParam:
+				i = int(n.n)
+			case kFree:
+				i = len(g.fn.Params) + int(n.n)
+			}
+			if i < 0 {
+				continue
+			}
+			f := sum.Flow(i)
+			if m.worthFollowing(f, g.fn) {
+				return true
+			}
+		}
+	}
+	return m.callsBack(fr, l)
+}
+
+// worthFollowing: the callee puts what it is given into a result or into an
+// argument's memory; its body says where exactly.
+func (m *Model) worthFollowing(f effects.Flow, fn *ssa.Function) bool {
+	if f.Roots != 0 {
+		return true
+	}
+	res := fn.Signature.Results()
+	for j := range res.Len() {
+		if f.ToResult(j) && m.carries(res.At(j).Type()) && !types.Identical(res.At(j).Type(), errorType) {
+			return true
+		}
+	}
+	return false
+}
+
+// callsBack tells whether the callee is handed a function that does something
+// to the instance (or in which one may be born).
+func (m *Model) callsBack(fr *frame, l *link) bool {
+	for i, v := range l.vals {
+		if _, ok := v.Type().Underlying().(*types.Signature); !ok {
+			continue
+		}
+		if fn, mc := m.funcValue(fr, v); fn != nil {
+			cb := &link{fi: m.info(fn), site: l.site, made: mc, callback: true}
+			if mc == nil {
+				cb.closure = l.args[i]
+			}
+			if m.bears(fr, cb) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// funcValue is the function that v is known to be.
+func (m *Model) funcValue(fr *frame, v ssa.Value) (*ssa.Function, *ssa.MakeClosure) {
+	switch x := v.(type) {
+	case *ssa.MakeClosure:
+		return x.Fn.(*ssa.Function), x
+	case *ssa.ChangeType:
+		return m.funcValue(fr, x.X)
+	}
+	if a := m.t.abs[m.absOf(fr, v, fr.b)]; a.kind == aFunc {
+		return a.fn, nil
+	}
+	return nil, nil
+}
+
+// bears tells whether running the linked function does something to the instance.
+func (m *Model) bears(fr *frame, l *link) bool {
+	g := l.fi
+	if g.fn.Blocks == nil {
+		return false
+	}
+	switch fr.ns.phase {
+	case anyInst:
+		return g.cone
+	case unborn:
+		return g.bearing
+	}
+	for _, e := range m.toCallee(fr.ns, l).names {
+		if n := m.x.nodes[e]; n.kind == kMaybe {
+			e = n.x
+		}
+		if g.subjects[e] || m.boundEvent(g.fn, e) {
+			return true
+		}
+	}
+	return false
+}
+
+// boundEvent: g is a method value of an event's method, bound to the instance.
+func (m *Model) boundEvent(g *ssa.Function, e Expr) bool {
+	return isBound(g) && m.x.nodes[e].kind == kFree && m.isEventFunc(g)
+}
+
+// callbacks handles functions handed to code without a body, or out of sight,
+// that a model says calls them.
+func (m *Model) callbacks(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pds.Rule) ([]pds.Rule, bool) {
+	for _, v := range c.Call.Args {
+		if _, ok := v.Type().Underlying().(*types.Signature); !ok {
+			continue
+		}
+		fn, mc := m.funcValue(fr, v)
+		if fn == nil {
+			continue
+		}
+		l := m.callbackLink(c, v, fn)
+		if mc != nil {
+			l.made, l.closure = mc, 0
+		}
+		if !m.bears(fr, l) || m.isEventFunc(fn) {
+			continue
+		}
+		how := m.callbackModel(c, targets, fn)
+		if how == cbNone {
+			m.note(c, "callback", "the function handed to "+m.calleeText(c)+" is taken to be called later or never")
+			continue
+		}
+		return m.callbackRules(fr, c, v, l, how, dst), true
+	}
+	return nil, false
+}
+
+// callbackRules: the callee may call the function, and come back.
+func (m *Model) callbackRules(fr *frame, c *ssa.Call, v ssa.Value, l *link, how callbackHow, dst []pds.Rule) []pds.Rule {
+	if how != cbExactly {
+		skip := fr.clone()
+		m.kill(skip, c)
+		m.define(skip, c)
+		skip.i++
+		dst = append(dst, m.goTo(skip, 0))
+	}
+	in := fr.clone()
+	ns := m.toCallee(in.ns, l)
+	fs := m.factsToCallee(in, l, in.b)
+	m.kill(in, c)
+	return append(dst, pds.Rule{Kind: pds.Push, State: runState,
+		Top: m.entry(l.fi, ns, fs, recNo),
+		Below: m.symbol(symbol{kind: symCont, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i),
+			ns: m.t.nset(in.ns), fs: m.t.factset(in.fs),
+			aux: m.cont(contRef{callee: int32(l.fi.id), closure: l.closure, bound: l.made, rec: fr.rec, callback: v, again: how == cbMany})}),
+		Label: m.label(label{kind: lblCallback, instr: c, fn: l.fi.fn})})
+}
+
+type callbackHow uint8
+
+const (
+	cbNone    callbackHow = iota
+	cbOnce                // at most once
+	cbExactly             // exactly once
+	cbMany                // any number of times
+)
+
+// callbackModel says how code out of sight calls a function it is handed.
+// Source: the documentation of the standard library.
+func (m *Model) callbackModel(c *ssa.Call, targets []*ssa.Function, fn *ssa.Function) callbackHow {
+	if fn.Synthetic == "range-over-func yield" {
+		return cbMany
+	}
+	var obj *types.Func
+	if c.Call.IsInvoke() {
+		obj = c.Call.Method
+	} else if g := c.Call.StaticCallee(); g != nil {
+		obj = funcObject(g)
+	}
+	if obj == nil {
+		return cbNone
+	}
+	return callbackTable[obj.FullName()]
+}
+
+var callbackTable = map[string]callbackHow{
+	"(*sync.Once).Do":                 cbOnce,
+	"sort.Slice":                      cbMany,
+	"sort.SliceStable":                cbMany,
+	"sort.Search":                     cbMany,
+	"slices.SortFunc":                 cbMany,
+	"slices.SortStableFunc":           cbMany,
+	"slices.ContainsFunc":             cbMany,
+	"slices.IndexFunc":                cbMany,
+	"slices.DeleteFunc":               cbMany,
+	"strings.Map":                     cbMany,
+	"strings.FieldsFunc":              cbMany,
+	"strings.IndexFunc":               cbMany,
+	"bytes.Map":                       cbMany,
+	"path/filepath.Walk":              cbMany,
+	"path/filepath.WalkDir":           cbMany,
+	"io/fs.WalkDir":                   cbMany,
+	"(*sync.Map).Range":               cbMany,
+	"(*testing.T).Run":                cbExactly,
+	"(*testing.B).Run":                cbMany,
+	"(*sync.Pool).Get":                cbNone,
+	"(*container/ring.Ring).Do":       cbMany,
+	"go/ast.Inspect":                  cbMany,
+	"(*go/token.FileSet).Iterate":     cbMany,
+	"(reflect.Value).FieldByNameFunc": cbMany,
+	"runtime/pprof.Do":                cbExactly,
+	"(*flag.FlagSet).VisitAll":        cbMany,
+	"(*flag.FlagSet).Visit":           cbMany,
+	"flag.VisitAll":                   cbMany,
+	"flag.Visit":                      cbMany,
+}
+
+// event handles a call that fits event lines of the rule. done is false if it
+// concerns neither this instance nor the birth of one.
+func (m *Model) event(fr *frame, c *ssa.Call, s *shape, ms []match, dst []pds.Rule) ([]pds.Rule, bool) {
+	live, doubtful := m.concerned(fr.ns, ms)
+	if len(live) == 0 && len(doubtful) == 0 {
+		return nil, false
+	}
+	for _, o := range outcomes(live, doubtful) {
+		sure, unsure, mark := m.tally(live, o), m.tally(doubtful, o), m.marks(live, o)
+		var birth *match
+		for i := range live {
+			if live[i].birth >= 0 && o.has(&live[i]) && fr.ns.phase == unborn {
+				birth = &live[i]
+			}
+		}
+		base := fr.clone()
+		m.define(base, c)
+		m.applyOutcome(base, c, o)
+		base.i++
+		if birth != nil {
+			other := base.clone()
+			dst = append(dst, m.goTo(other, 0))
+			this := base.clone()
+			this.ns = nset{phase: born}
+			this.ns.add(m.birthName(m.resultName(c, birth.birth), birth.path))
+			m.setFact(this, m.resultName(c, birth.birth), m.nonNil())
+			r := m.goTo(this, m.label(label{kind: lblEvent, instr: c}))
+			r.Effect, r.Mark = m.effect(sure), mark
+			dst = append(dst, r)
+			continue
+		}
+		r := m.goTo(base, m.label(label{kind: lblEvent, instr: c}))
+		if fr.ns.phase == unborn {
+			r.Label = 0
+		} else {
+			r.Effect, r.Mark = m.effect(sure), mark
+			if len(doubtful) > 0 {
+				r.DoubtEffect = m.effect(unsure)
+				r.Doubt = m.doubt(c, "may be another object than the one asked about")
+			}
+		}
+		dst = append(dst, r)
+	}
+	return dst, true
+}
+
+// concerned splits the matches into those that are about the instance (or in
+// which it may be born) and those that may be.
+func (m *Model) concerned(ns nset, ms []match) (live, doubtful []match) {
+	counted := map[int]bool{}
+	for _, mt := range ms {
+		switch {
+		case ns.phase == anyInst:
+		case ns.phase == unborn:
+			if mt.birth < 0 {
+				continue
+			}
+		case mt.birth >= 0 && mt.subject == 0:
+			continue // another instance's birth
+		case mt.subject == 0:
+		case ns.has(mt.subject):
+		case ns.has(m.x.maybe(mt.subject)):
+			doubtful = append(doubtful, mt)
+			continue
+		default:
+			continue
+		}
+		// The lines of one count are a union: the first that fits counts,
+		// unless it hangs on results.
+		if mt.ev.Count >= 0 && len(mt.conds) == 0 && mt.birth < 0 {
+			if counted[mt.ev.Count] {
+				continue
+			}
+			counted[mt.ev.Count] = true
+		}
+		live = append(live, mt)
+	}
+	return live, doubtful
+}
+
+// outcomeOf is one combination of results that the event lines tell apart.
+type outcomeOf struct {
+	conds []resultCond // hold; nil: no line with conditions applies
+	other []resultCond // the single condition that fails, if that is all there is to it
+}
+
+func (o outcomeOf) has(mt *match) bool {
+	return len(mt.conds) == 0 || sameConds(mt.conds, o.conds)
+}
+
+func sameConds(a, b []resultCond) bool {
+	if len(a) != len(b) {
+		return false
+	}
+	for i := range a {
+		if a[i] != b[i] {
+			return false
+		}
+	}
+	return true
+}
+
+func outcomes(lists ...[]match) []outcomeOf {
+	var out []outcomeOf
+	for _, ms := range lists {
+		for _, mt := range ms {
+			if len(mt.conds) == 0 {
+				continue
+			}
+			known := false
+			for _, o := range out {
+				known = known || sameConds(o.conds, mt.conds)
+			}
+			if !known {
+				out = append(out, outcomeOf{conds: mt.conds})
+			}
+		}
+	}
+	rest := outcomeOf{}
+	if len(out) == 1 && len(out[0].conds) == 1 {
+		rest.other = out[0].conds
+	}
+	return append(out, rest)
+}
+
+func (m *Model) tally(ms []match, o outcomeOf) []int64 {
+	v := make([]int64, len(m.rule.Counts))
+	counted := map[int]bool{}
+	for i := range ms {
+		if e := ms[i].ev; e.Count >= 0 && o.has(&ms[i]) && !counted[e.Count] {
+			counted[e.Count] = true
+			v[e.Count] += e.Weight
+		}
+	}
+	return v
+}
+
+func (m *Model) marks(ms []match, o outcomeOf) pds.Mark {
+	var k pds.Mark
+	for i := range ms {
+		if o.has(&ms[i]) {
+			k |= ms[i].ev.Mark
+		}
+	}
+	return k
+}
+
+// applyOutcome records what the outcome says of the results.
+func (m *Model) applyOutcome(fr *frame, call ssa.Value, o outcomeOf) {
+	for _, c := range o.conds {
+		m.setFact(fr, m.resultName(call, c.res), m.patAbs(c.con, true))
+	}
+	for _, c := range o.other {
+		m.setFact(fr, m.resultName(call, c.res), m.patAbs(c.con, false))
+	}
+}
+
+func (m *Model) patAbs(p properties.PatConst, holds bool) Abs {
+	if p.Nil {
+		if holds {
+			return m.t.absOf(absVal{kind: aNil})
+		}
+		return m.nonNil()
+	}
+	switch v := p.Value.(type) {
+	case bool:
+		return m.boolAbs(v == holds)
+	case int64:
+		if holds {
+			return m.intAbs(v, v)
+		}
+	}
+	return 0
+}
+
+// builtin executes a call of a built-in function.
+func (m *Model) builtin(fr *frame, c *ssa.Call, name string, dst []pds.Rule) ([]pds.Rule, bool) {
+	m.define(fr, c)
+	switch name {
+	case "recover":
+		if fr.rec == recCan {
+			fr.rec = recDone
+			m.setFact(fr, m.x.reg(c), m.nonNil())
+		} else {
+			m.setFact(fr, m.x.reg(c), m.t.absOf(absVal{kind: aNil}))
+		}
+	case "append":
+		if fr.ns.phase == born && m.carries(c.Type()) {
+			r := m.x.reg(c)
+			base := m.x.name(c.Call.Args[0])
+			for _, e := range fr.ns.names {
+				if n := m.x.nodes[e]; n.kind == kHeld && m.x.within(base, e) {
+					fr.ns.add(m.x.held(r))
+				}
+			}
+			if len(c.Call.Args) > 1 {
+				m.hold(fr, m.x.name(c.Call.Args[1]), r)
+			}
+		}
+	case "ssa:wrapnilchk":
+		a := m.x.name(c.Call.Args[0])
+		for _, e := range fr.ns.names {
+			fr.ns.add(m.x.rebase(e, a, m.x.reg(c)))
+		}
+	}
+	return m.bornAt(fr, c, dst, fr.i+1)
+}
+
+// kill: the call may overwrite memory; what was known of the places ends.
+func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
+	if len(fr.fs) == 0 && (fr.ns.phase != born || len(fr.ns.names) == 0) {
+		return
+	}
+	sum := m.sh.eff.OfCall(site)
+	if !sum.Writes() && !sum.WritesUnknown() {
+		return
+	}
+	hit := func(addr Expr) bool { return m.overwrites(sum, addr, site) }
+	fr.fs = fr.fs.filter(func(e Expr) bool { return !m.x.readsPlace(e, hit) })
+	if fr.ns.phase == born && !sum.WritesUnknown() {
+		fr.ns.filter(func(e Expr) bool {
+			k := m.x.nodes[e].kind
+			return k == kHeld || k == kMaybe || !m.x.readsPlace(e, hit)
+		})
+	}
+}
+
+// silent executes a call that does nothing to the instance itself: it may
+// overwrite places, hand the instance on, panic, or not come back.
+func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pds.Rule) ([]pds.Rule, bool) {
+	sum := m.sh.eff.OfCall(c)
+	ex := sum.Exits()
+	n := len(dst)
+	if ex&effects.Panics != 0 && (m.panicMatters[fr.fi.fn] || ex&effects.Returns == 0) {
+		p := fr.clone()
+		m.kill(p, c)
+		dst = append(dst, m.leaveBy(p, properties.ExitPanic, m.label(label{kind: lblCallPanics, instr: c})))
+	}
+	if ex&effects.Goexits != 0 {
+		p := fr.clone()
+		m.kill(p, c)
+		dst = append(dst, m.leaveBy(p, properties.ExitGoexit, m.label(label{kind: lblGoexit, instr: c})))
+	}
+	if ex&effects.Returns == 0 {
+		return dst, true
+	}
+	m.pass(fr, c, sum)
+	m.kill(fr, c)
+	m.define(fr, c)
+	m.results(fr, c, sum)
+	if out, done := m.bornAt(fr, c, dst, fr.i+1); done {
+		return out, true
+	}
+	if len(dst) > n {
+		fr.i++
+		return append(dst, m.goTo(fr, 0)), true
+	}
+	return nil, false
+}
+
+// pass: a call that is not followed may hand the instance on.
+func (m *Model) pass(fr *frame, site ssa.CallInstruction, sum *effects.Summary) {
+	if fr.ns.phase != born || len(fr.ns.names) == 0 {
+		return
+	}
+	c := site.Common()
+	vals := c.Args
+	if c.IsInvoke() {
+		vals = append([]ssa.Value{c.Value}, vals...)
+	}
+	call, _ := site.(*ssa.Call)
+	old := fr.ns.names
+	for i, v := range vals {
+		a := m.x.name(v)
+		holds := false
+		for _, e := range old {
+			if m.x.within(a, e) {
+				holds = true
+			}
+			if mc, ok := v.(*ssa.MakeClosure); ok {
+				for _, b := range mc.Bindings {
+					holds = holds || m.x.within(m.x.name(b), e)
+				}
+			}
+		}
+		if !holds {
+			// A variadic slice holds what was stored into its array.
+			for _, e := range old {
+				if n := m.x.nodes[e]; n.kind == kHeld && n.x == a {
+					holds = true
+				}
+			}
+		}
+		if !holds {
+			continue
+		}
+		f := sum.Flow(i)
+		if f.Outlives() {
+			fr.ns.outside = true
+		}
+		if call != nil {
+			sig := c.Signature().Results()
+			for j := range sig.Len() {
+				t := sig.At(j).Type()
+				if f.ToResult(j) && m.carries(t) && !types.Identical(t, errorType) {
+					fr.ns.add(m.x.held(m.resultName(call, j)))
+				}
+			}
+		}
+		for k := range vals {
+			if k != i && f.ToRoot(k) {
+				m.holdIn(fr, m.x.name(vals[k]), vals[k])
+			}
+		}
+	}
+	// Results that are a place reached from an argument.
+	if call != nil {
+		n := c.Signature().Results().Len()
+		for j := range n {
+			arg, path, ok := m.sh.resultPath(call, j)
+			if !ok {
+				continue
+			}
+			p := m.x.name(arg)
+			for _, f := range path {
+				if f == nil {
+					p = m.x.load(p)
+				} else {
+					p = m.x.field(p, f)
+				}
+			}
+			if p == 0 {
+				continue
+			}
+			for _, e := range old {
+				fr.ns.add(m.x.rebase(e, p, m.resultName(call, j)))
+			}
+		}
+	}
+}
+
+// results records what the summary knows of a call's results.
+func (m *Model) results(fr *frame, c *ssa.Call, sum *effects.Summary) {
+	f := m.flowOf(fr.fi)
+	n := c.Call.Signature().Results().Len()
+	for j := range min(n, sum.NumResults()) {
+		k := m.resultName(c, j)
+		if !f.wants(k) {
+			continue
+		}
+		r := sum.Result(j)
+		var a Abs
+		switch {
+		case r.Const != nil:
+			a = m.valueAbs(r.Const)
+		case r.Nil == effects.IsNil:
+			a = m.t.absOf(absVal{kind: aNil})
+		case r.Nil == effects.NonNil:
+			a = m.nonNil()
+		case r.Param >= 0 && len(r.Path) == 0, r.NilIff >= 0:
+			i := r.Param
+			if i < 0 {
+				i = r.NilIff
+			}
+			vals := c.Call.Args
+			if c.Call.IsInvoke() {
+				vals = append([]ssa.Value{c.Call.Value}, vals...)
+			}
+			if i < len(vals) {
+				a = m.absOf(fr, vals[i], fr.b)
+				if v := m.t.abs[a]; r.Param < 0 && v.kind != aNil && v.kind != aTop {
+					a = m.nonNil()
+				}
+			}
+		}
+		m.setFact(fr, k, a)
+	}
+}
+
+// resume goes on behind a call that came back.
+func (m *Model) resume(st state, sym symbol, fr *frame, dst []pds.Rule) []pds.Rule {
+	ref := m.conts[sym.aux]
+	fr.rec = ref.rec
+	site := fr.b.Instrs[fr.i].(ssa.CallInstruction)
+	call, _ := site.(*ssa.Call)
+	var l *link
+	if ref.callback != nil {
+		l = m.callbackLink(site, ref.callback, m.fns[ref.callee].fn)
+		if ref.bound != nil {
+			l.made, l.closure = ref.bound, 0
+		}
+	} else {
+		l = m.linkOf(site, m.fns[ref.callee].fn, ref.closure)
+	}
+	if st.exit != properties.ExitReturn {
+		m.fromCallee(fr, st, l, nil)
+		return append(dst, m.leaveBy(fr, st.exit, 0))
+	}
+	wasUnborn := fr.ns.phase == unborn
+	m.fromCallee(fr, st, l, call)
+	if ref.again {
+		more := true
+		if v := m.t.abs[m.t.facts[st.fs].get(m.x.result(0))]; v.kind == aBool && v.lo == 0 {
+			more = false // the body of a range over a function was left
+		}
+		if more {
+			dst = m.callbackRules(fr.clone(), call, ref.callback, l, cbMany, dst)
+			return dst
+		}
+	}
+	if call != nil && wasUnborn && fr.ns.phase == unborn {
+		if out, done := m.bornAt(fr, call, dst, fr.i+1); done {
+			return out
+		}
+	}
+	fr.i++
+	return append(dst, m.goTo(fr, 0))
+}
+
+// deferRule pushes a deferred call between the rest of the body and what lies
+// beneath.
+func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
+	pushed := nset{phase: fr.ns.phase}
+	if m.flowOf(fr.fi).inLoop[fr.b.Index] {
+		// Registers of the loop may be defined again before the call runs:
+		// what they are now is kept with it.
+		for _, e := range fr.ns.names {
+			if m.definedInLoop(fr.fi, e) {
+				pushed.add(e)
+			}
+		}
+	}
+	after := fr.clone()
+	after.i++
+	if m.outerDefer(d) {
+		m.note(d, "range-over-func", "a deferred call pushed inside the body of a range over a function is not followed")
+		return m.goTo(after, 0)
+	}
+	return pds.Rule{Kind: pds.Push, State: runState, Top: m.point(after),
+		Below: m.symbol(symbol{kind: symDeferred, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i), ns: m.t.nset(pushed)}),
+		Label: m.label(label{kind: lblDefer, instr: d})}
+}
+
+// outerDefer: the deferred call belongs to the enclosing function (it stands
+// in the body of a range over a function).
+func (m *Model) outerDefer(d *ssa.Defer) bool {
+	if d.DeferStack == nil {
+		return false
+	}
+	u, ok := d.DeferStack.(*ssa.UnOp)
+	if !ok {
+		return false
+	}
+	_, free := u.X.(*ssa.FreeVar)
+	return free
+}
+
+func (m *Model) definedInLoop(fi *fnInfo, e Expr) bool {
+	n := m.x.nodes[m.x.root[e]]
+	if n.kind != kReg && n.kind != kRes {
+		return false
+	}
+	i, ok := n.ref.(ssa.Instruction)
+	return ok && i.Parent() == fi.fn && m.flowOf(fi).inLoop[i.Block().Index]
+}
+
+// runDeferred runs the pending deferred call on top of the stack.
+func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
+	fr := m.unwindFrame(st)
+	fi := m.fns[sym.fn]
+	d := fi.fn.Blocks[sym.blk].Instrs[sym.idx].(*ssa.Defer)
+	at := &frame{fi: fi, b: fi.fn.Blocks[sym.blk], i: int(sym.idx), ns: fr.ns, fs: fr.fs, rec: fr.rec}
+	if m.flowOf(fi).inLoop[sym.blk] {
+		pushed := m.t.nsets[sym.ns]
+		at.ns.filter(func(e Expr) bool { return !m.definedInLoop(fi, e) })
+		for _, e := range pushed.names {
+			at.ns.add(e)
+		}
+	}
+	if b, ok := d.Call.Value.(*ssa.Builtin); ok {
+		if b.Name() == "panic" {
+			st.exit, st.idx, st.blk = properties.ExitPanic, 0, 0
+		}
+		return append(dst, pds.Rule{Kind: pds.Pop, State: m.state(st)})
+	}
+	s, targets, closure := m.resolve(at, d)
+	if ms := m.matchEvents(s); len(ms) > 0 {
+		live, doubtful := m.concerned(at.ns, ms)
+		if at.ns.phase == unborn {
+			live = nil
+		}
+		if len(live)+len(doubtful) > 0 {
+			for _, o := range outcomes(live, doubtful) {
+				if len(o.conds) == 0 && len(outcomes(live, doubtful)) > 1 && len(live) == 0 {
+					continue
+				}
+				r := pds.Rule{Kind: pds.Pop, State: m.state(st), Effect: m.effect(m.tally(live, o)), Mark: m.marks(live, o),
+					Label: m.label(label{kind: lblDeferredEvent, instr: d})}
+				if len(doubtful) > 0 {
+					r.DoubtEffect = m.effect(m.tally(doubtful, o))
+					r.Doubt = m.doubt(d, "may be another object than the one asked about")
+				}
+				dst = append(dst, r)
+			}
+			return dst
+		}
+		if s.obj != nil && m.isEventObj(s) {
+			return append(dst, pds.Rule{Kind: pds.Pop, State: m.state(st)})
+		}
+	}
+	entered := 0
+	for _, g := range targets {
+		l := m.linkOf(d, g, closure)
+		in := at.clone()
+		if !m.enters(in, l) && !(st.exit == properties.ExitPanic && m.callsRecover(g)) {
+			continue
+		}
+		entered++
+		rec := int8(recNo)
+		if st.exit == properties.ExitPanic {
+			rec = recCan
+		}
+		ns := m.toCallee(in.ns, l)
+		fs := m.factsToCallee(in, l, nil)
+		keep := fr.clone()
+		m.kill(keep, d)
+		dst = append(dst, pds.Rule{Kind: pds.Push, State: runState, Top: m.entry(l.fi, ns, fs, rec),
+			Below: m.symbol(symbol{kind: symDeferRet, fn: sym.fn, blk: sym.blk, idx: sym.idx,
+				ns: m.t.nset(keep.ns), fs: m.t.factset(keep.fs),
+				aux: m.cont(contRef{callee: int32(l.fi.id), closure: l.closure, rec: st.rec, mode: st.exit, ublk: st.blk, uidx: st.idx})}),
+			Label: m.label(label{kind: lblDeferredRuns, instr: d, fn: g})})
+	}
+	if entered > 0 && entered == len(targets) {
+		return dst
+	}
+	sum := m.sh.eff.OfCall(d)
+	ex := sum.Exits()
+	m.pass(fr, d, sum)
+	m.kill(fr, d)
+	if ex&effects.Panics != 0 && (m.panicMatters[fi.fn] || ex&effects.Returns == 0) {
+		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitPanic), Label: m.label(label{kind: lblCallPanics, instr: d})})
+	}
+	if ex&effects.Goexits != 0 {
+		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitGoexit), Label: m.label(label{kind: lblGoexit, instr: d})})
+	}
+	if ex&effects.Returns != 0 {
+		next := st
+		next.ns, next.fs = m.t.nset(fr.ns), m.t.factset(fr.fs)
+		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.state(next)})
+	}
+	return dst
+}
+
+func (m *Model) callsRecover(fn *ssa.Function) bool {
+	for _, b := range fn.Blocks {
+		for _, i := range b.Instrs {
+			if c, ok := i.(*ssa.Call); ok {
+				if bi, ok := c.Call.Value.(*ssa.Builtin); ok && bi.Name() == "recover" {
+					return true
+				}
+			}
+		}
+	}
+	return false
+}
+
+// resumeDefer goes on with the unwinding when a deferred call has come back.
+func (m *Model) resumeDefer(st state, sym symbol, fr *frame, dst []pds.Rule) []pds.Rule {
+	ref := m.conts[sym.aux]
+	site := fr.b.Instrs[fr.i].(ssa.CallInstruction)
+	l := m.linkOf(site, m.fns[ref.callee].fn, ref.closure)
+	m.fromCallee(fr, st, l, nil)
+	next := state{kind: stUnwind, exit: ref.mode, fn: sym.fn, blk: ref.ublk, idx: ref.uidx, rec: ref.rec,
+		ns: m.t.nset(fr.ns), fs: m.t.factset(fr.fs)}
+	switch st.exit {
+	case properties.ExitReturn:
+		if st.rec == recDone && ref.mode == properties.ExitPanic {
+			next.exit, next.blk, next.idx = properties.ExitReturn, 0, recovered
+		}
+	default:
+		next.exit, next.blk, next.idx = st.exit, 0, 0
+		if st.exit == properties.ExitPanic && ref.mode == properties.ExitGoexit {
+			next.exit = properties.ExitPanic
+		}
+	}
+	return append(dst, pds.Rule{Kind: pds.Pop, State: m.state(next)})
+}
+
+// spawn starts a goroutine. Its counts belong to the spawner's claim if it does
+// something to the instance that is handed to it.
+func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
+	if b, ok := g.Call.Value.(*ssa.Builtin); ok {
+		_ = b
+		return nil, false
+	}
+	s, targets, closure := m.resolve(fr, g)
+	if fr.ns.phase == unborn {
+		return nil, false // the body is a starting point of its own
+	}
+	if ms := m.matchEvents(s); len(ms) > 0 {
+		live, _ := m.concerned(fr.ns, ms)
+		if len(live) > 0 {
+			fr.i++
+			r := m.goTo(fr, m.label(label{kind: lblSpawn, instr: g}))
+			r.Effect = m.effect(m.tally(live, outcomeOf{}))
+			return append(dst, r), true
+		}
+	}
+	var heads []pds.Head
+	sum := m.sh.eff.OfCall(g)
+	for _, t := range targets {
+		l := m.linkOf(g, t, closure)
+		if t.Blocks == nil || m.isEventFunc(t) || !m.bears(fr, l) {
+			continue
+		}
+		ns := m.toCallee(fr.ns, l)
+		heads = append(heads, pds.Head{State: runState, Symbol: m.entry(l.fi, ns, m.factsToCallee(fr, l, fr.b), recNo)})
+	}
+	m.pass(fr, g, sum)
+	m.kill(fr, g)
+	if len(heads) == 0 {
+		return nil, false
+	}
+	fr.i++
+	if len(heads) == 1 {
+		r := m.goTo(fr, m.label(label{kind: lblSpawn, instr: g}))
+		r.Spawn = heads
+		return append(dst, r), true
+	}
+	for _, h := range heads {
+		r := m.goTo(fr.clone(), m.label(label{kind: lblSpawn, instr: g}))
+		r.Spawn = []pds.Head{h}
+		dst = append(dst, r)
+	}
+	return dst, true
+}

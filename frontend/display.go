@@ -1,0 +1,562 @@
+package frontend
+
+import (
+	"go/ast"
+	"go/token"
+	"go/types"
+	"slices"
+	"sort"
+	"strings"
+
+	"golang.org/x/tools/go/ast/astutil"
+	"golang.org/x/tools/go/ssa"
+
+	"pathtally/frontend/load"
+	"pathtally/pds"
+	"pathtally/properties"
+)
+
+type posFunc = func(token.Pos) (string, int, int)
+
+type lblKind uint8
+
+const (
+	lblNone lblKind = iota
+	lblEvent
+	lblBirth
+	lblDeferredEvent
+	lblTrue
+	lblFalse
+	lblCall
+	lblCallback
+	lblReturn
+	lblDefer
+	lblDeferredRuns
+	lblPanic
+	lblCallPanics
+	lblGoexit
+	lblSpawn
+	lblLost
+)
+
+// label is a step as the path view shows it; its text is made when asked for.
+type label struct {
+	kind  lblKind
+	instr ssa.Instruction
+	fn    *ssa.Function // callee
+}
+
+func (m *Model) label(l label) pds.LabelID {
+	if l.instr == nil {
+		return 0
+	}
+	if id, ok := m.labelID[l]; ok {
+		return id
+	}
+	id := pds.LabelID(len(m.labels))
+	m.labels = append(m.labels, l)
+	m.labelID[l] = id
+	return id
+}
+
+func (m *Model) doubt(i ssa.Instruction, text string) pds.DoubtID {
+	k := doubtKey{i, text}
+	if id, ok := m.doubtID[k]; ok {
+		return id
+	}
+	id := pds.DoubtID(len(m.doubts))
+	what := "this value"
+	if c, ok := i.(ssa.CallInstruction); ok {
+		what = m.callText(c)
+	}
+	m.doubts = append(m.doubts, properties.Note{Kind: "alias", Place: m.place(i.Pos(), i), Text: what + " " + text})
+	m.doubtID[k] = id
+	return id
+}
+
+// Doubt implements properties.Model.
+func (m *Model) Doubt(d pds.DoubtID) properties.Note { return m.doubts[d] }
+
+// noteSet collects assumptions without doubles.
+type noteSet struct {
+	list []properties.Note
+	seen map[properties.Note]bool
+}
+
+func (m *Model) note(at ssa.Instruction, kind, text string) {
+	n := properties.Note{Kind: kind, Place: m.place(at.Pos(), at), Text: text}
+	if m.notes.seen == nil {
+		m.notes.seen = map[properties.Note]bool{}
+	}
+	if !m.notes.seen[n] {
+		m.notes.seen[n] = true
+		m.notes.list = append(m.notes.list, n)
+	}
+}
+
+// Assumptions implements properties.Model.
+func (m *Model) Assumptions() []properties.Note {
+	out := slices.Clone(m.notes.list)
+	sort.SliceStable(out, func(i, j int) bool {
+		a, b := out[i], out[j]
+		if a.Place.File != b.Place.File {
+			return a.Place.File < b.Place.File
+		}
+		if a.Place.Line != b.Place.Line {
+			return a.Place.Line < b.Place.Line
+		}
+		if a.Place.Column != b.Place.Column {
+			return a.Place.Column < b.Place.Column
+		}
+		if a.Kind != b.Kind {
+			return a.Kind < b.Kind
+		}
+		return a.Text < b.Text
+	})
+	return out
+}
+
+// funcOf describes a function; a closure carries its enclosing function's name.
+func (m *Model) funcOf(fn *ssa.Function) properties.Func {
+	fi := m.info(fn)
+	f := properties.Func{ID: fi.id}
+	top := fn
+	for top.Parent() != nil {
+		top = top.Parent()
+	}
+	named := top
+	if o := top.Origin(); o != nil {
+		named = o
+	}
+	if p := m.sh.prog.PackageOfFunction(fn); p != nil {
+		f.Package = p.Path
+		f.Name = named.RelString(p.Types)
+	} else {
+		f.Name = named.Name()
+	}
+	f.Place = m.at(fn.Pos())
+	if s := fn.Syntax(); s != nil {
+		f.Place = m.at(s.Pos())
+		f.End = m.at(s.End() - 1)
+	}
+	return f
+}
+
+func (m *Model) at(p token.Pos) properties.Place {
+	if !p.IsValid() {
+		return properties.Place{}
+	}
+	file, line, col := m.sh.prog.Position(p)
+	return properties.Place{File: file, Line: line, Column: col}
+}
+
+// place is the position of an instruction, or of the nearest one that has a
+// position: before it in its block, else after it, else the function's.
+func (m *Model) place(p token.Pos, i ssa.Instruction) properties.Place {
+	if p.IsValid() {
+		return m.at(p)
+	}
+	if i == nil || i.Block() == nil {
+		return properties.Place{}
+	}
+	instrs := i.Block().Instrs
+	k := slices.Index(instrs, i)
+	for j := k - 1; j >= 0; j-- {
+		if q := bodyPos(instrs[j]); q.IsValid() {
+			return m.at(q)
+		}
+	}
+	for j := k + 1; j < len(instrs); j++ {
+		if q := bodyPos(instrs[j]); q.IsValid() {
+			return m.at(q)
+		}
+	}
+	return m.at(i.Parent().Pos())
+}
+
+// bodyPos is the position of an instruction, unless it is where a variable was declared.
+func bodyPos(i ssa.Instruction) token.Pos {
+	switch i := i.(type) {
+	case *ssa.Phi, *ssa.Alloc, *ssa.DebugRef, *ssa.MakeInterface:
+		return token.NoPos
+	case *ssa.Store:
+		return i.Pos()
+	}
+	return i.Pos()
+}
+
+// Frame implements properties.Model.
+func (m *Model) Frame(h pds.Head) properties.Frame {
+	s := m.symbols[h.Symbol]
+	return properties.Frame{
+		Func:     m.funcOf(m.fns[s.fn].fn),
+		Entry:    s.kind == symEntry,
+		Deferred: s.kind == symDeferred,
+	}
+}
+
+// Step implements properties.Model.
+func (m *Model) Step(id pds.LabelID) properties.Step {
+	l := m.labels[id]
+	if l.instr == nil {
+		return properties.Step{}
+	}
+	fn := l.instr.Parent()
+	st := properties.Step{Func: m.funcOf(fn), Place: m.place(l.instr.Pos(), l.instr)}
+	if c, ok := l.instr.(ssa.CallInstruction); ok {
+		if p := m.callPos(c); p.IsValid() {
+			st.Place = m.at(p)
+		}
+	}
+	switch l.kind {
+	case lblEvent:
+		st.Kind, st.Text = properties.StepEvent, m.callText(l.instr.(ssa.CallInstruction))
+	case lblBirth:
+		st.Kind, st.Text = properties.StepCall, m.lineText(l.instr)
+	case lblDeferredEvent:
+		st.Kind, st.Text = properties.StepEvent, "deferred: "+m.callText(l.instr.(ssa.CallInstruction))
+	case lblTrue, lblFalse:
+		st.Kind = properties.StepBranch
+		m.branchStep(&st, l.instr.(*ssa.If), l.kind == lblTrue)
+	case lblCall:
+		st.Kind, st.Text = properties.StepCall, m.callText(l.instr.(ssa.CallInstruction))
+	case lblCallback:
+		st.Kind, st.Text = properties.StepCall, m.calleeText(l.instr.(ssa.CallInstruction))+" calls the function it is given"
+	case lblReturn:
+		st.Kind, st.Text = properties.StepReturn, m.returnText(l.instr)
+		if !l.instr.Pos().IsValid() && fn.Syntax() != nil {
+			st.Place = m.at(fn.Syntax().End() - 1)
+		}
+	case lblDefer:
+		st.Kind, st.Text = properties.StepDefer, "defer "+m.callText(l.instr.(ssa.CallInstruction))
+	case lblDeferredRuns:
+		st.Kind, st.Text = properties.StepCall, "the deferred call runs"
+	case lblPanic:
+		st.Kind, st.Text = properties.StepPanic, m.lineText(l.instr)
+	case lblCallPanics:
+		st.Kind, st.Text = properties.StepPanic, m.calleeText(l.instr.(ssa.CallInstruction))+" panics"
+	case lblGoexit:
+		st.Kind, st.Text = properties.StepEnd, m.calleeText(l.instr.(ssa.CallInstruction))+" ends the goroutine"
+	case lblSpawn:
+		st.Kind, st.Text = properties.StepSpawn, "go "+m.callText(l.instr.(ssa.CallInstruction))
+	case lblLost:
+		st.Kind, st.Text = properties.StepEnd, "nothing refers to it any more"
+	}
+	return st
+}
+
+func (m *Model) callPos(c ssa.CallInstruction) token.Pos {
+	if e := m.callExpr(c); e != nil {
+		return e.Pos()
+	}
+	return token.NoPos
+}
+
+// callExpr finds the call in the syntax.
+func (m *Model) callExpr(c ssa.CallInstruction) ast.Node {
+	pos := c.Common().Pos()
+	if !pos.IsValid() {
+		return nil
+	}
+	for _, n := range m.enclosing(pos) {
+		switch n := n.(type) {
+		case *ast.CallExpr:
+			if n.Lparen == pos || n.Pos() == pos {
+				return n
+			}
+		case *ast.RangeStmt:
+			return nil
+		}
+	}
+	return nil
+}
+
+// enclosing lists the syntax nodes around a position, innermost first.
+func (m *Model) enclosing(pos token.Pos) []ast.Node {
+	f := m.fileOf(pos)
+	if f == nil {
+		return nil
+	}
+	path, _ := astutil.PathEnclosingInterval(f, pos, pos+1)
+	return path
+}
+
+func (m *Model) fileOf(pos token.Pos) *ast.File {
+	name := m.sh.prog.FileOf(pos)
+	return m.sh.syntaxOf(name)
+}
+
+// syntaxOf finds the syntax of a file by name; the index is made at the first question.
+func (sh *Shared) syntaxOf(name string) *ast.File {
+	sh.syntaxOnce.Do(func() {
+		sh.syntax = map[string]*ast.File{}
+		for _, p := range sh.prog.Packages {
+			for _, f := range p.Syntax {
+				sh.syntax[sh.prog.FileOf(f.Package)] = f
+			}
+		}
+	})
+	return sh.syntax[name]
+}
+
+func (m *Model) nodeText(n ast.Node) string { return m.sh.prog.SourceText(n.Pos(), n.End()) }
+
+func (m *Model) callText(c ssa.CallInstruction) string {
+	if e := m.callExpr(c); e != nil {
+		if call, ok := e.(*ast.CallExpr); ok {
+			if lit, ok := call.Fun.(*ast.FuncLit); ok {
+				return "func" + m.sh.prog.SourceText(lit.Type.Params.Pos(), lit.Type.Params.End()) + " {…}()"
+			}
+			for _, a := range call.Args {
+				if lit, ok := a.(*ast.FuncLit); ok {
+					return load.Shorten(m.sh.prog.SourceText(call.Pos(), lit.Pos()) + "func…)")
+				}
+			}
+		}
+		return m.nodeText(e)
+	}
+	return m.calleeText(c) + "(…)"
+}
+
+// calleeText is the callee as the source writes it.
+func (m *Model) calleeText(c ssa.CallInstruction) string {
+	if e, ok := m.callExpr(c).(*ast.CallExpr); ok {
+		if _, lit := e.Fun.(*ast.FuncLit); !lit {
+			return m.nodeText(e.Fun)
+		}
+		return "the function literal"
+	}
+	com := c.Common()
+	if com.IsInvoke() {
+		return com.Method.Name()
+	}
+	if fn := com.StaticCallee(); fn != nil {
+		return fn.Name()
+	}
+	return "the function value"
+}
+
+func (m *Model) lineText(i ssa.Instruction) string {
+	for _, n := range m.enclosing(i.Pos()) {
+		if s, ok := n.(ast.Stmt); ok {
+			switch s.(type) {
+			case *ast.BlockStmt, *ast.IfStmt, *ast.ForStmt, *ast.RangeStmt, *ast.SwitchStmt:
+				return strings.TrimSuffix(strings.TrimSpace(m.sh.prog.SourceLine(i.Pos())), " {")
+			}
+			return m.nodeText(s)
+		}
+	}
+	return strings.TrimSpace(m.sh.prog.SourceLine(i.Pos()))
+}
+
+func (m *Model) returnText(i ssa.Instruction) string {
+	if !i.Pos().IsValid() {
+		return "the function ends"
+	}
+	return m.lineText(i)
+}
+
+// branchStep puts a branch into words: the condition as the source writes it.
+func (m *Model) branchStep(st *properties.Step, i *ssa.If, truth bool) {
+	cond := i.Cond
+	pos := token.NoPos
+	if ci, ok := cond.(ssa.Instruction); ok && ci.Parent() == i.Parent() {
+		pos = bodyPos(ci)
+	}
+	switch i.Block().Comment {
+	case "rangeindex.loop", "rangeiter.loop", "rangechan.loop", "rangefunc.loop":
+		if rs := m.loopOf(i); rs != nil {
+			st.Place = m.at(rs.Pos())
+			what := "element"
+			if truth {
+				st.Text = "the loop takes the next " + what
+			} else {
+				st.Text = "the loop ends"
+			}
+			return
+		}
+	}
+	if !pos.IsValid() {
+		if n := m.ifAround(i, truth); n != nil {
+			st.Place = m.at(n.Pos())
+			st.Text = m.verdict(n, truth)
+			return
+		}
+		st.Text = m.ssaCond(cond, truth)
+		return
+	}
+	st.Place = m.at(pos)
+	var best ast.Expr
+	for _, n := range m.enclosing(pos) {
+		e, ok := n.(ast.Expr)
+		if !ok {
+			if cc, ok := n.(*ast.CaseClause); ok {
+				_ = cc
+			}
+			break
+		}
+		switch e := e.(type) {
+		case *ast.BinaryExpr:
+			if e.Op == token.LAND || e.Op == token.LOR {
+				goto done
+			}
+			best = e
+		case *ast.ParenExpr, *ast.CallExpr, *ast.SelectorExpr, *ast.Ident, *ast.IndexExpr, *ast.StarExpr, *ast.TypeAssertExpr:
+			best = e
+		case *ast.UnaryExpr:
+			if e.Op == token.NOT {
+				goto done
+			}
+			best = e
+		case *ast.FuncLit:
+			goto done
+		default:
+			best = e
+		}
+	}
+done:
+	if best == nil {
+		st.Text = m.ssaCond(cond, truth)
+		return
+	}
+	if b, ok := cond.(*ssa.BinOp); ok {
+		if _, isBin := best.(*ast.BinaryExpr); !isBin {
+			// A case of a switch: the comparison is not in the source.
+			st.Text = m.ssaCond(b, truth)
+			return
+		}
+	}
+	st.Place = m.at(best.Pos())
+	st.Text = m.verdict(best, truth)
+}
+
+func (m *Model) verdict(n ast.Node, truth bool) string {
+	t := m.nodeText(n)
+	if truth {
+		return t + " is true"
+	}
+	return t + " is false"
+}
+
+// loopOf finds the range statement of a loop header.
+func (m *Model) loopOf(i *ssa.If) *ast.RangeStmt {
+	for _, b := range []*ssa.BasicBlock{i.Block().Succs[0], i.Block()} {
+		for _, instr := range b.Instrs {
+			if p := bodyPos(instr); p.IsValid() {
+				for _, n := range m.enclosing(p) {
+					if rs, ok := n.(*ast.RangeStmt); ok {
+						return rs
+					}
+				}
+			}
+		}
+	}
+	return nil
+}
+
+// ifAround finds the condition of the if statement whose body a true branch
+// enters, when the condition itself has no place (a parameter, a φ).
+func (m *Model) ifAround(i *ssa.If, truth bool) ast.Expr {
+	b := i.Block().Succs[0]
+	for _, instr := range b.Instrs {
+		p := bodyPos(instr)
+		if !p.IsValid() {
+			continue
+		}
+		for _, n := range m.enclosing(p) {
+			switch s := n.(type) {
+			case *ast.IfStmt:
+				if p >= s.Body.Pos() && p < s.Body.End() {
+					return simpleCond(s.Cond)
+				}
+				return nil
+			case *ast.ForStmt:
+				if s.Cond != nil && p >= s.Body.Pos() && p < s.Body.End() {
+					return simpleCond(s.Cond)
+				}
+				return nil
+			case *ast.FuncLit, *ast.FuncDecl:
+				return nil
+			}
+		}
+	}
+	return nil
+}
+
+func simpleCond(e ast.Expr) ast.Expr {
+	if b, ok := e.(*ast.BinaryExpr); ok && (b.Op == token.LAND || b.Op == token.LOR) {
+		return nil
+	}
+	return e
+}
+
+// ssaCond puts a condition into words without its source.
+func (m *Model) ssaCond(v ssa.Value, truth bool) string {
+	word := " is true"
+	if !truth {
+		word = " is false"
+	}
+	switch v := v.(type) {
+	case *ssa.UnOp:
+		if v.Op == token.NOT {
+			return m.ssaCond(v.X, !truth)
+		}
+	case *ssa.BinOp:
+		x, y := m.valueText(v.X), m.valueText(v.Y)
+		if x != "" && y != "" {
+			return x + " " + v.Op.String() + " " + y + word
+		}
+	}
+	if s := m.valueText(v); s != "" {
+		return s + word
+	}
+	return "the condition" + word
+}
+
+func (m *Model) valueText(v ssa.Value) string {
+	switch v := v.(type) {
+	case *ssa.Const:
+		if v.Value == nil {
+			return "nil"
+		}
+		return v.Value.String()
+	case *ssa.Parameter:
+		return v.Name()
+	case *ssa.Phi:
+		return v.Comment
+	case *ssa.UnOp:
+		if v.Op == token.MUL {
+			return m.valueText(v.X)
+		}
+		if v.Op == token.ARROW {
+			return "the received value"
+		}
+	case *ssa.Alloc:
+		return v.Comment
+	case *ssa.FreeVar:
+		return v.Name()
+	case *ssa.Global:
+		return v.Name()
+	case *ssa.FieldAddr:
+		if x := m.valueText(v.X); x != "" {
+			return x + "." + structField(v.X.Type(), v.Field).Name()
+		}
+	case *ssa.Call:
+		return m.callText(v)
+	case *ssa.Extract:
+		if c, ok := v.Tuple.(*ssa.Call); ok {
+			t := c.Call.Signature().Results().At(v.Index).Type()
+			if types.Identical(t, errorType) {
+				return "the error of " + m.calleeText(c)
+			}
+			return "a result of " + m.calleeText(c)
+		}
+		if _, ok := v.Tuple.(*ssa.TypeAssert); ok {
+			return "the type assertion"
+		}
+		if _, ok := v.Tuple.(*ssa.Select); ok {
+			return "the chosen case"
+		}
+	}
+	return ""
+}

@@ -1,0 +1,2 @@
+// Package frontend lowers Go packages to pushdown systems.
+package frontend

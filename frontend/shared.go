@@ -1,0 +1,308 @@
+package frontend
+
+import (
+	"go/ast"
+	"go/types"
+	"slices"
+	"sync"
+
+	"golang.org/x/tools/go/ssa"
+
+	"pathtally/frontend/effects"
+	"pathtally/frontend/load"
+	"pathtally/properties"
+)
+
+// Shared is what the models of all rules have in common: the call graph and
+// the effect summaries of one loaded program.
+type Shared struct {
+	prog     *load.Program
+	fns      []*ssa.Function
+	index    map[*ssa.Function]int // position in fns: a fixed order
+	resolver *effects.TypeResolver
+	eff      *effects.Table
+
+	callers    map[*ssa.Function][]caller
+	targets    map[ssa.CallInstruction][]*ssa.Function
+	byName     map[string][]ssa.CallInstruction // sites by the name of the method or function called
+	dynamic    []ssa.CallInstruction            // calls of function values
+	taken      map[*ssa.Function]bool           // its value is used other than by being called
+	spawned    map[*ssa.Function]bool           // started by a go statement that names it
+	syntaxOnce sync.Once
+	syntax     map[string]*ast.File // by absolute file name
+}
+
+// Limits on calls that the source does not name. A call with more candidates
+// is not followed: its candidates are judged on their own, and the verdicts of
+// the caller rest on an assumption.
+const (
+	maxInvokeTargets = 8
+	maxValueTargets  = 3
+)
+
+// caller is a place from which a function is called or made into a closure.
+type caller struct {
+	fn   *ssa.Function
+	site ssa.CallInstruction // nil for a closure that is made, not called
+	made *ssa.MakeClosure
+}
+
+// arg is the value of the callee's parameter i.
+func (c caller) arg(callee *ssa.Function, i int) ssa.Value {
+	if c.site == nil {
+		return nil
+	}
+	com := c.site.Common()
+	if com.IsInvoke() {
+		if i == 0 {
+			return com.Value
+		}
+		i--
+	}
+	if i < len(com.Args) {
+		return com.Args[i]
+	}
+	return nil
+}
+
+// free is the value that the callee's captured variable i was made with.
+func (c caller) free(callee *ssa.Function, i int) ssa.Value {
+	if c.made != nil && i < len(c.made.Bindings) {
+		return c.made.Bindings[i]
+	}
+	return nil
+}
+
+// Analyze prepares a loaded program for lowering: call graph, effects.
+func Analyze(prog *load.Program) *Shared {
+	sh := &Shared{
+		prog:    prog,
+		fns:     prog.Functions(),
+		index:   map[*ssa.Function]int{},
+		callers: map[*ssa.Function][]caller{},
+		targets: map[ssa.CallInstruction][]*ssa.Function{},
+		byName:  map[string][]ssa.CallInstruction{},
+		taken:   map[*ssa.Function]bool{},
+		spawned: map[*ssa.Function]bool{},
+	}
+	sh.fns = slices.Clone(sh.fns)
+	for i, fn := range sh.fns {
+		sh.index[fn] = i
+	}
+	sh.resolver = effects.NewTypeResolver(prog.SSA, sh.fns)
+	sh.eff = effects.Compute(prog.SSA, sh.fns, effects.Options{Callees: sh.resolver.Callees})
+	for i := 0; i < len(sh.fns); i++ { // grows by wrappers that calls name
+		sh.scan(sh.fns[i])
+	}
+	return sh
+}
+
+// know adds a function that nobody listed (a wrapper).
+func (sh *Shared) know(fn *ssa.Function) {
+	if _, ok := sh.index[fn]; !ok && fn.Blocks != nil {
+		sh.index[fn] = len(sh.fns)
+		sh.fns = append(sh.fns, fn)
+	}
+}
+
+func (sh *Shared) scan(fn *ssa.Function) {
+	for _, b := range fn.Blocks {
+		for _, instr := range b.Instrs {
+			switch i := instr.(type) {
+			case *ssa.MakeClosure:
+				g := i.Fn.(*ssa.Function)
+				sh.know(g)
+				sh.callers[g] = append(sh.callers[g], caller{fn: fn, made: i})
+				if valueUsed(i) {
+					sh.taken[g] = true
+				}
+			case ssa.CallInstruction:
+				sh.scanCall(fn, i)
+			}
+			for _, op := range instr.Operands(nil) {
+				if g, ok := (*op).(*ssa.Function); ok && !calledBy(instr, g, op) {
+					sh.taken[g] = true
+				}
+			}
+		}
+	}
+}
+
+// calledBy tells whether the operand op of instr is the callee position.
+func calledBy(instr ssa.Instruction, g *ssa.Function, op *ssa.Value) bool {
+	switch i := instr.(type) {
+	case *ssa.MakeClosure:
+		return i.Fn == g
+	case ssa.CallInstruction:
+		return op == &i.Common().Value
+	}
+	return false
+}
+
+// valueUsed tells whether a closure is used other than by being called, spawned or deferred.
+func valueUsed(v *ssa.MakeClosure) bool {
+	for _, r := range *v.Referrers() {
+		if c, ok := r.(ssa.CallInstruction); ok && c.Common().Value == v && !slices.Contains(c.Common().Args, ssa.Value(v)) {
+			continue
+		}
+		if _, ok := r.(*ssa.DebugRef); ok {
+			continue
+		}
+		return true
+	}
+	return false
+}
+
+func (sh *Shared) scanCall(fn *ssa.Function, site ssa.CallInstruction) {
+	c := site.Common()
+	if _, ok := c.Value.(*ssa.Builtin); ok {
+		return
+	}
+	var ts []*ssa.Function
+	switch {
+	case c.IsInvoke():
+		sh.byName[c.Method.Name()] = append(sh.byName[c.Method.Name()], site)
+		all, _ := sh.resolver.Callees(site)
+		if len(all) <= maxInvokeTargets {
+			ts = all
+		}
+	case c.StaticCallee() != nil:
+		g := c.StaticCallee()
+		if obj := funcObject(g); obj != nil {
+			sh.byName[obj.Name()] = append(sh.byName[obj.Name()], site)
+		}
+		ts = []*ssa.Function{g}
+		if _, ok := site.(*ssa.Go); ok {
+			sh.spawned[g] = true
+		}
+	default:
+		sh.dynamic = append(sh.dynamic, site)
+		if fs := localFuncs(c.Value, nil, 0); len(fs) > 0 {
+			ts = fs
+		} else if all, ok := sh.resolver.Callees(site); ok && len(all) <= maxValueTargets {
+			ts = all
+		}
+	}
+	sh.targets[site] = ts
+	for _, g := range ts {
+		sh.know(g)
+		sh.callers[g] = append(sh.callers[g], caller{fn: fn, site: site})
+	}
+}
+
+// localFuncs finds the functions that a function value can be, as far as the
+// body it is called in (and the cells of its enclosing functions) shows; nil if
+// something else may flow in.
+func localFuncs(v ssa.Value, seen []ssa.Value, depth int) []*ssa.Function {
+	if depth > 6 || slices.Contains(seen, v) {
+		return nil
+	}
+	seen = append(seen, v)
+	switch v := v.(type) {
+	case *ssa.Function:
+		return []*ssa.Function{v}
+	case *ssa.MakeClosure:
+		return []*ssa.Function{v.Fn.(*ssa.Function)}
+	case *ssa.ChangeType:
+		return localFuncs(v.X, seen, depth+1)
+	case *ssa.UnOp:
+		if a, ok := v.X.(*ssa.Alloc); ok {
+			var out []*ssa.Function
+			for _, r := range *a.Referrers() {
+				switch r := r.(type) {
+				case *ssa.Store:
+					if r.Addr != a {
+						return nil
+					}
+					if c, ok := r.Val.(*ssa.Const); ok && c.Value == nil {
+						continue
+					}
+					fs := localFuncs(r.Val, seen, depth+1)
+					if fs == nil {
+						return nil
+					}
+					out = append(out, fs...)
+				case *ssa.UnOp, *ssa.MakeClosure, *ssa.DebugRef:
+				default:
+					return nil
+				}
+			}
+			return out
+		}
+		if fv, ok := v.X.(*ssa.FreeVar); ok {
+			// A recursive closure: var f func(); f = func() { f() }.
+			for i, x := range fv.Parent().FreeVars {
+				if x != fv || fv.Parent().Parent() == nil {
+					continue
+				}
+				for _, b := range fv.Parent().Parent().Blocks {
+					for _, instr := range b.Instrs {
+						if mc, ok := instr.(*ssa.MakeClosure); ok && mc.Fn == fv.Parent() {
+							if a, ok := mc.Bindings[i].(*ssa.Alloc); ok {
+								for _, r := range *a.Referrers() {
+									if st, ok := r.(*ssa.Store); ok && st.Addr == a {
+										if fs := localFuncs(st.Val, seen, depth+1); fs != nil {
+											return fs
+										}
+									}
+								}
+							}
+						}
+					}
+				}
+			}
+		}
+	}
+	return nil
+}
+
+// candidateSites lists the calls whose callee's name, or whose kind, an event
+// of the rule could fit, in a fixed order.
+func (sh *Shared) candidateSites(rule *properties.ResolvedRule) []ssa.CallInstruction {
+	names := map[string]bool{}
+	var order []string
+	var out []ssa.CallInstruction
+	dynamic := false
+	for i := range rule.Events {
+		e := &rule.Events[i]
+		dynamic = dynamic || e.CallsInstance
+		for _, c := range e.Callees {
+			if n := c.Obj.Name(); !names[n] {
+				names[n] = true
+				order = append(order, n)
+			}
+		}
+	}
+	for _, n := range order {
+		out = append(out, sh.byName[n]...)
+	}
+	if dynamic {
+		out = append(out, sh.dynamic...)
+	}
+	return out
+}
+
+// resultPath says that result res of the call is what `path` leads to from an
+// argument (nil path: the argument itself; a nil step is a load, else a field).
+func (sh *Shared) resultPath(c *ssa.Call, res int) (arg ssa.Value, path []*types.Var, ok bool) {
+	fn := c.Common().StaticCallee()
+	if fn == nil {
+		return nil, nil, false
+	}
+	sum := sh.eff.Of(fn)
+	r := sum.Result(res)
+	i, path, ok := resultAccess(r)
+	if !ok {
+		return nil, nil, false
+	}
+	cl := caller{fn: c.Parent(), site: c}
+	if mc, isClosure := c.Common().Value.(*ssa.MakeClosure); isClosure {
+		cl.made = mc
+	}
+	if i < len(fn.Params) {
+		arg = cl.arg(fn, i)
+	} else {
+		arg = cl.free(fn, i-len(fn.Params))
+	}
+	return arg, path, arg != nil
+}
