@@ -150,7 +150,9 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 	opt := report.Options{Colour: s.outTerminal && !s.noColour, Width: s.width, Assumptions: f.assumptions, Quiet: f.quiet, Verbose: f.verbose}
 	switch {
 	case f.about != "":
-		err = report.About(s.out, run, func(q judge.Question) bool { return sameFunction(f.about, q.Root) }, opt)
+		err = report.About(s.out, run, func(q judge.Question) bool {
+			return sameFunction(f.about, q.Root) || slices.ContainsFunc(q.Blame, func(fn properties.Func) bool { return sameFunction(f.about, fn) })
+		}, opt)
 	case f.format == "json":
 		err = report.JSON(s.out, run)
 	case f.format == "lines":

@@ -122,30 +122,40 @@ func (j *judge) question(si int, c *properties.Claim) {
 	ask := Question{Set: j.rule.Set, Rule: j.rule.Name, Claim: c.Name, Advice: advice, Root: s.Root, RootKind: s.Kind, Instance: s.Instance}
 	var grounds []string
 	var open *Open
-	if !c.Linear {
-		open = j.openFor(s, c, "form of the claim: it needs the set of all count vectors, which this version does not build", 0)
-	} else {
-		for qi := range c.Questions {
-			v := j.answer(si, c, qi)
-			switch v.verdict {
-			case Broken:
-				ask.Verdict = Broken
-				ask.Advice = ask.Advice || v.soft
-				grounds = []string{v.ground}
-			case Undecided:
-				if open == nil {
-					open = v.open
-				}
-			default:
-				grounds = append(grounds, v.ground)
+	take := func(v answered) (more bool) {
+		switch v.verdict {
+		case Broken:
+			ask.Verdict = Broken
+			ask.Advice = ask.Advice || v.soft
+			ask.Blame = v.blame
+			grounds = []string{v.ground}
+			return false
+		case Undecided:
+			if open == nil {
+				open = v.open
 			}
-			if ask.Verdict == Broken {
+		default:
+			grounds = append(grounds, v.ground)
+		}
+		return true
+	}
+	if c.Linear {
+		for qi := range c.Questions {
+			if !take(j.answer(si, c, &c.Questions[qi])) {
 				break
 			}
 		}
-		if len(c.Questions) == 0 {
-			grounds = []string{"no count can break it"}
+	} else if len(c.Cases) == 0 {
+		open = j.openFor(s, c, "form of the claim: it takes the set of all count vectors", 0)
+	} else {
+		for _, all := range c.Cases {
+			if !take(j.answerCase(si, c, all)) {
+				break
+			}
 		}
+	}
+	if len(grounds) == 0 && open == nil {
+		grounds = []string{"no count can break it"}
 	}
 	if ask.Verdict != Broken && open != nil {
 		ask.Verdict = Undecided
@@ -165,62 +175,82 @@ type answered struct {
 	ground  string
 	open    *Open
 	soft    bool // all that is broken stands in packages where the claim is softened
+	blame   []properties.Func
 }
 
 // answer decides one inequality of a claim at one start.
-func (j *judge) answer(si int, c *properties.Claim, qi int) answered {
-	s, q := &j.starts[si], &c.Questions[qi]
-	a := j.asks(s, c, q.Weights)
-	bound := q.Bound
-	undecided := func(stop *stopped) answered {
-		o := j.openFor(s, c, stop.reason, stop.steps)
-		if stop.at.Symbol != 0 {
-			if p := j.m.Frame(stop.at).Func.Place; p.Line > 0 {
-				o.Place = p
-				o.StoppedBy += "; most of them in " + j.m.Frame(stop.at).Func.Name
-			}
-		}
-		o.SoFar = "nothing broken on what was seen; that is not an answer"
-		return answered{verdict: Undecided, open: o}
+func (j *judge) answer(si int, c *properties.Claim, q *properties.Question) answered {
+	s := &j.starts[si]
+	x, stop := j.suspect(si, c, q)
+	if stop != nil {
+		return j.undecided(s, c, stop)
 	}
+	if x.ground != "" {
+		return answered{ground: x.ground}
+	}
+	a := x.a
+	a.mend = true
 	most, stop := j.s.greatest(a)
 	if stop != nil {
-		return undecided(stop)
+		return j.undecided(s, c, stop)
 	}
-	if !most.over(bound) {
-		return answered{ground: holdsText(q, j.rule.Counts, most)}
+	if !most.over(x.bound) {
+		return answered{verdict: Undecided, open: j.doubtOf(s, c, x.a, x.bound)}
+	}
+	return j.causes(si, c, q, a, x.bound, x.notes, nil)
+}
+
+// undecided says what stopped a search, and where most of it went.
+func (j *judge) undecided(s *properties.Start, c *properties.Claim, stop *stopped) answered {
+	o := j.openFor(s, c, stop.reason, stop.steps)
+	if stop.at.Symbol != 0 {
+		if fn := j.m.Frame(stop.at).Func; fn.Place.Line > 0 {
+			o.Place = fn.Place
+			o.StoppedBy += "; most of them in " + fn.Name
+		}
+	}
+	o.SoFar = "nothing broken on what was seen; that is not an answer"
+	return answered{verdict: Undecided, open: o}
+}
+
+// A suspected is an inequality that some path breaks and no contract excuses;
+// with a ground it is neither.
+type suspected struct {
+	ground string
+	a      ask
+	bound  int64
+	notes  []properties.Note
+}
+
+// suspect asks whether some path breaks an inequality, contracts apart.
+func (j *judge) suspect(si int, c *properties.Claim, q *properties.Question) (suspected, *stopped) {
+	x := suspected{a: j.asks(&j.starts[si], c, q.Weights), bound: q.Bound}
+	most, stop := j.s.greatest(x.a)
+	if stop != nil {
+		return x, stop
+	}
+	if !most.over(x.bound) {
+		x.ground = holdsText(q, j.rule.Counts, most)
+		return x, nil
 	}
 	ex, stop := j.excuseOf(si, c, q)
-	if stop != nil {
-		return undecided(stop)
+	if stop != nil || ex == nil {
+		return x, stop
 	}
-	var notes []properties.Note
-	if ex != nil {
-		notes = []properties.Note{ex.note}
-		bound += ex.credit
-		if ex.returns && isEnd(c.Point) {
-			inner := a.accept
-			a.accept = func(q pds.StateID) bool { return inner(q) && j.m.Exit(q).Kind != properties.ExitReturn }
-		}
-		most, stop = j.s.greatest(a)
-		if stop != nil {
-			return undecided(stop)
-		}
-		if !most.over(bound) {
-			j.res.assumptions = append(j.res.assumptions, ex.note)
-			return answered{ground: ex.note.Text}
-		}
+	x.notes = []properties.Note{ex.note}
+	x.bound += ex.credit
+	if ex.returns && isEnd(c.Point) {
+		inner := x.a.accept
+		x.a.accept = func(q pds.StateID) bool { return inner(q) && j.m.Exit(q).Kind != properties.ExitReturn }
 	}
-	plain := a
-	a.mend = true
-	most, stop = j.s.greatest(a)
-	if stop != nil {
-		return undecided(stop)
+	if most, stop = j.s.greatest(x.a); stop != nil {
+		return x, stop
 	}
-	if !most.over(bound) {
-		return answered{verdict: Undecided, open: j.doubtOf(s, c, plain, bound)}
+	if !most.over(x.bound) {
+		j.res.assumptions = append(j.res.assumptions, ex.note)
+		x.ground = ex.note.Text
 	}
-	return j.causes(si, c, qi, a, bound, notes)
+	return x, nil
 }
 
 // doubtOf names the doubt that an answer hangs on: the first one on the
@@ -266,11 +296,13 @@ func (j *judge) firstDoubt(r pds.Run, choices []pds.Choice, w []int64) pds.Doubt
 }
 
 // causes lists the ways in which a broken question is lost, each once.
-func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, notes []properties.Note) answered {
+// fits, if not nil, must accept the counts of a path for it to count as broken.
+func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a ask, bound int64, notes []properties.Note, fits func([]int64) bool) answered {
 	s := &j.starts[si]
 	limit := j.opt.causes()
 	found := map[string]bool{}
 	first, off, soft := "", "", true
+	var blamed []properties.Func
 	// The same cause may show in several contexts: those turns are bounded too.
 	for turn := 0; ; turn++ {
 		if len(found) >= limit || turn >= 4*limit {
@@ -289,7 +321,10 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 			break
 		}
 		t, by := j.confirm(s, c, a, bound, choices)
-		f, key, mask, stop := j.finding(s, c, &c.Questions[qi], a, bound, t, by)
+		if fits != nil && !fits(t.total()) {
+			break
+		}
+		f, key, mask, stop := j.finding(s, c, q, a, bound, t, by)
 		if stop != nil {
 			if turn == 0 {
 				return answered{verdict: Undecided, open: j.openFor(s, c, stop.reason, stop.steps)}
@@ -299,6 +334,7 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 		f.Assumptions = sortedNotes(append(f.Assumptions, notes...))
 		if !found[key] {
 			found[key] = true
+			blamed = append(blamed, f.Blame)
 			switch j.state(c.Name, f.Blame.Package) {
 			case properties.Off:
 				off = f.Blame.Package
@@ -321,7 +357,7 @@ func (j *judge) causes(si int, c *properties.Claim, qi int, a ask, bound int64, 
 	if len(found) > 0 && !j.reported(found) {
 		return answered{ground: "switched off in " + off + ", where it is broken"}
 	}
-	return answered{verdict: Broken, ground: first, soft: soft}
+	return answered{verdict: Broken, ground: first, soft: soft, blame: blamed}
 }
 
 // reported says that a finding with one of the keys was kept.

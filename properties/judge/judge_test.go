@@ -410,3 +410,31 @@ func TestSwitches(t *testing.T) {
 		}
 	}
 }
+
+// not-mixed is broken where both differences are uneven at one moment.
+func TestCases(t *testing.T) {
+	q := func(w ...int64) properties.Question {
+		return properties.Question{Weights: w, Text: "w - wu == 0 || r - ru == 0"}
+	}
+	rule := &properties.ResolvedRule{Name: "rw", Stays: true, Each: &properties.EachParam{Name: "m"}, Counts: []string{"w", "wu", "r", "ru"},
+		Claims: []properties.Claim{{Name: "not-mixed", Point: properties.Always, Text: "w - wu == 0 || r - ru == 0", Cases: [][]properties.Question{
+			{q(1, -1, 0, 0), q(0, 0, 1, -1)}, {q(1, -1, 0, 0), q(0, 0, -1, 1)}, {q(-1, 1, 0, 0), q(0, 0, 1, -1)}, {q(-1, 1, 0, 0), q(0, 0, -1, 1)}}}}}
+	build := func(order ...string) *Result {
+		b := pds.NewBuilder("w", "wu", "r", "ru")
+		s := start(b, "F", "d.mu", "")
+		at := "F"
+		for i, c := range order {
+			next := "F:" + string(rune('a'+i))
+			b.Step("run", at, "run", next, counts(c, i+2, c)...)
+			at = next
+		}
+		b.Pop("run", at, "ok")
+		return judgeOne(t, rule, newFake(t, b, s))
+	}
+	want(t, build("w", "wu", "r", "ru"), "F not-mixed holds")
+	r := build("w", "r", "ru", "wu")
+	want(t, r, "F not-mixed broken")
+	if f := r.Findings[0]; f.Cause.Place.Line != 3 || f.Fact != "1 - 0 == 0 || 1 - 0 == 0 is false" {
+		t.Errorf("cause in line %d, %q", f.Cause.Place.Line, f.Fact)
+	}
+}

@@ -108,6 +108,8 @@ type Question struct {
 	Instance string
 	Verdict  Verdict
 	Grounds  string // one line: why it holds; the message or what stopped it otherwise
+	// Blame lists the functions that the findings of a broken question stand in.
+	Blame []properties.Func
 }
 
 // Tally counts questions. Questions = Holds + Broken + Undecided.

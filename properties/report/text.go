@@ -324,9 +324,9 @@ func (t *texter) path(f *judge.Finding) {
 
 func (t *texter) open(o *judge.Open) {
 	who := o.Root.Name
-	what := fmt.Sprintf("does %s keep %s?", who, o.Formula)
+	what := fmt.Sprintf("does every path of %s keep %s?", who, o.Formula)
 	if o.Instance != "" {
-		what = fmt.Sprintf("does %s keep %s for %s?", who, o.Formula, o.Instance)
+		what = fmt.Sprintf("does every path of %s keep %s for %s?", who, o.Formula, o.Instance)
 	}
 	t.line("%s: %s: %s", t.paint(bold, place(o.Place)), t.paint(yellow, "undecided"), t.paint(bold, what))
 	label := func(name, rest string) {
