@@ -84,10 +84,12 @@ func (e *Error) Text() string {
 	return b.String()
 }
 
-// runeStart moves i down to where a rune of s starts.
+// runeStart moves i down to where a rune of s starts; where s is not UTF-8, i stays.
 func runeStart(s string, i int) int {
-	for i > 0 && i < len(s) && !utf8.RuneStart(s[i]) {
-		i--
+	for n := 0; n < utf8.UTFMax && i-n > 0 && i < len(s); n++ {
+		if utf8.RuneStart(s[i-n]) {
+			return i - n
+		}
 	}
 	return i
 }
