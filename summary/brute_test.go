@@ -22,9 +22,12 @@ type oracle struct {
 	sys     pds.System
 	w       []int64
 	q       Question
-	exits   map[pds.Head]map[pds.StateID]bool
+	endless map[pds.Head]bool // spawned heads that can never end
 	memoEnd map[string]map[outcome]int
 }
+
+// lostWork stands for an exit in outcomes of runs that stop before a loss.
+const lostWork pds.StateID = -1
 
 type oracleMode int
 
@@ -70,6 +73,125 @@ func naiveExits(t *pds.Table) map[pds.Head]map[pds.StateID]bool {
 		}
 	}
 	return ex
+}
+
+// naiveEndless iterates the definition: which work can end if what it spawns can
+// end or is endless; of the rest, that which leads to no other such work that does
+// not lead back is endless; again.
+func naiveEndless(t *pds.Table, exits map[pds.Head]map[pds.StateID]bool) map[pds.Head]bool {
+	endless := map[pds.Head]bool{}
+	spawns := map[pds.Head]bool{}
+	next := map[pds.Head][]pds.Head{}
+	for _, h := range t.Heads() {
+		for _, r := range t.Rules(h, nil) {
+			for _, s := range r.Spawn {
+				spawns[s] = true
+				next[h] = append(next[h], s)
+			}
+			if r.Kind == pds.Step || r.Kind == pds.Push {
+				top := pds.Head{State: r.State, Symbol: r.Top}
+				next[h] = append(next[h], top)
+				if r.Kind == pds.Push {
+					for q := range exits[top] {
+						next[h] = append(next[h], pds.Head{State: q, Symbol: r.Below})
+					}
+				}
+			}
+		}
+	}
+	reach := func(h pds.Head) map[pds.Head]bool {
+		seen := map[pds.Head]bool{h: true}
+		work := []pds.Head{h}
+		for len(work) > 0 {
+			h := work[0]
+			work = work[1:]
+			for _, k := range next[h] {
+				if !seen[k] {
+					seen[k] = true
+					work = append(work, k)
+				}
+			}
+		}
+		return seen
+	}
+	for {
+		type end struct {
+			h pds.Head
+			q pds.StateID
+		}
+		can := map[end]bool{}
+		ends := func(h pds.Head) bool {
+			if endless[h] || can[end{h, lostWork}] {
+				return true
+			}
+			for q := range exits[h] {
+				if can[end{h, q}] {
+					return true
+				}
+			}
+			return false
+		}
+		for changed := true; changed; {
+			changed = false
+			for _, h := range t.Heads() {
+				put := func(q pds.StateID) {
+					if !can[end{h, q}] {
+						can[end{h, q}] = true
+						changed = true
+					}
+				}
+				for _, r := range t.Rules(h, nil) {
+					if r.Mark&pds.MarkLoss != 0 {
+						put(lostWork)
+					}
+					ok := true
+					for _, s := range r.Spawn {
+						ok = ok && ends(s)
+					}
+					if !ok {
+						continue
+					}
+					top := pds.Head{State: r.State, Symbol: r.Top}
+					for q := lostWork; q < 10; q++ {
+						switch {
+						case r.Kind == pds.Pop && q == r.State:
+							put(q)
+						case (r.Kind == pds.Step || r.Kind == pds.Push && q == lostWork) && can[end{top, q}]:
+							put(q)
+						}
+						if r.Kind == pds.Push {
+							for s := range exits[top] {
+								if can[end{top, s}] && can[end{pds.Head{State: s, Symbol: r.Below}, q}] {
+									put(q)
+								}
+							}
+						}
+					}
+				}
+			}
+		}
+		var stuck []pds.Head
+		for h := range spawns {
+			if !ends(h) {
+				stuck = append(stuck, h)
+			}
+		}
+		if len(stuck) == 0 {
+			return endless
+		}
+		for _, h := range stuck {
+			bottom := true
+			mine := reach(h)
+			for _, k := range stuck {
+				if mine[k] && !reach(k)[h] {
+					bottom = false
+				}
+			}
+			if bottom {
+				endless[h] = true
+			}
+		}
+	}
 }
 
 func (o *oracle) weigh(v []int64) (sum int64) {
@@ -118,6 +240,9 @@ func (o *oracle) runs(h pds.Head, limit int, mode oracleMode) map[outcome]int {
 				if mode == ended && r.Mark&o.q.StopMarks != 0 {
 					put(outcome{0, c.weight}, l)
 				}
+				if r.Mark&pds.MarkLoss != 0 {
+					put(outcome{lostWork, c.weight}, l)
+				}
 				if l == limit {
 					continue
 				}
@@ -133,12 +258,17 @@ func (o *oracle) runs(h pds.Head, limit int, mode oracleMode) map[outcome]int {
 							continue
 						}
 						sub := mode
-						if len(o.exits[s]) == 0 {
+						if o.endless[s] {
 							sub = anyCut
 						}
 						for y, m := range o.runs(s, limit-l-n, sub) {
 							if sub == ended && y.exit == 0 {
 								continue
+							}
+							if y.exit == lostWork {
+								if sub != ended {
+									continue
+								}
 							}
 							z := outcome{0, x.weight + y.weight}
 							if old, ok := next[z]; !ok || n+m < old {
@@ -255,10 +385,10 @@ func check(t *testing.T, sys *pds.Table, q Question, limit int, wide bool) Value
 	accept := func(q pds.StateID) bool { return q != 2 }
 	s := e.Solve(q)
 	v := s.Greatest(h, accept)
-	o := &oracle{sys: sys, w: q.Weights, q: q, exits: naive, memoEnd: map[string]map[outcome]int{}}
+	o := &oracle{sys: sys, w: q.Weights, q: q, endless: naiveEndless(sys, naive), memoEnd: map[string]map[outcome]int{}}
 	shortest := map[int64]int{} // weight → steps
 	for x, n := range o.runs(h, limit, ended) {
-		if x.exit == 0 || accept(x.exit) {
+		if x.exit == 0 || x.exit != lostWork && accept(x.exit) {
 			if old, ok := shortest[x.weight]; !ok || n < old {
 				shortest[x.weight] = n
 			}

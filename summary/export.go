@@ -64,6 +64,9 @@ func (e *Engine) Grammar(h pds.Head, accept func(pds.StateID) bool, q Question) 
 	if !ok {
 		return nil, ErrExhausted
 	}
+	for _, a := range targets {
+		s.value(a) // decides what is endless
+	}
 	moment := s.q.moment()
 	g := &Grammar{}
 	var productive map[NT]bool
@@ -183,7 +186,7 @@ func (e *Engine) Grammar(h pds.Head, accept func(pds.StateID) bool, q Question) 
 	}
 	walk(func(a NT, p int32, rhs []NT) {
 		pr := &e.g.prods[p]
-		out := Production{Lhs: number(a), Main: int(pr.main), Before: pr.when == atMarks}
+		out := Production{Lhs: number(a), Main: int(pr.main), Before: pr.stopsBefore()}
 		for _, b := range rhs {
 			out.Rhs = append(out.Rhs, number(b))
 		}
@@ -229,6 +232,7 @@ func (e *Engine) Endless(h pds.Head) (heads []pds.Head, ok bool) {
 	if !ok {
 		return nil, false
 	}
+	s := e.Solve(Question{Weights: make([]int64, e.sys.NumCounts())})
 	seen := map[node]bool{n: true}
 	listed := map[node]bool{}
 	work := []node{n}
@@ -254,8 +258,12 @@ func (e *Engine) Endless(h pds.Head) (heads []pds.Head, ok bool) {
 			for _, h := range e.rules[r].Spawn {
 				k := e.nodeOf[h]
 				take(k)
-				if e.nodes[k].first < 0 && !listed[k] {
-					listed[k] = true
+				if listed[k] {
+					continue
+				}
+				listed[k] = true
+				s.value(e.nt(spawned, k))
+				if s.endless[k] {
 					heads = append(heads, h)
 				}
 			}

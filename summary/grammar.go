@@ -25,11 +25,13 @@ const (
 	// anywhere, what they spawn stopped anywhere too.
 	cutClosed
 	prefix
-	// spawned [node]: work that was spawned at the head and has ended. If it can
-	// never end: begun.
+	// spawned [node]: work that was spawned at the head and has ended: closed in any
+	// exit, or lost. If it can never end: begun.
 	spawned
 	// begun [node]: work that was spawned at the head, stopped anywhere.
 	begun
+	// lost [node]: from the head, stopped before a Stop rule with MarkLoss.
+	lost
 )
 
 // when says which questions a production belongs to.
@@ -40,6 +42,8 @@ const (
 	atAny          // stops the run: AnyMoment only
 	atMarks        // stops the run before prod.rule: only if the question asks for one of its marks
 	atAnyStep      // takes the step of a Stop rule: AnyMoment only
+	atLoss         // stops the run before prod.rule, a loss
+	ifEndless      // spawned work counts as begun: only if it can never end
 )
 
 type ntInfo struct {
@@ -62,7 +66,7 @@ type grammar struct {
 	nts   []ntInfo
 	prods []prod
 	rhs   []NT
-	index [6][]NT // per kind: by pair or node, shifted by 1; 0: none
+	index [7][]NT // per kind: by pair or node, shifted by 1; 0: none
 }
 
 func (e *Engine) nt(kind ntKind, of int32) NT {
@@ -97,7 +101,7 @@ func (e *Engine) headOf(a NT) pds.Head {
 func (e *Engine) name(a NT) string {
 	h := e.headOf(a)
 	i := e.g.nts[a]
-	letter := [...]string{"C", "O", "K", "P", "S", "B"}[i.kind]
+	letter := [...]string{"C", "O", "K", "P", "S", "B", "L"}[i.kind]
 	if i.kind == closed || i.kind == cutClosed {
 		return fmt.Sprintf("%s[%d %d %d]", letter, h.State, h.Symbol, e.pairs[i.of].exit)
 	}
@@ -121,14 +125,14 @@ func (e *Engine) productions(a NT) (start, end int32) {
 		e.buildOpen(i.of, open, closed, spawned)
 	case prefix:
 		e.buildOpen(i.of, prefix, cutClosed, begun)
+	case lost:
+		e.buildOpen(i.of, lost, closed, spawned)
 	case spawned:
-		if e.nodes[i.of].first < 0 {
-			e.produce(-1, always, e.nt(begun, i.of))
-			break
-		}
 		for p := e.nodes[i.of].first; p >= 0; p = e.pairs[p].next {
 			e.produce(-1, always, e.nt(closed, p))
 		}
+		e.produce(-1, always, e.nt(lost, i.of))
+		e.produce(-1, ifEndless, e.nt(begun, i.of))
 	case begun:
 		e.produce(-1, always, e.nt(prefix, i.of))
 		for p := e.nodes[i.of].first; p >= 0; p = e.pairs[p].next {
@@ -193,21 +197,25 @@ func (e *Engine) buildClosed(of pair, self, work ntKind) {
 }
 
 func (e *Engine) buildOpen(n node, self, done, work ntKind) {
-	stop := always
-	if self == open {
-		stop = atAny
+	switch self {
+	case open:
+		e.produce(-1, atAny)
+	case prefix:
+		e.produce(-1, always)
 	}
-	e.produce(-1, stop)
 	start, end := e.rulesOf(n)
 	for r := start; r < end; r++ {
 		rule := &e.rules[r]
 		if rule.Mark != 0 && self == open {
 			e.produce(r, atMarks)
 		}
+		if rule.Mark&pds.MarkLoss != 0 && self == lost {
+			e.produce(r, atLoss)
+		}
 		switch rule.Kind {
 		case pds.Stop:
 			// The moment after a stop is one too.
-			if rule.Effect != 0 || rule.Doubt != 0 || len(rule.Spawn) != 0 {
+			if self != lost && (rule.Effect != 0 || rule.Doubt != 0 || len(rule.Spawn) != 0) {
 				e.step(r, work)
 				if self == open {
 					e.g.prods[len(e.g.prods)-1].when = atAnyStep
@@ -226,4 +234,7 @@ func (e *Engine) buildOpen(n node, self, done, work ntKind) {
 }
 
 // takesStep: the production executes its rule.
-func (p *prod) takesStep() bool { return p.rule >= 0 && p.when != atMarks }
+func (p *prod) takesStep() bool { return p.rule >= 0 && !p.stopsBefore() }
+
+// stopsBefore: the run stops before the rule because of its mark.
+func (p *prod) stopsBefore() bool { return p.when == atMarks || p.when == atLoss }

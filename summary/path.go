@@ -132,7 +132,7 @@ func (s *Solution) emit(t *tree, budget *int) (Path, error) {
 			work = append(work, item{t, true})
 		}
 		pr := &e.g.prods[t.prod]
-		if pr.when == atMarks {
+		if pr.stopsBefore() {
 			p.Before = int(pr.rule - e.nodes[e.owner[pr.rule]].ruleStart)
 			continue
 		}

@@ -154,6 +154,8 @@ type Solution struct {
 	least *Solution
 	// pumps: from an unbounded nonterminal back to itself with a gain.
 	pumps map[NT][]pumpStep
+	// endless: spawned work that can never end.
+	endless map[node]bool
 	// exact: look for pumps after every improvement, whatever it costs.
 	exact bool
 	// allowance of every component, see pumpAllowance; tests lower it.
@@ -166,7 +168,7 @@ func (e *Engine) Solve(q Question) *Solution {
 	if len(q.Weights) != e.sys.NumCounts() {
 		panic(fmt.Sprintf("summary: solve: %d weights for %d counts", len(q.Weights), e.sys.NumCounts()))
 	}
-	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, allowance: pumpAllowance}
+	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, endless: map[node]bool{}, allowance: pumpAllowance}
 	s.q.Weights = slices.Clone(q.Weights)
 	if q.TakeDoubts {
 		s.doubt = 1
@@ -195,6 +197,8 @@ func (s *Solution) live(p *prod) bool {
 		if !s.q.AnyMoment {
 			return false
 		}
+	case ifEndless:
+		return s.endless[s.e.g.nts[s.e.g.rhs[p.rhs]].of]
 	case atMarks:
 		return s.e.rules[p.rule].Mark&s.q.StopMarks != 0
 	}
@@ -388,10 +392,17 @@ func (k *ask) rhs(p int32) []NT {
 // rest component by component, bottom up.
 func (s *Solution) solve(a NT) {
 	k := s.collect(a)
+	productive := k.productive()
+	for k.markEndless(productive) {
+		for _, a := range k.nts {
+			s.cell(a).local = 0
+		}
+		k = s.collect(a)
+		productive = k.productive()
+	}
 	n := len(k.nts)
 	k.number, k.set, k.first, k.seen, k.queued = make([]int32, n), make([]int, n), make([]int, n), make([]int, n), make([]bool, len(k.prods))
-	productive := k.productive()
-	k.components(productive, k.component)
+	k.components(func(l int32) bool { return productive[l] }, func(p int32) bool { return k.prods[p].miss == 0 }, k.component)
 	for i, a := range k.nts {
 		c := s.cell(a)
 		c.local = 0
@@ -487,10 +498,48 @@ func (k *ask) productive() []bool {
 	return is
 }
 
-// components calls f for every strongly connected component of the productive
-// part, users after used (Tarjan, Depth-first search and linear graph
+// markEndless looks for spawned work that has no end: that without a run, as long
+// as no other such work below it might be why (it may spawn work without an end,
+// which counts at any moment and so does not hinder). It says whether it marked
+// any; then the question has more productions.
+func (k *ask) markEndless(productive []bool) bool {
+	s := k.s
+	stuck := func(l int32) bool { return !productive[l] && s.e.g.nts[k.nts[l]].kind == spawned }
+	any := false
+	for l := range k.nts {
+		any = any || stuck(int32(l))
+	}
+	if !any {
+		return false
+	}
+	above := make([]bool, len(k.nts)) // a stuck one is in its component or below
+	k.components(func(int32) bool { return true }, func(int32) bool { return true }, func(comp []int32) {
+		below, has := false, false
+		for _, l := range comp {
+			has = has || stuck(l)
+			for p := k.prodStart[l]; p < k.prodStart[l+1]; p++ {
+				for _, b := range k.rhs(k.prods[p].id) {
+					// Members of the component are not set yet.
+					if u := s.cell(b).local - 1; u >= 0 && above[u] {
+						below = true
+					}
+				}
+			}
+		}
+		for _, l := range comp {
+			above[l] = below || has
+			if !below && stuck(l) {
+				s.endless[s.e.g.nts[k.nts[l]].of] = true
+			}
+		}
+	})
+	return true
+}
+
+// components calls f for every strongly connected component of the included
+// part under the productions in use, users after used (Tarjan, Depth-first search and linear graph
 // algorithms, 1972; with a stack of its own).
-func (k *ask) components(productive []bool, f func([]int32)) {
+func (k *ask) components(include func(local int32) bool, use func(prod int32) bool, f func([]int32)) {
 	n := len(k.nts)
 	index := make([]int32, n) // 0: not visited
 	low := make([]int32, n)
@@ -511,7 +560,7 @@ func (k *ask) components(productive []bool, f func([]int32)) {
 		frames = append(frames, frame{v: v, prod: k.prodStart[v]})
 	}
 	for root := range n {
-		if index[root] != 0 || !productive[root] {
+		if index[root] != 0 || !include(int32(root)) {
 			continue
 		}
 		visit(int32(root))
@@ -522,7 +571,7 @@ func (k *ask) components(productive []bool, f func([]int32)) {
 			for fr.prod < k.prodStart[v+1] {
 				pr := &k.prods[fr.prod]
 				rhs := k.rhs(pr.id)
-				if pr.miss != 0 {
+				if !use(fr.prod) {
 					fr.prod++
 					fr.pos = 0
 					continue

@@ -182,6 +182,36 @@ func TestEndlessWork(t *testing.T) {
 	}
 }
 
+// Work that starts itself anew never comes to rest, though every run of it ends;
+// what starts it can end all the same. Work that ends in a loss has ended.
+func TestWorkThatStartsItself(t *testing.T) {
+	b := pds.NewBuilder("n")
+	b.Start("run", "main")
+	b.Pop("run", "main", "back", pds.Spawns("run", "outer"), pds.Spawns("run", "loses"))
+	b.Pop("run", "outer", "back", pds.Adds("n", 10), pds.Spawns("run", "again"))
+	b.Pop("run", "again", "back", pds.Adds("n", -1), pds.Spawns("run", "again"))
+	b.Step("run", "loses", "run", "lost", pds.Adds("n", 100))
+	b.Stop("run", "lost", pds.Marked(pds.LossMark))
+	sys := b.Table()
+	e := New(sys, 0)
+	h := sys.Starts()[0]
+	heads, _ := e.Endless(h)
+	if want := []pds.Head{sys.Head("run", "again")}; !reflect.DeepEqual(heads, want) {
+		t.Errorf("endless %v, want %v", heads, want)
+	}
+	s := e.Solve(Question{Weights: []int64{1}})
+	if v := s.Greatest(h, all); v.String() != "110" {
+		t.Errorf("greatest %v, want 110", v)
+	}
+	if v := e.Solve(Question{Weights: []int64{-1}}).Greatest(h, all); v.Kind != Unbounded {
+		t.Errorf("least %v, want no bound", v)
+	}
+	g, err := e.Grammar(h, all, Question{})
+	if err != nil || !reflect.DeepEqual(g.Endless, heads) {
+		t.Errorf("%v: grammar lists %v", err, g.Endless)
+	}
+}
+
 func TestAlongPathFindsCause(t *testing.T) {
 	// Book and settle of the deferred unlock: after urgent nothing unlocks.
 	b := pds.NewBuilder("taken", "released")
