@@ -11,6 +11,8 @@ import (
 	"strings"
 	"testing"
 
+	"pathtally/frontend/load"
+
 	"golang.org/x/tools/go/ssa"
 )
 
@@ -91,7 +93,7 @@ func build(t *testing.T, name, src string) *built {
 		t.Fatal(err)
 	}
 	prog := ssa.NewProgram(fset, ssa.InstantiateGenerics|ssa.SanityCheckFunctions)
-	prog.SetNoReturn(IsNoReturn)
+	prog.SetNoReturn(func(fn *types.Func) bool { return load.NoReturn(fn) != load.Returns })
 	seen := map[*types.Package]bool{}
 	var create func(ps []*types.Package)
 	create = func(ps []*types.Package) {

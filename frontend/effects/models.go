@@ -5,8 +5,11 @@ package effects
 // functions end in code that is written in assembly or bound by linkname.
 
 import (
+	"fmt"
 	"go/types"
 	"strings"
+
+	"pathtally/frontend/load"
 
 	"golang.org/x/tools/go/ssa"
 )
@@ -22,53 +25,23 @@ type model struct {
 	nilIff   []int     // by result: parameter + 1 that is nil exactly if the result is, 0 none
 	joinsNil bool      // result 0 is nil iff all elements of the variadic parameter are
 	keeps    bool      // keeps its arguments
-	sameAs   []int     // by result: parameter + 1 that it equals, 0 none
 	noFlow   bool      // results reach nothing of the arguments
 }
 
-// noReturn lists the functions that no normal return leaves.
-var noReturn = map[string]Exit{
-	"os.Exit":        ExitsAll,
-	"syscall.Exit":   ExitsAll,
-	"runtime.Goexit": Goexits,
-
-	"log.Fatal":   ExitsAll, // prints, then os.Exit(1)
-	"log.Fatalf":  ExitsAll,
-	"log.Fatalln": ExitsAll,
-	"log.Panic":   Panics, // prints, then panics
-	"log.Panicf":  Panics,
-	"log.Panicln": Panics,
-
-	"(*log.Logger).Fatal":   ExitsAll,
-	"(*log.Logger).Fatalf":  ExitsAll,
-	"(*log.Logger).Fatalln": ExitsAll,
-	"(*log.Logger).Panic":   Panics,
-	"(*log.Logger).Panicf":  Panics,
-	"(*log.Logger).Panicln": Panics,
-
-	// The test's goroutine ends by runtime.Goexit.
-	"(*testing.common).FailNow": Goexits,
-	"(*testing.common).Fatal":   Goexits,
-	"(*testing.common).Fatalf":  Goexits,
-	"(*testing.common).SkipNow": Goexits,
-	"(*testing.common).Skip":    Goexits,
-	"(*testing.common).Skipf":   Goexits,
-	"(testing.TB).FailNow":      Goexits,
-	"(testing.TB).Fatal":        Goexits,
-	"(testing.TB).Fatalf":       Goexits,
-	"(testing.TB).SkipNow":      Goexits,
-	"(testing.TB).Skip":         Goexits,
-	"(testing.TB).Skipf":        Goexits,
+// exitOf translates what is known of functions that no normal return leaves.
+func exitOf(k load.NoReturnKind) Exit {
+	switch k {
+	case load.Returns:
+		return 0
+	case load.Exits:
+		return ExitsAll
+	case load.Goexits:
+		return Goexits
+	case load.Panics:
+		return Panics
+	}
+	panic(fmt.Sprintf("effects: unknown kind %v of functions that do not return", k))
 }
-
-// IsNoReturn says whether a call of fn never returns normally; it is fit for
-// ssa.Program.SetNoReturn.
-func IsNoReturn(fn *types.Func) bool { return NoReturnExit(fn) != 0 }
-
-// NoReturnExit says how a call of a function that never returns ends: the
-// process (ExitsAll), the goroutine (Goexits) or by a panic (Panics); 0 if the
-// function is none of the known ones.
-func NoReturnExit(fn *types.Func) Exit { return noReturn[fn.Origin().FullName()] }
 
 // purePackages hold functions that compute values from values: they store
 // nothing that outlives the call, and their results share no memory with
@@ -104,6 +77,10 @@ var known = map[string]model{
 	"context.WithDeadline":  {noWrites: true, nilness: []Nilness{NonNil, NonNil}},
 	"context.WithValue":     {noWrites: true, nilness: []Nilness{NonNil}},
 	"context.WithoutCancel": {noWrites: true, nilness: []Nilness{NonNil}},
+	// A copy of nil is nil, and of nothing else.
+	"bytes.Clone":  {noWrites: true, noCalls: true, nilIff: []int{1}},
+	"slices.Clone": {noWrites: true, noCalls: true, nilIff: []int{1}},
+	"maps.Clone":   {noWrites: true, noCalls: true, nilIff: []int{1}},
 	// Constructors that return the address of what they allocate.
 	"bytes.NewBuffer":       {noWrites: true, noCalls: true, nilness: []Nilness{NonNil}},
 	"bytes.NewBufferString": {noWrites: true, noCalls: true, nilness: []Nilness{NonNil}},
@@ -142,7 +119,7 @@ func modelOf(fn *ssa.Function) model {
 	if name == "" {
 		return model{}
 	}
-	if e, ok := noReturn[name]; ok {
+	if e := exitOf(load.NoReturn(fn.Object().(*types.Func))); e != 0 {
 		return model{known: true, exits: e, noWrites: true, noFlow: true}
 	}
 	if m, ok := known[name]; ok {

@@ -237,10 +237,6 @@ func (t *Table) resultsOf(n *node) []Result {
 			if j < len(m.nilIff) && m.nilIff[j] != 0 {
 				rs[j].nilIff = 1 << uint(m.nilIff[j]-1)
 			}
-			if j < len(m.sameAs) && m.sameAs[j] != 0 {
-				rs[j].Param = m.sameAs[j] - 1
-				rs[j].nilIff = 1 << uint(rs[j].Param)
-			}
 		}
 		return rs
 	}
