@@ -139,3 +139,20 @@ func BenchmarkSaturate(b *testing.B) {
 		b.ReportMetric(float64(e.steps), "steps")
 	}
 }
+
+// BenchmarkWitness asks for a path from each of many heads of one system, as a
+// report with many findings does.
+func BenchmarkWitness(b *testing.B) {
+	for range b.N {
+		s := New(loops(20000), 0).Solve(Question{Weights: []int64{1, 0}, AnyMoment: true})
+		steps := 0
+		for i := range 1000 {
+			p, ok := s.Witness(pds.Head{State: 1, Symbol: pds.SymbolID(1 + 80*i)}, all, 0)
+			if !ok {
+				b.Fatal("no witness")
+			}
+			steps += len(p.Steps)
+		}
+		b.ReportMetric(float64(steps), "steps")
+	}
+}

@@ -334,6 +334,9 @@ func randomSystem(r *rand.Rand, spawns int) *pds.Table {
 		}
 		if r.IntN(10) < spawns {
 			opts = append(opts, pds.Spawns(q(), g()))
+			if r.IntN(4) == 0 {
+				opts = append(opts, pds.Spawns(q(), g()))
+			}
 		}
 		switch k := r.IntN(12); {
 		case k == 0:
@@ -450,6 +453,9 @@ func check(t *testing.T, sys *pds.Table, q Question, limit int, wide bool) Value
 			fail("bound %d: witness of %d steps, shortest %d: %+v", bound, p.Len(), least, p)
 		}
 		checkAlong(s, p, accept, v, o, fail)
+	}
+	if err := s.Sanity(); err != nil {
+		fail("sanity: %v", err)
 	}
 	return v
 }

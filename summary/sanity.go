@@ -91,3 +91,51 @@ func (e *Engine) Sanity() error {
 	}
 	return errors.Join(errs...)
 }
+
+// Sanity checks what a solution knows and reports everything that is wrong: one
+// more round must change nothing. A finite value is reached by its best production
+// and passed by none; what has no run has a right symbol without one in every
+// production; what is unbounded uses something unbounded. Cost: linear.
+func (s *Solution) Sanity() error {
+	var errs []error
+	e := s.e
+	moment := s.q.moment()
+	for i := range e.g.nts {
+		a := NT(i)
+		if i/pageSize >= len(s.pages) || s.pages[i/pageSize] == nil {
+			continue
+		}
+		c := s.cell(a)
+		if c.local != 0 {
+			errs = append(errs, fmt.Errorf("%s: left in the middle of a question", e.name(a)))
+		}
+		if c.status == unsolved || moment && e.g.nts[a].kind == spawned {
+			continue
+		}
+		var v Value
+		v.Kind = NoPath
+		start, end := e.productions(a)
+		for p := start; p < end; p++ {
+			pr := &e.g.prods[p]
+			if !s.live(pr) {
+				continue
+			}
+			t := Value{Finite, s.prodWeight(pr)}
+			for _, b := range e.g.rhs[pr.rhs : int(pr.rhs)+int(pr.n)] {
+				if s.cell(b).status == unsolved {
+					errs = append(errs, fmt.Errorf("%s: %s below it is not solved", e.name(a), e.name(b)))
+					continue
+				}
+				t = plus(t, s.value(b))
+			}
+			v = best(v, t)
+			if c.status == finite && p == c.best && t.String() != s.value(a).String() {
+				errs = append(errs, fmt.Errorf("%s: %v, but its best production gives %v", e.name(a), s.value(a), t))
+			}
+		}
+		if got := s.value(a); got.String() != v.String() {
+			errs = append(errs, fmt.Errorf("%s: %v, one more round gives %v", e.name(a), got, v))
+		}
+	}
+	return errors.Join(errs...)
+}

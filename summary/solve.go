@@ -155,7 +155,8 @@ type Solution struct {
 	// pumps: from an unbounded nonterminal back to itself with a gain.
 	pumps map[NT][]pumpStep
 	// endless: spawned work that can never end.
-	endless map[node]bool
+	endless  map[node]bool
+	searches map[int64]*search // by half-width; -1: weights ignored
 	// exact: look for pumps after every improvement, whatever it costs.
 	exact bool
 	// allowance of every component, see pumpAllowance; tests lower it.
@@ -168,7 +169,7 @@ func (e *Engine) Solve(q Question) *Solution {
 	if len(q.Weights) != e.sys.NumCounts() {
 		panic(fmt.Sprintf("summary: solve: %d weights for %d counts", len(q.Weights), e.sys.NumCounts()))
 	}
-	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, endless: map[node]bool{}, allowance: pumpAllowance}
+	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, endless: map[node]bool{}, searches: map[int64]*search{}, allowance: pumpAllowance}
 	s.q.Weights = slices.Clone(q.Weights)
 	if q.TakeDoubts {
 		s.doubt = 1

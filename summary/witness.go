@@ -19,6 +19,9 @@ var ErrExhausted = errors.New("the budget ran out")
 // windows are the half-widths of weight tried by Witness, smallest first.
 var windows = []int64{8, 64}
 
+// narrow is the half-width for parts that are too large for windows.
+const narrow = 2
+
 // maxItems bounds the items (nonterminals times weights) of one search.
 const maxItems = 6 << 20
 
@@ -61,7 +64,10 @@ func (s *Solution) FindWitness(h pds.Head, accept func(pds.StateID) bool, bound 
 		}
 		w := s.search(live, k)
 		if w == nil {
-			break
+			// A very large part: at least the nearest windows.
+			if w = s.search(live, narrow); w == nil || bound >= narrow {
+				break
+			}
 		}
 		if t, length, ok := w.run(live, bound); ok {
 			if length > MaxPath {
@@ -90,17 +96,18 @@ func (s *Solution) FindWitness(h pds.Head, accept func(pds.StateID) bool, bound 
 // Dijkstra's algorithm, 1977) on items (nonterminal, weight of the run within
 // -k..k), by number of steps. Right sides are made binary first.
 type search struct {
-	s     *Solution
-	k     int64 // half-width; -1: weights are ignored
-	width int64 // items per nonterminal
-	nts   []NT  // -1: a rest of a right side
-	level []uint8
-	local map[NT]int32
-	prods []searchProd
-	uses  [][]int32 // per local nonterminal: productions with it on the right side
-	items []searchItem
-	done  [][]int32 // per local nonterminal: its settled weights, shifted by k
-	queue searchQueue
+	s      *Solution
+	k      int64 // half-width
+	ignore bool  // weights count 0; k is 0
+	width  int64 // items per nonterminal
+	nts    []NT  // -1: a rest of a right side
+	level  []uint8
+	local  map[NT]int32
+	prods  []searchProd
+	uses   [][]int32 // per local nonterminal: productions with it on the right side
+	items  []searchItem
+	done   [][]int32 // per local nonterminal: its settled weights, shifted by k
+	queue  searchQueue
 }
 
 type searchProd struct {
@@ -139,33 +146,48 @@ func (q *searchQueue) Pop() any {
 	return x
 }
 
-// search prepares the productive part below the targets; nil if it is too large
-// for the width. k < 0 ignores weights.
+// search gives the search of a width, grown by the productive part below the
+// targets; nil if that is too large. k < 0 ignores weights. What was settled for
+// earlier targets stays: the shortest runs of an item do not depend on who asks.
 func (s *Solution) search(targets []NT, k int64) *search {
-	w := &search{s: s, k: k, width: 2*k + 1, local: map[NT]int32{}}
-	if k < 0 {
-		w.k, w.width = 0, 1
+	if w := s.searches[k]; w != nil && w.grow(targets) {
+		return w
 	}
-	ignore := k < 0
-	add := func(a NT, level uint8) int32 {
-		w.nts = append(w.nts, a)
-		w.level = append(w.level, level)
-		w.uses = append(w.uses, nil)
-		return int32(len(w.nts) - 1)
+	w := &search{s: s, k: max(k, 0), ignore: k < 0, local: map[NT]int32{}}
+	w.width = 2*w.k + 1
+	delete(s.searches, k)
+	if !w.grow(targets) {
+		return nil
 	}
-	e := s.e
+	s.searches[k] = w
+	return w
+}
+
+func (w *search) add(a NT, level uint8) int32 {
+	w.nts = append(w.nts, a)
+	w.level = append(w.level, level)
+	w.uses = append(w.uses, nil)
+	w.done = append(w.done, nil)
+	return int32(len(w.nts) - 1)
+}
+
+// grow takes in the part below the targets; false if there is too much of it, and
+// then the search is of no more use.
+func (w *search) grow(targets []NT) bool {
+	s, e := w.s, w.s.e
 	var order []int32
 	take := func(a NT) int32 {
 		if l, ok := w.local[a]; ok {
 			return l
 		}
 		level := uint8(0)
-		if k := e.g.nts[a].kind; k == spawned {
+		switch e.g.nts[a].kind {
+		case spawned:
 			level = 2
-		} else if k == begun {
+		case begun:
 			level = 1
 		}
-		l := add(a, level)
+		l := w.add(a, level)
 		w.local[a] = l
 		order = append(order, l)
 		return l
@@ -173,10 +195,26 @@ func (s *Solution) search(targets []NT, k int64) *search {
 	for _, a := range targets {
 		take(a)
 	}
+	first := len(w.prods)
+	put := func(n num, p searchProd) bool {
+		if w.ignore {
+			n = num{}
+		}
+		// What is below the window three times over nothing brings back into it.
+		if n.cmp(num{small: -3 * w.k}) < 0 {
+			return false
+		}
+		if n.cmp(num{small: 3 * w.k}) > 0 {
+			n = num{small: 3 * w.k}
+		}
+		p.w = n.small
+		w.prods = append(w.prods, p)
+		return true
+	}
 	moment := s.q.moment()
 	for i := 0; i < len(order); i++ {
 		if int64(len(w.nts))*w.width > maxItems {
-			return nil
+			return false
 		}
 		l := order[i]
 		a := w.nts[l]
@@ -184,13 +222,7 @@ func (s *Solution) search(targets []NT, k int64) *search {
 			continue
 		}
 		if moment && e.g.nts[a].kind == spawned {
-			c := s.cell(a).val
-			if ignore {
-				c = num{}
-			}
-			if c.big == nil && (ignore || c.small >= -3*k) {
-				w.prods = append(w.prods, searchProd{w: min(c.small, 3*w.k), id: -2, lhs: l, a: -1, b: -1})
-			}
+			put(s.cell(a).val, searchProd{id: -2, lhs: l, a: -1, b: -1})
 			continue
 		}
 		start, end := e.productions(a)
@@ -200,62 +232,69 @@ func (s *Solution) search(targets []NT, k int64) *search {
 			if !s.live(pr) {
 				continue
 			}
-			n := s.prodWeight(pr)
-			if ignore {
-				n = num{}
-			}
-			if n.big != nil {
-				continue
-			}
 			rhs := e.g.rhs[pr.rhs : int(pr.rhs)+int(pr.n)]
 			for _, b := range rhs {
 				if s.value(b).Kind == NoPath {
 					continue next
 				}
 			}
-			if !ignore && n.small < -3*k {
-				continue // nothing brings it back into the window
-			}
-			n.small = min(n.small, 3*k)
-			if ignore {
-				n.small = 0
-			}
-			sp := searchProd{w: n.small, id: p, lhs: l, a: -1, b: -1}
+			sp := searchProd{id: p, lhs: l, a: -1, b: -1}
 			if pr.takesStep() {
 				sp.length = 1
 			}
 			if len(rhs) > 0 {
 				sp.a = take(rhs[0])
 			}
-			for i := 1; i < len(rhs); i++ {
-				b := take(rhs[i])
-				if i == len(rhs)-1 {
-					sp.b = b
+			if len(rhs) == 2 {
+				sp.b = take(rhs[1])
+			}
+			if len(rhs) > 2 {
+				// A rest stands for rhs[1:], and so on; levels fall along the rests.
+				sp.b = w.add(-1, uint8(min(255, 2+len(rhs))))
+			}
+			if !put(s.prodWeight(pr), sp) || len(rhs) <= 2 {
+				continue
+			}
+			rest := sp.b
+			for i := 1; ; i++ {
+				sp := searchProd{id: -1, lhs: rest, a: take(rhs[i])}
+				if i == len(rhs)-2 {
+					sp.b = take(rhs[i+1])
+					put(num{}, sp)
 					break
 				}
-				// A rest stands for rhs[i:]; levels fall along the rests.
-				rest := add(-1, uint8(min(255, 3+len(rhs)-i)))
-				sp.b = rest
-				w.prods = append(w.prods, sp)
-				sp = searchProd{id: -1, lhs: rest, a: b, b: -1}
+				sp.b = w.add(-1, uint8(min(255, 2+len(rhs)-i)))
+				put(num{}, sp)
+				rest = sp.b
 			}
-			w.prods = append(w.prods, sp)
 		}
 	}
 	if int64(len(w.nts))*w.width > maxItems {
-		return nil
+		return false
 	}
-	for i, p := range w.prods {
-		if p.a >= 0 {
-			w.uses[p.a] = append(w.uses[p.a], int32(i))
+	w.items = append(w.items, make([]searchItem, int64(len(w.nts))*w.width-int64(len(w.items)))...)
+	for i := first; i < len(w.prods); i++ {
+		p := &w.prods[i]
+		if p.a < 0 {
+			w.fire(int32(i), 0, 0)
+			continue
 		}
+		w.uses[p.a] = append(w.uses[p.a], int32(i))
 		if p.b >= 0 && p.b != p.a {
 			w.uses[p.b] = append(w.uses[p.b], int32(i))
 		}
+		// What was settled before must be offered now.
+		for _, wa := range w.done[p.a] {
+			if p.b < 0 {
+				w.fire(int32(i), int64(wa)-w.k, 0)
+				continue
+			}
+			for _, wb := range w.done[p.b] {
+				w.fire(int32(i), int64(wa)-w.k, int64(wb)-w.k)
+			}
+		}
 	}
-	w.items = make([]searchItem, int64(len(w.nts))*w.width)
-	w.done = make([][]int32, len(w.nts))
-	return w
+	return true
 }
 
 func (w *search) offer(p int32, weight, steps int64, wa, wb int64) {
@@ -301,38 +340,37 @@ func (w *search) steps(l int32, weight int64) int64 {
 }
 
 // run settles items until one of a target passes the bound; of the shortest it
-// takes the first target, then the least weight. tree builds its derivation.
+// takes the first target, then the least weight. build makes its derivation.
 func (w *search) run(targets []NT, bound int64) (build func() *tree, length int64, ok bool) {
 	rank := map[int32]int{}
+	bestItem, bestKey, bestRank := int64(-1), int64(0), 0
+	better := func(at int64) {
+		l := int32(at / w.width)
+		r, is := rank[l]
+		if !is || at%w.width-w.k <= bound {
+			return
+		}
+		key := -w.items[at].key
+		if bestItem < 0 || key < bestKey || key == bestKey && (r < bestRank || r == bestRank && at < bestItem) {
+			bestItem, bestKey, bestRank = at, key, r
+		}
+	}
 	for i, a := range targets {
-		rank[w.local[a]] = i
-	}
-	for p := range w.prods {
-		pr := &w.prods[p]
-		if pr.a < 0 {
-			w.fire(int32(p), 0, 0)
+		l := w.local[a]
+		rank[l] = i
+		for _, weight := range w.done[l] {
+			better(int64(l)*w.width + int64(weight))
 		}
 	}
-	var bestItem, bestKey int64 = -1, 0
-	bestRank := 0
-	for w.queue.Len() > 0 {
+	for w.queue.Len() > 0 && (bestItem < 0 || w.queue[0].key <= bestKey) {
 		x := heap.Pop(&w.queue).(searchEntry)
-		if bestItem >= 0 && x.key > bestKey {
-			break
-		}
 		it := &w.items[x.item]
 		if it.key != x.key {
 			continue
 		}
 		it.key = -it.key
-		l := int32(x.item / w.width)
-		weight := x.item%w.width - w.k
-		if r, isTarget := rank[l]; isTarget && weight > bound {
-			if bestItem < 0 || r < bestRank {
-				bestItem, bestKey, bestRank = x.item, x.key, r
-			}
-		}
-		w.settle(l, weight)
+		better(x.item)
+		w.settle(int32(x.item/w.width), x.item%w.width-w.k)
 	}
 	if bestItem < 0 {
 		return nil, 0, false

@@ -298,14 +298,19 @@ func TestOrderOfQuestions(t *testing.T) {
 	sys := recursion(30)
 	heads := []pds.Head{{State: 1, Symbol: 1}, {State: 1, Symbol: 41}, {State: 1, Symbol: 10}, {State: 1, Symbol: 78}}
 	paths := map[pds.Head]string{}
-	for round := range 2 {
+	for round := range 3 {
 		e := New(sys, 0)
+		shared := e.Solve(Question{Weights: []int64{1, 0}, AnyMoment: true})
 		for i := range heads {
 			h := heads[i]
 			if round == 1 {
 				h = heads[len(heads)-1-i]
 			}
-			p, ok := e.Solve(Question{Weights: []int64{1, 0}, AnyMoment: true}).Witness(h, all, 2)
+			s := e.Solve(Question{Weights: []int64{1, 0}, AnyMoment: true})
+			if round == 2 {
+				s = shared
+			}
+			p, ok := s.Witness(h, all, 2)
 			if !ok {
 				t.Fatalf("%v: no witness", h)
 			}
