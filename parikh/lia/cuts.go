@@ -10,15 +10,16 @@ import (
 // in why: v >= c, or v <= c when upper is set.
 type cut struct {
 	v     int32
+	row   bool // the row of v was made for this cut
 	c     num
 	upper bool
 	why   []z.Lit // ascending; empty: holds always
 }
 
 const (
-	cutsPerRound = 8
-	cutLength    = 150 // terms of a cut at most
-	cutBits      = 40  // bits of a coefficient at most
+	cutsPerRound = 4
+	cutLength    = 60 // terms of a cut at most
+	cutBits      = 24 // bits of a coefficient at most; 40 made pivots 1000 times dearer
 )
 
 // addCuts makes mixed-integer Gomory cuts (Gomory, An algorithm for the mixed
@@ -163,7 +164,9 @@ func (s *Solver) gomory(b int32) (cut, bool) {
 	} else {
 		c = c.ceil()
 	}
-	return cut{v: s.structuralForm(ts), c: c, upper: upper, why: s.literals(why)}, true
+	n := len(sx.rows)
+	v := s.structuralForm(ts)
+	return cut{v: v, row: len(sx.rows) > n, c: c, upper: upper, why: s.literals(why)}, true
 }
 
 // addStructural appends g·x_j in structural variables.
@@ -191,4 +194,27 @@ func (s *Solver) structuralForm(ts []ent) int32 {
 		out[i] = term{s.varOf(t.i), t.c}
 	}
 	return s.form(mergeTerms(out))
+}
+
+// dropCuts forgets all cuts and takes the rows made for them out of the simplex,
+// which must be free of assumed bounds. Old cuts make every pivot dearer and
+// rarely serve the next question.
+func (s *Solver) dropCuts() {
+	gone := map[int32]bool{}
+	for _, c := range s.cuts {
+		// An atom may have come to use the form since.
+		if c.row && len(s.byVar[c.v]) == 0 {
+			gone[c.v] = true
+		}
+	}
+	s.cuts = s.cuts[:0]
+	if len(gone) == 0 {
+		return
+	}
+	for key, v := range s.forms {
+		if gone[v] {
+			delete(s.forms, key)
+		}
+	}
+	s.sx.dropRows(gone)
 }

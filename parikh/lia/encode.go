@@ -46,6 +46,7 @@ func (s *Solver) flat(l Lin) ([]term, num) {
 		if !ok {
 			q = s.newVar("", nil, nil)
 			s.modVars[key] = q
+			s.quotients = append(s.quotients, quotient{q, t, tk, m.m})
 			up := rem()
 			down := make([]term, len(up))
 			for i, x := range up {
@@ -61,6 +62,48 @@ func (s *Solver) flat(l Lin) ([]term, num) {
 		k = k.add(tk.mul(m.c))
 	}
 	return mergeTerms(all), k
+}
+
+// quotient is q = floor((Σ of + k) / m).
+type quotient struct {
+	q  Var
+	of []term
+	k  num
+	m  num
+}
+
+// boundQuotients gives those quotients bounds whose dividend is bounded, which
+// spares the search an infinite direction. Others are kept for later facts.
+func (s *Solver) boundQuotients() {
+	keep := s.quotients[:0]
+	for _, d := range s.quotients {
+		if s.substOn[d.q] {
+			continue
+		}
+		ts, k := s.resolve(d.of, d.k)
+		lo, hi, loOK, hiOK := k, k, true, true
+		for _, t := range ts {
+			v := s.svar(t.v)
+			l, h := s.baseLo(v), s.baseHi(v)
+			if t.c.sign() < 0 {
+				l, h = h, l
+			}
+			if loOK = loOK && l != nil; loOK {
+				lo = lo.add(l.mul(t.c))
+			}
+			if hiOK = hiOK && h != nil; hiOK {
+				hi = hi.add(h.mul(t.c))
+			}
+		}
+		q := s.svar(d.q)
+		if loOK && s.sx.setLower(q, lo.div(d.m).floor(), 0) != nil || hiOK && s.sx.setUpper(q, hi.div(d.m).floor(), 0) != nil {
+			s.dead = true
+		}
+		if !loOK || !hiOK {
+			keep = append(keep, d)
+		}
+	}
+	s.quotients = keep
 }
 
 func formKey(ts []term) string {

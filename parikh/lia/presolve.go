@@ -83,6 +83,7 @@ func (s *Solver) flushSide() {
 			s.addFact(r)
 		}
 	}
+	s.boundQuotients()
 	s.sx.commit()
 }
 

@@ -28,6 +28,7 @@ var ErrStuck = errors.New("lia: the lemmas returned by OnModel do not exclude th
 func (s *Solver) run(ctx context.Context, assumptions []Formula) (Result, error) {
 	defer s.sx.undoTo(0)
 	s.lastLits = nil
+	s.dropCuts()
 	var assume []z.Lit
 	encodeAll := func() {
 		s.handOver()

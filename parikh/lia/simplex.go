@@ -552,3 +552,61 @@ func (s *simplex) sanity() error {
 	}
 	return nil
 }
+
+// dropRows removes the rows of the given unbounded slacks. Their variables stay,
+// free and in no row, so that numbers do not change.
+func (s *simplex) dropRows(gone map[int32]bool) {
+	s.settle()
+	// A removed slack must be basic: then the other basic variables are a basis of
+	// the other rows.
+	for v := range s.cols {
+		if j := int32(v); gone[j] && s.pos[j] < 0 {
+			s.column(j)
+			at := int32(-1)
+			for _, p := range s.w.idx {
+				if !s.w.val[p].isZero() && !gone[s.basic[p]] && (at < 0 || p < at) {
+					at = p
+				}
+			}
+			if at < 0 {
+				panic("lia: dropRows: a nonbasic slack depends on removed rows only")
+			}
+			s.swap(at, j)
+		}
+	}
+	renumber := make([]int32, len(s.rows))
+	var rows [][]ent
+	for i, row := range s.rows {
+		if slack := row[len(row)-1].i; gone[slack] {
+			renumber[i] = -1
+			s.cols[slack] = nil
+			s.pos[slack] = -1
+			s.val[slack] = num{}
+		} else {
+			renumber[i] = int32(len(rows))
+			rows = append(rows, row)
+		}
+	}
+	var basic []int32
+	for _, v := range s.basic {
+		if !gone[v] {
+			basic = append(basic, v)
+		}
+	}
+	for v, col := range s.cols {
+		k := 0
+		for _, e := range col {
+			if r := renumber[e.i]; r >= 0 {
+				col[k] = ent{r, e.c}
+				k++
+			}
+		}
+		s.cols[v] = col[:k]
+	}
+	s.rows, s.basic = rows, basic
+	s.w.clear()
+	s.y.clear()
+	s.fac.byPivot = s.fac.byPivot[:len(rows)]
+	s.fac.byRow = s.fac.byRow[:len(rows)]
+	s.refactor()
+}

@@ -17,7 +17,7 @@ type Options struct {
 	MaxPivots  int64 // simplex pivots; default 2,000,000
 	MaxNodes   int64 // branching steps; default 100,000
 	MaxClauses int64 // learnt clauses; default 100,000
-	MaxCuts    int   // cuts over the life of the solver; default 400
+	MaxCuts    int   // cuts; default 24, since cuts of cuts grow ugly fast
 
 	// MaxBoundBits ends the widening of the search box: boxes of 10, 20, 40, ...
 	// bits are tried up to this size, then the search goes on without a box.
@@ -43,7 +43,7 @@ func (o *Options) defaults() {
 	set(&o.MaxNodes, 100_000)
 	set(&o.MaxClauses, 100_000)
 	if o.MaxCuts == 0 {
-		o.MaxCuts = 400
+		o.MaxCuts = 24
 	}
 	if o.MaxBoundBits == 0 {
 		o.MaxBoundBits = 1280
@@ -103,13 +103,14 @@ type Solver struct {
 	onModel func(Model) ([]Formula, error)
 
 	// Presolve.
-	prepared bool
-	dead     bool           // the assertions have no model
-	subst    [][]term       // by Var: the form that replaces it
-	substK   []num          // by Var: its constant
-	substOn  []bool         // by Var
-	modVars  map[string]Var // quotients of remainders, by form and modulus
-	side     []hardRow      // definitions of remainders not yet handed over
+	prepared  bool
+	dead      bool           // the assertions have no model
+	subst     [][]term       // by Var: the form that replaces it
+	substK    []num          // by Var: its constant
+	substOn   []bool         // by Var
+	modVars   map[string]Var // quotients of remainders, by form and modulus
+	quotients []quotient     // those not yet bounded on both sides
+	side      []hardRow      // definitions of remainders not yet handed over
 
 	// Arithmetic.
 	sx         *simplex
