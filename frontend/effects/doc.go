@@ -74,10 +74,10 @@
 // # Assumptions
 //
 //   - A pointer made from an unsafe.Pointer stores only objects of its own type.
-//   - Code without body writes only what its arguments reach and what it can
-//     name (exported fields, fields of packages without loaded bodies), calls
-//     only function values and interface methods that it is handed, keeps
-//     nothing (unless modelled) but in its results, and does not panic.
+//   - Code without body writes only what its arguments reach over exported
+//     fields, elements and pointers (in a package with bodies, its own fields
+//     too), calls only function values and interface methods that it is handed,
+//     keeps nothing (unless modelled) but in its results, and does not panic.
 //   - Code out of sight does not assign to variables of other packages, and a
 //     variable of type error named Err... or EOF in such a package is not nil.
 //   - Run-time panics (nil, index, division) are no explicit panics.

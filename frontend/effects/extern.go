@@ -64,8 +64,11 @@ func (s *scanner) callbackMethods(st *site, handed ssa.Value, typ types.Type, if
 	}
 }
 
-// reachOf returns what code of pkg may write through a value of type typ. Fields
-// that only packages with loaded bodies can name are out of its reach.
+// reachOf returns what code of pkg may write through a value of type typ, as far
+// as loaded bodies can tell: what is reached over exported fields. Unexported
+// fields of packages without bodies are nobody's business here (no loaded body
+// can name them), and those of packages with bodies only their own code writes.
+// That something is written at all shows in the cell of the object.
 func (t *Table) reachOf(pkg *types.Package, typ types.Type) reach {
 	key := reachKey{pkg, t.places.typeID(typ)}
 	if r, ok := t.reaches[key]; ok {
@@ -76,7 +79,7 @@ func (t *Table) reachOf(pkg *types.Package, typ types.Type) reach {
 	var walk func(typ types.Type, depth int)
 	var pointee func(typ types.Type, depth int)
 	writable := func(f *types.Var) bool {
-		return f.Exported() || f.Pkg() == pkg || f.Pkg() == nil || !t.bodies[f.Pkg()]
+		return f.Exported() || f.Pkg() == pkg && t.bodies[pkg]
 	}
 	add := func(p placeID, depth int) {
 		if depth <= 1 {

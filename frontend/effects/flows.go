@@ -162,6 +162,9 @@ func blindFlows(n *node) []Flow {
 			fl[i].Results = ^uint64(0)
 		}
 		fl[i].Kept = m.keeps
+		if m.stores && i > 0 {
+			fl[i].Roots |= flowBit(0)
+		}
 	}
 	return fl
 }
@@ -169,7 +172,7 @@ func blindFlows(n *node) []Flow {
 func (s *flowSolver) solve(n *node) (fl []Flow, outside [2]Flow) {
 	s.n = n
 	fn := n.fn
-	clear(s.index)
+	s.index = emptied(s.index)
 	s.holds = append(s.holds[:0], 1<<globalBit, 1<<keptBit)
 	s.stored = append(s.stored[:0], 0, 0)
 	s.edges, s.puts = s.edges[:0], s.puts[:0]

@@ -25,6 +25,7 @@ type model struct {
 	nilIff   []int     // by result: parameter + 1 that is nil exactly if the result is, 0 none
 	joinsNil bool      // result 0 is nil iff all elements of the variadic parameter are
 	keeps    bool      // keeps its arguments
+	stores   bool      // stores its arguments into what the receiver reaches
 	noFlow   bool      // results reach nothing of the arguments
 }
 
@@ -100,17 +101,27 @@ var known = map[string]model{
 	"regexp.MustCompile":    {noWrites: true, noCalls: true, nilness: []Nilness{NonNil}},
 	"log.New":               {noWrites: true, noCalls: true, nilness: []Nilness{NonNil}},
 	"log.Default":           {noWrites: true, noCalls: true, nilness: []Nilness{NonNil}},
-	// Keepers: the argument stays behind in a structure of the callee.
-	"(*sync.Pool).Put":                 {keeps: true, noCalls: true},
-	"(*sync.Map).Store":                {keeps: true, noCalls: true},
-	"(*sync.Map).LoadOrStore":          {keeps: true, noCalls: true},
-	"(*sync/atomic.Value).Store":       {keeps: true, noCalls: true},
-	"runtime.SetFinalizer":             {keeps: true, noWrites: true, noCalls: true},
-	"(*container/list.List).PushBack":  {keeps: true, noCalls: true},
-	"(*container/list.List).PushFront": {keeps: true, noCalls: true},
-	"net/http.Handle":                  {keeps: true, noWrites: true, noCalls: true},
-	"net/http.HandleFunc":              {keeps: true, noWrites: true, noCalls: true},
-	"os/signal.Notify":                 {keeps: true, noWrites: true, noCalls: true},
+	// The argument stays behind in the receiver.
+	"(*container/list.List).PushBack":          {stores: true, noCalls: true, nilness: []Nilness{NonNil}},
+	"(*container/list.List).PushFront":         {stores: true, noCalls: true, nilness: []Nilness{NonNil}},
+	"(*sync.Map).Store":                        {stores: true, noCalls: true},
+	"(*sync.Map).LoadOrStore":                  {stores: true, noCalls: true},
+	"(*sync.Map).Swap":                         {stores: true, noCalls: true},
+	"(*sync.Pool).Put":                         {stores: true, noCalls: true},
+	"(*sync/atomic.Value).Store":               {stores: true, noCalls: true},
+	"(*sync/atomic.Value).Swap":                {stores: true, noCalls: true},
+	"(*sync/atomic.Pointer[T]).Store":          {stores: true, noCalls: true},
+	"(*sync/atomic.Pointer[T]).Swap":           {stores: true, noCalls: true},
+	"(*sync/atomic.Pointer[T]).CompareAndSwap": {stores: true, noCalls: true},
+	"(*bufio.Reader).Reset":                    {stores: true, noCalls: true},
+	"(*bufio.Writer).Reset":                    {stores: true, noCalls: true},
+	"(*log.Logger).SetOutput":                  {stores: true, noCalls: true},
+	// The argument stays behind in variables of the callee's package.
+	"runtime.SetFinalizer": {keeps: true, noWrites: true, noCalls: true},
+	"net/http.Handle":      {keeps: true, noWrites: true, noCalls: true},
+	"net/http.HandleFunc":  {keeps: true, noWrites: true, noCalls: true},
+	"os/signal.Notify":     {keeps: true, noWrites: true, noCalls: true},
+	"log.SetOutput":        {keeps: true, noWrites: true, noCalls: true},
 }
 
 // modelOf returns what is known of fn without looking at its body.

@@ -31,8 +31,8 @@ func (t *Table) scanBody(n *node) {
 	s := &t.scan
 	fn := n.fn
 	s.t, s.n, s.fn = t, n, fn
-	clear(s.origin)
-	clear(s.params)
+	s.origin = emptied(s.origin)
+	s.params = emptied(s.params)
 	s.any, s.loads = s.any[:0], s.loads[:0]
 	s.rel = s.rel[:0]
 	for i, p := range fn.Params {
@@ -286,7 +286,7 @@ func (s *scanner) originOf(v ssa.Value) mask {
 		return m
 	}
 	var m mask
-	clear(s.visited)
+	s.visited = emptied(s.visited)
 	s.todo = append(s.todo[:0], v)
 	push := func(v ssa.Value) {
 		if !s.visited[v] {
@@ -471,4 +471,14 @@ func (s *scanner) builtin(instr ssa.CallInstruction, b *ssa.Builtin) {
 	default:
 		panic(fmt.Sprintf("effects: %s: unknown builtin %s", s.fn, b.Name()))
 	}
+}
+
+// emptied returns an empty map: m again unless it is large, since emptying costs
+// as much as m has ever held.
+func emptied[K comparable, V any](m map[K]V) map[K]V {
+	if len(m) > 256 {
+		return map[K]V{}
+	}
+	clear(m)
+	return m
 }

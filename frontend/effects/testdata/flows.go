@@ -55,7 +55,7 @@ func indirect(n *N) *N {
 // want borrow !flow
 func borrow(f *os.File) { f.Close() }
 
-// want pool flow p1: kept
+// want pool flow p1: p0
 func pool(p *sync.Pool, n *N) { p.Put(n) }
 
 // want number !flow
