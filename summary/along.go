@@ -173,7 +173,7 @@ func (c *completer) stepValue(rule int32) Value {
 	v := Value{Finite, w}
 	for _, h := range s.e.rules[rule].Spawn {
 		a := s.e.nt(spawned, s.e.nodeOf[h])
-		if s.q.moment() {
+		if s.q.leastWork() {
 			if s.cell(a).status == unsolved {
 				s.constant(a)
 			}

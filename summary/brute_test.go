@@ -258,7 +258,7 @@ func (o *oracle) runs(h pds.Head, limit int, mode oracleMode) map[outcome]int {
 							continue
 						}
 						sub := mode
-						if o.endless[s] {
+						if o.endless[s] || o.q.Prefixes {
 							sub = anyCut
 						}
 						for y, m := range o.runs(s, limit-l-n, sub) {
@@ -497,7 +497,10 @@ func TestSpawnedAgainstEnumeration(t *testing.T) {
 		if !strings.Contains(sys.String(), "spawn") {
 			continue
 		}
-		for i, q := range questions(r) {
+		qs := questions(r)
+		qs = append(qs, Question{Weights: qs[0].Weights, Prefixes: true}, Question{Weights: qs[0].Weights, AnyMoment: true, Prefixes: true},
+			Question{Weights: qs[0].Weights, StopMarks: 2, Prefixes: true, TakeDoubts: true})
+		for i, q := range qs {
 			if ok := t.Run(fmt.Sprintf("seed %d, question %d", seed, i), func(t *testing.T) { kinds[check(t, sys, q, 6, seed%2 == 0).Kind]++ }); !ok {
 				return
 			}

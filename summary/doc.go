@@ -27,8 +27,9 @@
 //     C[q g r]  from ⟨q, g⟩ until g is popped in r      closed
 //     O[q g]    from ⟨q, g⟩, stopped before g is popped open
 //     K, P      like C and O, stopped anywhere, spawned work too
-//     S[q g]    spawned work that has ended: C[q g r] for every r, or B[q g] if
-//     there is none
+//     L[q g]    from ⟨q, g⟩, stopped before a loss
+//     S[q g]    spawned work that has ended: C[q g r] for any r, L[q g], or B[q g]
+//     if it can never end
 //     B[q g]    spawned work stopped anywhere: P[q g] or K[q g r]
 //
 //     ⟨q, g⟩ → ⟨r, ε⟩        C[q g r] → e
@@ -59,7 +60,8 @@
 // ends count it by totals when it has ended; work that can never end counts at any
 // moment of it, which [Engine.Endless] lists since it is an assumption. Questions
 // about moments count the least that any of its prefixes weighs: its events may or
-// may not have happened, whichever keeps the claim. Order between a run and what
+// may not have happened, whichever keeps the claim. Question.Prefixes lets it count
+// at any prefix, whichever breaks the claim. Order between a run and what
 // it spawned is not modelled. (Ganty, Majumdar, Algorithmic verification of
 // asynchronous programs, 2012.)
 //

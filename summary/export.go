@@ -44,8 +44,8 @@ type Grammar struct {
 	// Endless lists heads of spawned work that can never end and therefore counts
 	// at any prefix; in order.
 	Endless []pds.Head
-	// Prefixes: the question is about moments and there is spawned work, which this
-	// grammar counts at *any* prefix. A run of it that breaks a claim may be one
+	// Prefixes: there is spawned work that this grammar counts at *any* prefix, since
+	// the question asks for it (Question.Prefixes) or is about moments. A run of it that breaks a claim may be one
 	// that only a certain schedule shows.
 	Prefixes bool
 }
@@ -67,13 +67,13 @@ func (e *Engine) Grammar(h pds.Head, accept func(pds.StateID) bool, q Question) 
 	for _, a := range targets {
 		s.value(a) // decides what is endless
 	}
-	moment := s.q.moment()
+	least := s.q.leastWork()
 	g := &Grammar{}
 	var productive map[NT]bool
 	var order []NT
 	rhsOf := func(p *prod) []NT {
 		rhs := slices.Clone(e.g.rhs[p.rhs : int(p.rhs)+int(p.n)])
-		if moment {
+		if least {
 			for i, b := range rhs {
 				if e.g.nts[b].kind == spawned {
 					rhs[i] = e.nt(begun, e.g.nts[b].of)
@@ -204,12 +204,12 @@ func (e *Engine) Grammar(h pds.Head, accept func(pds.StateID) bool, q Question) 
 			if out.Doubt {
 				out.Effect = r.DoubtEffect
 			}
-			if moment && len(r.Spawn) > 0 {
+			if (least || q.Prefixes) && len(r.Spawn) > 0 {
 				g.Prefixes = true
 			}
 		}
 		g.Prods = append(g.Prods, out)
-		if e.g.nts[a].kind == spawned && e.g.nts[rhs[0]].kind == begun {
+		if e.g.nts[a].kind == spawned && e.g.nts[rhs[0]].kind == begun && s.endless[e.g.nts[a].of] {
 			g.Endless = append(g.Endless, e.headOf(a))
 		}
 	})

@@ -192,7 +192,7 @@ func (s *Solution) emitSpawned(a NT, t *tree, budget *int) (Path, error) {
 	}
 	endless := false
 	for e.g.nts[t.nt].kind == spawned || e.g.nts[t.nt].kind == begun {
-		endless = endless || e.g.nts[t.nt].kind == spawned && e.g.nts[t.kids[0].nt].kind == begun
+		endless = endless || e.g.nts[t.nt].kind == spawned && s.endless[e.g.nts[t.nt].of]
 		t = t.kids[0]
 	}
 	sub, err := s.emit(t, budget)
@@ -228,7 +228,7 @@ func (s *Solution) build(a NT, pick func(NT) int32) (*tree, error) {
 	busy := map[NT]bool{}
 	limit := big.NewInt(MaxPath)
 	work := []NT{a}
-	constant := func(b NT) bool { return s.q.moment() && e.g.nts[b].kind == spawned }
+	constant := func(b NT) bool { return s.q.leastWork() && e.g.nts[b].kind == spawned }
 	for len(work) > 0 {
 		b := work[len(work)-1]
 		if made[b] != nil {

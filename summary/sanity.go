@@ -99,7 +99,7 @@ func (e *Engine) Sanity() error {
 func (s *Solution) Sanity() error {
 	var errs []error
 	e := s.e
-	moment := s.q.moment()
+	least := s.q.leastWork()
 	for i := range e.g.nts {
 		a := NT(i)
 		if i/pageSize >= len(s.pages) || s.pages[i/pageSize] == nil {
@@ -109,7 +109,7 @@ func (s *Solution) Sanity() error {
 		if c.local != 0 {
 			errs = append(errs, fmt.Errorf("%s: left in the middle of a question", e.name(a)))
 		}
-		if c.status == unsolved || moment && e.g.nts[a].kind == spawned {
+		if c.status == unsolved || least && e.g.nts[a].kind == spawned {
 			continue
 		}
 		var v Value

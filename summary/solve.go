@@ -16,7 +16,7 @@ import (
 // spawned work when it has ended; spawned work that can never end counts at any
 // of its prefixes, see [Solution.Endless]. In every other question spawned work
 // counts with the least weight of its prefixes: its events may or may not have
-// happened yet, whichever keeps the claim.
+// happened yet, whichever keeps the claim. Prefixes changes both.
 type Question struct {
 	// Weights has one number per count; a run weighs Weights·counts.
 	Weights []int64
@@ -24,13 +24,19 @@ type Question struct {
 	StopMarks pds.Mark
 	// AnyMoment: open runs stop anywhere.
 	AnyMoment bool
+	// Prefixes: spawned work counts at any moment of it, most against the claim, in
+	// questions of either kind (totals across goroutines without regard to order).
+	Prefixes bool
 	// TakeDoubts: a step with a doubt weighs what is less, with or without it.
 	TakeDoubts bool
 	// Off takes rules out of the system: index into Rules(head). Nil: none.
 	Off func(h pds.Head, rule int) bool
 }
 
-func (q *Question) moment() bool { return q.AnyMoment || q.StopMarks&^pds.MarkLoss != 0 }
+// leastWork: spawned work counts with the least weight of its prefixes.
+func (q *Question) leastWork() bool {
+	return !q.Prefixes && (q.AnyMoment || q.StopMarks&^pds.MarkLoss != 0)
+}
 
 // ValueKind is what is known of a greatest weight.
 type ValueKind uint8
@@ -199,7 +205,7 @@ func (s *Solution) live(p *prod) bool {
 			return false
 		}
 	case ifEndless:
-		return s.endless[s.e.g.nts[s.e.g.rhs[p.rhs]].of]
+		return s.q.Prefixes || s.endless[s.e.g.nts[s.e.g.rhs[p.rhs]].of]
 	case atMarks:
 		return s.e.rules[p.rule].Mark&s.q.StopMarks != 0
 	}
@@ -415,13 +421,13 @@ func (s *Solution) solve(a NT) {
 
 func (s *Solution) collect(a NT) *ask {
 	k := &ask{s: s}
-	moment := s.q.moment()
+	least := s.q.leastWork()
 	take := func(a NT) {
 		c := s.cell(a)
 		if c.status != unsolved || c.local != 0 {
 			return
 		}
-		if moment && s.e.g.nts[a].kind == spawned {
+		if least && s.e.g.nts[a].kind == spawned {
 			s.constant(a)
 			return
 		}

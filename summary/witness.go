@@ -211,7 +211,7 @@ func (w *search) grow(targets []NT) bool {
 		w.prods = append(w.prods, p)
 		return true
 	}
-	moment := s.q.moment()
+	least := s.q.leastWork()
 	for i := 0; i < len(order); i++ {
 		if int64(len(w.nts))*w.width > maxItems {
 			return false
@@ -221,7 +221,7 @@ func (w *search) grow(targets []NT) bool {
 		if s.value(a).Kind == NoPath {
 			continue
 		}
-		if moment && e.g.nts[a].kind == spawned {
+		if least && e.g.nts[a].kind == spawned {
 			put(s.cell(a).val, searchProd{id: -2, lhs: l, a: -1, b: -1})
 			continue
 		}
@@ -510,7 +510,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 			at = l
 			break
 		}
-		if s.q.moment() && e.g.nts[a].kind == spawned {
+		if s.q.leastWork() && e.g.nts[a].kind == spawned {
 			continue
 		}
 		start, end := e.productions(a)
@@ -575,7 +575,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 				continue
 			}
 			b := e.g.rhs[int(pr.rhs)+i]
-			if s.q.moment() && e.g.nts[b].kind == spawned {
+			if s.q.leastWork() && e.g.nts[b].kind == spawned {
 				continue
 			}
 			var err error
@@ -605,7 +605,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 			if j == st.child {
 				continue
 			}
-			if s.q.moment() && e.g.nts[b].kind == spawned {
+			if s.q.leastWork() && e.g.nts[b].kind == spawned {
 				gain = gain.add(s.cell(b).val)
 				continue
 			}

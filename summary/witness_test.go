@@ -151,6 +151,47 @@ func TestSpawnedAtMoments(t *testing.T) {
 	}
 }
 
+// S -> spawn(A) S | eps, A -> a b: at the quiet end {(n, n)}, at any moment b <= a
+// (an instance of the model of Ganty, Majumdar, Algorithmic verification of
+// asynchronous programs, 2012).
+func TestShuffleFreeSpawning(t *testing.T) {
+	b := pds.NewBuilder("a", "b")
+	b.Start("q", "S")
+	b.Step("q", "S", "q", "S", pds.Spawns("q", "A"))
+	b.Pop("q", "S", "q")
+	b.Step("q", "A", "q", "B", pds.Adds("a", 1))
+	b.Pop("q", "B", "q", pds.Adds("b", 1))
+	sys := b.Table()
+	e := New(sys, 0)
+	for _, c := range []struct {
+		q    Question
+		want string
+	}{
+		{Question{Weights: []int64{1, -1}}, "0"},
+		{Question{Weights: []int64{-1, 1}}, "0"},
+		{Question{Weights: []int64{1, 1}}, "inf"},
+		{Question{Weights: []int64{1, -1}, AnyMoment: true, Prefixes: true}, "inf"},
+		{Question{Weights: []int64{-1, 1}, AnyMoment: true, Prefixes: true}, "0"},
+		{Question{Weights: []int64{1, 1}, AnyMoment: true}, "0"},
+	} {
+		s := e.Solve(c.q)
+		if v := s.Greatest(sys.Starts()[0], all); v.String() != c.want {
+			t.Errorf("%+v: %v, want %s", c.q, v, c.want)
+		}
+		if c.want == "inf" {
+			// The pump runs through spawned work or beside it.
+			p, ok := s.Witness(sys.Starts()[0], all, 500)
+			if !ok {
+				t.Fatalf("%+v: no witness", c.q)
+			}
+			run := replayed(t, sys, p)
+			if got := run.Total[0]*c.q.Weights[0] + run.Total[1]*c.q.Weights[1]; got <= 500 {
+				t.Errorf("%+v: witness weighs %d", c.q, got)
+			}
+		}
+	}
+}
+
 // Spawned work without an end counts at any moment of it at ends, and is listed.
 func TestEndlessWork(t *testing.T) {
 	b := pds.NewBuilder("added", "done")
