@@ -4,6 +4,7 @@ package load
 
 import (
 	"bytes"
+	"context"
 	"encoding/json"
 	"errors"
 	"fmt"
@@ -151,6 +152,34 @@ func usesModMod(goflags string, flags []string) bool {
 	return slices.ContainsFunc(append(strings.Fields(goflags), flags...), func(f string) bool {
 		return strings.TrimLeft(f, "-") == "mod=mod"
 	})
+}
+
+// MainModules lists the root folders of the main modules that the go command
+// sees from cfg.Dir, sorted: one in a module, all that are in use in a
+// workspace. Patterns made from them ("DIR/...") name all of a workspace.
+func MainModules(cfg Config) ([]string, error) {
+	if cfg.Context == nil {
+		cfg.Context = context.Background()
+	}
+	dir, err := filepath.Abs(cfg.Dir)
+	if err != nil {
+		return nil, err
+	}
+	out, stderr, err := goCommand(&cfg, "list", "-mod=readonly", "-m", "-f", "{{.Dir}}")
+	if err != nil {
+		return nil, commandError(&cfg, dir, stderr, err)
+	}
+	var dirs []string
+	for line := range strings.Lines(string(out)) {
+		if line = strings.TrimSpace(line); line != "" {
+			dirs = append(dirs, line)
+		}
+	}
+	slices.Sort(dirs)
+	if len(dirs) == 0 {
+		return nil, Errors{noModule(dir)}
+	}
+	return dirs, nil
 }
 
 // goCommand runs the go command and returns its standard output and error.
@@ -329,6 +358,21 @@ func (l *listing) check(cfg *Config) error {
 			e.Kind = NewerGo
 		case needsModule(e.Message), l.outside() && strings.Contains(e.Message, "does not contain main module"):
 			e = noModule(l.dir)
+		case strings.Contains(e.Message, "does not contain modules listed in go.work"):
+			e.Kind, e.Place = NoMatch, l.dir
+			e.Message = "no module of the workspace covers " + strings.Join(p.Match, ", ")
+			if dirs, err := MainModules(*cfg); err == nil && len(dirs) > 0 {
+				example := dirs[0]
+				if rel, ok := inside(l.dir, dirs[0]); ok {
+					example = "./" + rel
+				}
+				e.Message += fmt.Sprintf("; name its modules, as in %s/... (there are %d)", example, len(dirs))
+			}
+		case strings.Contains(e.Message, "does not contain main module"):
+			e.Kind = NoMatch
+			e.Message = fmt.Sprintf("%s is outside of the module in %s", strings.Join(p.Match, ", "), l.root())
+		case !p.DepOnly && strings.Contains(e.Message, "is not in std"):
+			e.Kind = NoMatch
 		case missing(e.Message):
 			e.Kind = MissingModule
 			if notCached(e.Message) && !strings.Contains(e.Message, p.ImportPath) {

@@ -274,6 +274,8 @@ func TestErrors(t *testing.T) {
 		{"bad go.mod", []string{"go.mod", "modul m\n", "a.go", "package a\n"}, "./...", BadModule, "go.mod:1", "unknown directive"},
 		{"cycle", []string{"a/a.go", "package a\n\nimport _ \"example/harbour/b\"\n", "b/b.go", "package b\n\nimport _ \"example/harbour/a\"\n"}, "./a", BadPackage, "", "import cycle: example/harbour/a imports example/harbour/b imports example/harbour/a"},
 		{"two packages in a folder", []string{"a.go", "package a\n", "b.go", "package b\n"}, ".", BadPackage, "", "found packages a (a.go) and b (b.go)"},
+		{"outside", []string{"a.go", "package a\n"}, "../...", NoMatch, "", "../... is outside of the module in "},
+		{"no such package", []string{"a.go", "package a\n"}, "fmtt", NoMatch, "", "package fmtt is not in std"},
 		{"dash", []string{"a.go", "package a\n"}, "-exec=true", NoMatch, "", "begins with a dash"},
 	} {
 		t.Run(tt.name, func(t *testing.T) {
@@ -503,6 +505,16 @@ func TestWorkspace(t *testing.T) {
 	)
 	prog := mustLoad(t, Config{Dir: dir, Patterns: []string{"./a/..."}, Env: []string{"GOWORK="}})
 	equal(t, "functions", withoutInit(describe(prog)), []string{"example/a.A a/a.go:5:6", "example/b.B b/b.go:3:6"})
+	dirs, err := MainModules(Config{Dir: dir, Env: []string{"GOWORK="}})
+	if err != nil {
+		t.Fatal(err)
+	}
+	equal(t, "main modules", dirs, []string{filepath.Join(dir, "a"), filepath.Join(dir, "b")})
+	_, err = Load(Config{Dir: dir, Patterns: []string{"./..."}, Env: []string{"GOWORK="}})
+	var e *Error
+	if !errors.As(err, &e) || e.Kind != NoMatch || !strings.Contains(e.Message, "name its modules, as in ./a/... (there are 2)") {
+		t.Errorf("at the root of the workspace: %v", err)
+	}
 	prog = mustLoad(t, Config{Dir: filepath.Join(dir, "a"), Env: []string{"GOWORK="}})
 	equal(t, "functions from inside", withoutInit(describe(prog)), []string{"example/a.A a.go:5:6", "example/b.B example/b/b.go:3:6"})
 	equal(t, "modules", prog.Modules, []string{"example/a", "example/b"})
@@ -603,7 +615,7 @@ func TestGeneratedAndText(t *testing.T) {
 // number of workers.
 func TestDeterminism(t *testing.T) {
 	dump := func(workers int) string {
-		prog := mustLoad(t, Config{Patterns: []string{"golang.org/x/tools/go/ssa", "unicode/utf8"}, Workers: workers})
+		prog := mustLoad(t, Config{Patterns: []string{"golang.org/x/tools/go/ssa", "golang.org/x/tools/go/cfg"}, Workers: workers})
 		var b strings.Builder
 		for _, fn := range slices.Concat(prog.Functions(), prog.Wrappers()) {
 			fmt.Fprintln(&b, fn.String(), fn.Pos())
