@@ -130,6 +130,7 @@ const (
 	noPath
 	finite
 	unbounded
+	gaveUp // the budget ran out here or below
 )
 
 // cell is what a solution knows of a nonterminal.
@@ -163,6 +164,7 @@ type Solution struct {
 	// endless: spawned work that can never end.
 	endless  map[node]bool
 	searches map[int64]*search // by half-width; -1: weights ignored
+	gaveUp   []pds.Head
 	// exact: look for pumps after every improvement, whatever it costs.
 	exact bool
 	// allowance of every component, see pumpAllowance; tests lower it.
@@ -196,6 +198,11 @@ func (s *Solution) cell(a NT) *cell {
 	}
 	return &s.pages[p][int(a)%pageSize]
 }
+
+// GaveUp lists heads whose recursion was too large: solving it took more
+// relaxations of productions than the engine's budget has rule steps. What uses
+// them is Exhausted.
+func (s *Solution) GaveUp() []pds.Head { return s.gaveUp }
 
 // live: the production belongs to the question.
 func (s *Solution) live(p *prod) bool {
@@ -342,6 +349,8 @@ func (s *Solution) value(a NT) Value {
 		return Value{Kind: Unbounded}
 	case finite:
 		return Value{Finite, c.val}
+	case gaveUp:
+		return Value{}
 	}
 	panic("summary: solve: " + s.e.name(a) + " was not solved")
 }
@@ -357,6 +366,8 @@ func (s *Solution) constant(a NT) {
 		c.status = noPath
 	case Finite:
 		c.status, c.val = finite, v.n.neg()
+	case Exhausted:
+		c.status = gaveUp
 	default:
 		panic("summary: solve: spawned work of " + s.e.name(a) + " has no prefix")
 	}
@@ -657,12 +668,12 @@ func (k *ask) component(comp []int32) {
 		k.number[l] = k.numbers
 	}
 	in := func(l int32) bool { return k.number[l] == k.numbers }
-	grows := func() {
+	become := func(st status) {
 		for _, l := range comp {
-			s.cell(k.nts[l]).status = unbounded
+			s.cell(k.nts[l]).status = st
 		}
 	}
-	loops := false
+	loops, stuck := false, false
 	for _, l := range comp {
 		for p := k.prodStart[l]; p < k.prodStart[l+1]; p++ {
 			if k.prods[p].miss != 0 {
@@ -670,15 +681,22 @@ func (k *ask) component(comp []int32) {
 			}
 			for _, b := range k.rhs(k.prods[p].id) {
 				c := s.cell(b)
-				if c.status == unbounded {
-					grows()
+				switch c.status {
+				case unbounded:
+					become(unbounded)
 					return
+				case gaveUp:
+					stuck = true
 				}
 				if c.local != 0 && in(c.local-1) {
 					loops = true
 				}
 			}
 		}
+	}
+	if stuck {
+		become(gaveUp)
+		return
 	}
 	if !loops {
 		l := comp[0]
@@ -702,6 +720,7 @@ func (k *ask) component(comp []int32) {
 	if s.exact {
 		r.allowance = 1 << 62
 	}
+	left := s.e.budget
 	var queue []int32
 	queued := k.queued
 	for _, l := range comp {
@@ -715,6 +734,11 @@ func (k *ask) component(comp []int32) {
 	for i := 0; i < len(queue); i++ {
 		p := queue[i]
 		queued[p] = false
+		if left--; left < 0 {
+			become(gaveUp)
+			s.gaveUp = append(s.gaveUp, s.e.headOf(k.nts[comp[0]]))
+			return
+		}
 		t, st := k.sum(p)
 		if st != finite {
 			continue
@@ -730,7 +754,7 @@ func (k *ask) component(comp []int32) {
 				if steps != nil {
 					s.pumps[a] = steps
 				}
-				grows()
+				become(unbounded)
 				return
 			}
 		}

@@ -308,3 +308,24 @@ func TestLatePumps(t *testing.T) {
 		}
 	}
 }
+
+func TestSolvingGivesUp(t *testing.T) {
+	sys := recursion(200)
+	h := pds.Head{State: 1, Symbol: 1}
+	e := New(sys, 0)
+	if a := e.Saturate(h, 0); a.Exhausted {
+		t.Fatal(a)
+	}
+	e.budget = 500
+	s := e.Solve(Question{Weights: []int64{1, 0}})
+	if v := s.Greatest(h, all); v.Kind != Exhausted || len(s.GaveUp()) == 0 {
+		t.Errorf("%v, gave up %v", v, s.GaveUp())
+	}
+	if _, err := s.FindWitness(h, all, 0); !errors.Is(err, ErrExhausted) {
+		t.Errorf("witness: %v", err)
+	}
+	e.budget = DefaultBudget
+	if v := e.Solve(Question{Weights: []int64{1, 0}}).Greatest(h, all); v.Kind != Finite {
+		t.Errorf("with budget: %v", v)
+	}
+}

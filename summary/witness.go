@@ -48,7 +48,9 @@ func (s *Solution) FindWitness(h pds.Head, accept func(pds.StateID) bool, bound 
 		return Path{}, ErrExhausted
 	}
 	v := s.Greatest(h, accept)
-	if above, _ := v.Above(bound); !above {
+	if above, known := v.Above(bound); !known {
+		return Path{}, ErrExhausted
+	} else if !above {
 		return Path{}, ErrNoWitness
 	}
 	live := targets[:0:0]

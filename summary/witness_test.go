@@ -2,6 +2,7 @@ package summary
 
 import (
 	"fmt"
+	"math/rand/v2"
 	"reflect"
 	"strings"
 	"testing"
@@ -360,6 +361,61 @@ func TestOrderOfQuestions(t *testing.T) {
 				t.Errorf("%v: %s, asked in other order %s", h, text, old)
 			}
 			paths[h] = text
+		}
+	}
+}
+
+// The exported grammar has the same greatest weights, by plain rounds.
+func TestGrammarAgainstRounds(t *testing.T) {
+	kinds := map[ValueKind]int{}
+	for seed := range uint64(400) {
+		r := rand.New(rand.NewPCG(seed, 3))
+		sys := randomSystem(r, int(seed%3))
+		q := questions(r)[seed%3]
+		if seed%5 == 0 {
+			q.AnyMoment, q.Prefixes = true, true
+		}
+		e := New(sys, 0)
+		h := sys.Starts()[0]
+		v := e.Solve(q).Greatest(h, all)
+		kinds[v.Kind]++
+		g, err := e.Grammar(h, all, q)
+		if (err == ErrNoWitness) != (v.Kind == NoPath) {
+			t.Fatalf("seed %d: %v, but greatest %v", seed, err, v)
+		}
+		if err != nil {
+			continue
+		}
+		const far = 1 << 20
+		val := make([]int64, g.NumNT)
+		has := make([]bool, g.NumNT)
+		for range 700 {
+			for _, p := range g.Prods {
+				w, ok := int64(0), true
+				for i, x := range sys.Vector(p.Effect) {
+					w += q.Weights[i] * x
+				}
+				for _, b := range p.Rhs {
+					w += val[b]
+					ok = ok && has[b]
+				}
+				if ok && (!has[p.Lhs] || w > val[p.Lhs]) {
+					val[p.Lhs], has[p.Lhs] = min(w, far), true
+				}
+			}
+		}
+		for a := range has {
+			if !has[a] {
+				t.Fatalf("seed %d: %s has no run in a trimmed grammar", seed, g.Names[a])
+			}
+		}
+		if v.Kind == Finite && v.String() != fmt.Sprint(val[0]) || v.Kind == Unbounded && val[0] < 100 {
+			t.Fatalf("seed %d: greatest %v, by rounds %d", seed, v, val[0])
+		}
+	}
+	for _, k := range []ValueKind{NoPath, Finite, Unbounded} {
+		if kinds[k] < 20 {
+			t.Errorf("only %d answers of kind %d", kinds[k], k)
 		}
 	}
 }
