@@ -14,7 +14,7 @@ import (
 //	                                      1.2 s, 0.08 GB  209 packages, one with bodies
 func BenchmarkStd(b *testing.B) { benchmark(b, Config{Patterns: []string{"std"}}) }
 
-// One package with bodies, its imports without.
+// A few packages of one module with bodies, all others without.
 func BenchmarkWithoutBodies(b *testing.B) {
 	benchmark(b, Config{Patterns: []string{"golang.org/x/tools/go/ssa"}})
 }
