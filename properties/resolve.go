@@ -30,7 +30,7 @@ type RuleBook struct {
 // SkippedRule is a built-in rule that has no meaning in this build.
 type SkippedRule struct {
 	Set, Name string
-	Missing   string // import path that is not in the build
+	Missing   string // import path, or name of a package, that is not in the build
 }
 
 // RootSetting is a `root` or `noroot` line.
@@ -288,7 +288,10 @@ func (r *resolver) each(e *syntax.Each) {
 	}
 	p := &EachParam{Name: e.Name.Text}
 	for _, te := range e.Types {
-		t := r.typ(te)
+		var t types.Type
+		if !r.unlessAbsent(func() { t = r.typ(te) }) {
+			continue
+		}
 		if t == nil {
 			if len(e.Types) > 1 {
 				r.fail(syntax.Naming, te, "", "_ is any type already and stands alone")
@@ -304,6 +307,9 @@ func (r *resolver) each(e *syntax.Each) {
 			r.fail(syntax.Naming, te, "instances are pointers, interfaces, channels, maps or functions", "not judged yet: each value of %s", types.TypeString(t, qualifier))
 		}
 		p.Types = append(p.Types, t)
+	}
+	if n := len(r.out.Absent); n > 0 && len(p.Types) == 0 {
+		panic(notApplicable{r.out.Absent[n-1]})
 	}
 	if e.Hand == nil {
 		r.fail(syntax.Naming, e.Name, "stays: handing it on settles nothing (a lock); moves: whoever gets it must settle (a file)", "say whether %s stays or moves", e.Name.Text)
@@ -325,6 +331,9 @@ func (r *resolver) events(c syntax.Clause) {
 			weight = r.weight(c.By)
 		}
 		m := r.event(c.Event, "count")
+		if len(m.Callees) == 0 && !m.CallsInstance {
+			return // absent, all of them
+		}
 		m.Count, m.Weight = r.counts[c.Name.Text], weight
 		m.Pos, m.Text = r.file.Tree.Place(c), r.file.Tree.Text(c)
 		r.out.Events = append(r.out.Events, m)
@@ -337,6 +346,9 @@ func (r *resolver) events(c syntax.Clause) {
 			return
 		}
 		m := r.event(c.Point.Event, "checkpoint")
+		if len(m.Callees) == 0 && !m.CallsInstance {
+			panic(bail{}) // absent, all of them; the claim goes too
+		}
 		n := len(r.marks) + 1 // bit 0 is pds.MarkLoss
 		if n > 31 {
 			r.fail(syntax.Naming, c.Point, "", "a rule has at most 31 different events as checkpoints")
@@ -388,7 +400,8 @@ type binding struct {
 	index  int
 }
 
-// event resolves one event; what says for messages where it stands.
+// event resolves one event; what says for messages where it stands. Without
+// callees and CallsInstance, a built-in rule names only what the build does not have.
 func (r *resolver) event(e *syntax.Event, what string) EventMatch {
 	notYet := func(at syntax.Node, what string) { r.fail(syntax.Naming, at, "", "not judged yet: %s", what) }
 	if e.Act != "call" {
@@ -453,7 +466,12 @@ func (r *resolver) event(e *syntax.Event, what string) EventMatch {
 		return m
 	}
 	for _, c := range e.Callees {
-		found := r.callees(c, func(f *types.Func, recv types.Type) *syntax.Error { return r.fits(e, c, f, recv, &m) })
+		var found []Callee
+		if !r.unlessAbsent(func() {
+			found = r.callees(c, func(f *types.Func, recv types.Type) *syntax.Error { return r.fits(e, c, f, recv, &m) })
+		}) {
+			continue
+		}
 		for _, f := range found {
 			for _, w := range conds {
 				r.walk(w.at, sc.at[w.path.Name], f.Obj)

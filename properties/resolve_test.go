@@ -124,6 +124,9 @@ func TestBuiltIn(t *testing.T) {
 		if !r.BuiltIn || r.Dir != "." {
 			t.Errorf("%s: BuiltIn %v, Dir %q", r.Name, r.BuiltIn, r.Dir)
 		}
+		if len(r.Absent) > 0 {
+			t.Errorf("%s names what the standard library does not have: %v", r.Name, r.Absent)
+		}
 		broken := map[string]bool{}
 		holds := false
 		for _, e := range Examples(r) {
@@ -168,6 +171,148 @@ func TestNotApplicable(t *testing.T) {
 	if len(book.Rules) != 3 {
 		t.Errorf("%d rules, want 3", len(book.Rules))
 	}
+}
+
+// TestOlderLibrary: built-in rules live with a standard library that lacks some
+// of their names; rules of a module do not.
+func TestOlderLibrary(t *testing.T) {
+	u := testUniverse(t, "sync", "os", "io")
+	old := types.NewPackage("context", "context")
+	scope := old.Scope()
+	sig := types.NewSignatureType(nil, nil, nil, nil, nil, false)
+	cancel := types.NewNamed(types.NewTypeName(0, old, "CancelFunc", nil), sig, nil)
+	scope.Insert(cancel.Obj())
+	anything := types.NewInterfaceType(nil, nil)
+	with := types.NewSignatureType(nil, nil, nil, types.NewTuple(types.NewVar(0, old, "parent", anything)),
+		types.NewTuple(types.NewVar(0, old, "ctx", anything), types.NewVar(0, old, "cancel", cancel)), false)
+	scope.Insert(types.NewFunc(0, old, "WithCancel", with))
+	u["context"] = old
+	book, err := Resolve(BuiltInRules(), u, Options{})
+	if err != nil {
+		t.Fatal(err.(syntax.Errors).Text())
+	}
+	r := book.Rules[0]
+	if r.Name != "cancel" || len(r.Events) != 2 || len(r.Events[0].Callees) != 1 || len(r.Each.Types) != 1 || len(r.Claims) != 1 {
+		t.Errorf("%+v", r)
+	}
+	if want := []string{"CancelCauseFunc", "WithCancelCause", "WithTimeout", "WithTimeoutCause", "WithDeadline", "WithDeadlineCause"}; !reflect.DeepEqual(r.Absent, want) {
+		t.Errorf("absent %v, want %v", r.Absent, want)
+	}
+	own := parseRules(t, "pathtally.rules", ".", "import \"context\"\nrule x { each f context.CancelFunc stays; count n: call context.WithTimeout returning (_, f); claim k always: n <= 1 }")
+	if _, err := Resolve([]*RuleFile{own}, u, Options{}); err == nil || !strings.Contains(err.Error(), "package context has no function WithTimeout") {
+		t.Errorf("error %v", err)
+	}
+}
+
+// TestPrefix: a prefix skips functions that do not fit the event.
+func TestPrefix(t *testing.T) {
+	f := parseRules(t, "x.rules", ".", `import "database/sql"
+rule rows { each r *sql.Rows moves
+  count got: call (*sql.DB).Query*, (*sql.Stmt).Query* returning (r, nil)
+  count closed: call (*sql.Rows).Close on r
+  claim closed at return: got <= closed }
+`)
+	book, err := Resolve([]*RuleFile{f}, testUniverse(t, "database/sql"), Options{})
+	if err != nil {
+		t.Fatal(err.(syntax.Errors).Text())
+	}
+	var got []string
+	for _, c := range book.Rules[0].Events[0].Callees {
+		got = append(got, c.String())
+	}
+	if want := []string{"(*sql.DB).Query", "(*sql.DB).QueryContext", "(*sql.Stmt).Query", "(*sql.Stmt).QueryContext"}; !reflect.DeepEqual(got, want) {
+		t.Errorf("got %v, want %v", got, want)
+	}
+}
+
+// clauseSpans gives the places of all clauses and declarations without clauses.
+func clauseSpans(f *syntax.File) []syntax.Span {
+	var out []syntax.Span
+	for _, im := range f.Imports {
+		out = append(out, im.Span)
+	}
+	for _, d := range f.Decls {
+		r, ok := d.(*syntax.Rule)
+		if !ok {
+			out = append(out, d.Pos())
+			continue
+		}
+		for _, c := range r.Clauses {
+			out = append(out, c.Pos())
+		}
+	}
+	return out
+}
+
+// checkErrors checks what holds of every error list: sorted, a text for each,
+// at most one for each clause.
+func checkErrors(t testing.TB, f *syntax.File, errs syntax.Errors) {
+	t.Helper()
+	for i, e := range errs {
+		if e.Msg == "" || e.Line < 1 || e.Column < 1 || e.Column > len(e.Source)+1 || strings.Count(e.Text(), "\n") < 3 {
+			t.Errorf("malformed error %+v", e)
+		}
+		if i > 0 && errs[i-1].Stage > e.Stage {
+			t.Errorf("%v stands before %v", errs[i-1], e)
+		}
+	}
+	for _, s := range clauseSpans(f) {
+		fromLine, fromCol := f.Position(s.From)
+		toLine, toCol := f.Position(s.To)
+		n := 0
+		for _, e := range errs {
+			after := e.Line > fromLine || e.Line == fromLine && e.Column >= fromCol
+			before := e.Line < toLine || e.Line == toLine && e.Column <= toCol
+			if after && before && !strings.HasSuffix(e.Msg, "has no closing }") {
+				n++
+			}
+		}
+		if n > 1 {
+			t.Errorf("%d errors in the clause at %d:%d:\n%s", n, fromLine, fromCol, errs.Text())
+		}
+	}
+}
+
+// FuzzResolve: no rule file makes Resolve panic, and its errors are as promised.
+// See FuzzParse for how to run it.
+func FuzzResolve(f *testing.F) {
+	var names []string
+	for _, glob := range []string{"testdata/*.rules", "testdata/bad/*.rules", "rulesets/*.rules"} {
+		m, err := filepath.Glob(glob)
+		if err != nil {
+			f.Fatal(err)
+		}
+		names = append(names, m...)
+	}
+	for _, name := range names {
+		src, err := os.ReadFile(name)
+		if err != nil {
+			f.Fatal(err)
+		}
+		f.Add(string(src))
+	}
+	u := testUniverse(f, everything...)
+	f.Fuzz(func(t *testing.T, src string) {
+		file := ParseRuleFile("x.rules", ".", src)
+		for _, models := range []bool{false, true} {
+			book, err := Resolve([]*RuleFile{file}, u, Options{FollowModels: models})
+			if err != nil {
+				checkErrors(t, file.Tree, err.(syntax.Errors))
+				continue
+			}
+			for _, r := range book.Rules {
+				Examples(r)
+				for _, c := range r.Claims {
+					if len(c.Cases) == 0 || c.Linear != (len(c.Questions) > 0) {
+						t.Errorf("claim %+v", c)
+					}
+				}
+			}
+		}
+		for _, i := range ListRules([]*RuleFile{file}) {
+			ShowRule([]*RuleFile{file}, i, nil)
+		}
+	})
 }
 
 // TestExamplesCompile: each example of a built-in rule is a Go file that the
@@ -249,6 +394,7 @@ func TestBad(t *testing.T) {
 			t.Errorf("%s has no error", name)
 			continue
 		}
+		checkErrors(t, f.Tree, err.(syntax.Errors))
 		got := err.(syntax.Errors).Text()
 		compareGolden(t, strings.TrimSuffix(name, ".rules")+".want", got)
 	}

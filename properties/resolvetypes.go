@@ -174,6 +174,34 @@ func (r *resolver) pkg(id *syntax.Ident) *types.Package {
 // notApplicable unwinds from a built-in rule whose package is not in the build.
 type notApplicable struct{ path string }
 
+// absent unwinds from a name of a built-in rule that its package does not have:
+// the standard library of the build is older than the rule.
+type absent struct{ name string }
+
+// unlessAbsent runs f; if a built-in rule names what the build does not have,
+// it notes the name and reports false.
+func (r *resolver) unlessAbsent(f func()) (ok bool) {
+	defer func() {
+		if p := recover(); p != nil {
+			a, mine := p.(absent)
+			if !mine {
+				panic(p)
+			}
+			r.out.Absent = append(r.out.Absent, a.name)
+		}
+	}()
+	f()
+	return true
+}
+
+// missing fails for a name that a package or type does not have.
+func (r *resolver) missing(at *syntax.Ident, hint, format string, args ...any) {
+	if r.file.BuiltIn {
+		panic(absent{at.Text})
+	}
+	r.fail(syntax.Typing, at, hint, format, args...)
+}
+
 // named gives the type that a subject names.
 func (r *resolver) named(s *syntax.Subject) *types.TypeName {
 	switch len(s.Parts) {
@@ -186,7 +214,7 @@ func (r *resolver) named(s *syntax.Subject) *types.TypeName {
 		pkg := r.pkg(s.Parts[0])
 		o := pkg.Scope().Lookup(s.Parts[1].Text)
 		if o == nil {
-			r.fail(syntax.Typing, s.Parts[1], r.nearObject(s.Parts[1].Text, pkg, func(o types.Object) bool { _, ok := o.(*types.TypeName); return ok }),
+			r.missing(s.Parts[1], r.nearObject(s.Parts[1].Text, pkg, func(o types.Object) bool { _, ok := o.(*types.TypeName); return ok }),
 				"package %s has no type %s", pkg.Path(), s.Parts[1].Text)
 		}
 		if t, ok := o.(*types.TypeName); ok {
@@ -361,13 +389,13 @@ func (r *resolver) functions(c *syntax.Callee) []Callee {
 			}
 		}
 		if len(out) == 0 {
-			r.fail(syntax.Typing, name, r.nearObject(name.Text, pkg, isFunc), "package %s has no function that starts with %s", pkg.Path(), name.Text)
+			r.missing(name, r.nearObject(name.Text, pkg, isFunc), "package %s has no function that starts with %s", pkg.Path(), name.Text)
 		}
 		return out
 	}
 	o := pkg.Scope().Lookup(name.Text)
 	if o == nil {
-		r.fail(syntax.Typing, name, r.nearObject(name.Text, pkg, isFunc), "package %s has no function %s", pkg.Path(), name.Text)
+		r.missing(name, r.nearObject(name.Text, pkg, isFunc), "package %s has no function %s", pkg.Path(), name.Text)
 	}
 	f, ok := o.(*types.Func)
 	if !ok {
@@ -432,7 +460,7 @@ func (r *resolver) methods(c *syntax.Callee) []Callee {
 		}
 		sort.Slice(out, func(i, j int) bool { return out[i].Obj.Name() < out[j].Obj.Name() })
 		if len(out) == 0 {
-			r.fail(syntax.Typing, c.Method, has(c.Method.Text, names), "%s has no method that starts with %s", shown, c.Method.Text)
+			r.missing(c.Method, has(c.Method.Text, names), "%s has no method that starts with %s", shown, c.Method.Text)
 		}
 		return out
 	}
@@ -455,7 +483,7 @@ func (r *resolver) methods(c *syntax.Callee) []Callee {
 			}
 		}
 	}
-	r.fail(syntax.Typing, c.Method, hint, "%s has no method %s", shown, c.Method.Text)
+	r.missing(c.Method, hint, "%s has no method %s", shown, c.Method.Text)
 	return nil
 }
 

@@ -26,6 +26,9 @@ type ResolvedRule struct {
 	Models []CallModel
 	// BuiltIn: the rule comes with the tool.
 	BuiltIn bool
+	// Absent are names of a built-in rule that the build's standard library, being older, does not have.
+	// What names them is left out of the rule.
+	Absent []string
 	// Dir is the folder, relative to the module root with forward slashes, to whose packages (and those
 	// below it) the rule applies; "." for the whole module.
 	Dir string

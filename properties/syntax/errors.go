@@ -6,6 +6,7 @@ import (
 	"fmt"
 	"sort"
 	"strings"
+	"unicode"
 	"unicode/utf8"
 )
 
@@ -46,7 +47,7 @@ const shown = 140
 // under the token, and what there is instead. It ends in a line break.
 func (e *Error) Text() string {
 	var b strings.Builder
-	b.WriteString(e.Error())
+	b.WriteString(printable(e.Error()))
 	b.WriteByte('\n')
 	src := e.Source
 	at := min(e.Column-1, len(src))
@@ -68,7 +69,7 @@ func (e *Error) Text() string {
 		}
 		end = min(end, tail)
 	}
-	fmt.Fprintf(&b, "        %s%s%s\n        ", prefix, src[lead:tail], suffix)
+	fmt.Fprintf(&b, "        %s%s%s\n        ", prefix, printable(src[lead:tail]), suffix)
 	b.WriteString(strings.Repeat(" ", utf8.RuneCountInString(prefix)))
 	for _, r := range src[lead:at] {
 		if r != '\t' { // a tab stays one, so that the carets stand right
@@ -79,9 +80,20 @@ func (e *Error) Text() string {
 	b.WriteString(strings.Repeat("^", max(1, utf8.RuneCountInString(src[at:max(at, end)]))))
 	b.WriteByte('\n')
 	if e.Hint != "" {
-		fmt.Fprintf(&b, "    %s\n", e.Hint)
+		fmt.Fprintf(&b, "    %s\n", printable(e.Hint))
 	}
 	return b.String()
+}
+
+// printable replaces control characters, which a file could use to write
+// elsewhere on a terminal; tabs stay. The number of runes stays the same.
+func printable(s string) string {
+	return strings.Map(func(r rune) rune {
+		if r != '\t' && unicode.IsControl(r) {
+			return utf8.RuneError
+		}
+		return r
+	}, s)
 }
 
 // runeStart moves i down to where a rune of s starts; where s is not UTF-8, i stays.

@@ -31,6 +31,17 @@ func TestText(t *testing.T) {
 	}
 }
 
+// TestNoControlCharacters: nothing that a file holds reaches the terminal raw.
+func TestNoControlCharacters(t *testing.T) {
+	_, err := Parse("x.rules", "rule a { \x1b[2J }\nrule b { claim x always: \"\x1b[31m\" \"\x1b\" }\n\x00")
+	for _, r := range err.(Errors).Text() {
+		if r < ' ' && r != '\n' || r == 0x7f {
+			t.Errorf("control character %q in\n%q", r, err.(Errors).Text())
+			break
+		}
+	}
+}
+
 func TestNear(t *testing.T) {
 	names := []string{"Lock", "TryLock", "Unlock", "a"}
 	for _, c := range [][2]string{

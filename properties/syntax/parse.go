@@ -82,13 +82,16 @@ func (p *parser) expect(w string) *Token {
 	return p.advance()
 }
 
-// since gives the span from a token's start to the end of the last token read.
+// since gives the span from a token's start to the end of the last written token read.
 func (p *parser) since(from int) Span {
-	to := from
-	if p.i > 0 {
-		to = max(to, p.toks[p.i-1].To)
+	last := p.i - 1
+	for last > 0 && p.toks[last].auto {
+		last--
 	}
-	return Span{from, to}
+	if last < 0 {
+		return Span{from, from}
+	}
+	return Span{from, max(from, p.toks[last].To)}
 }
 
 // shownToken is how a message names the current token.
@@ -255,26 +258,33 @@ func (p *parser) skip() {
 
 func (p *parser) file() {
 	if p.at("ruleset") {
-		p.guard(func() {
+		var name *Ident
+		if p.guard(func() {
 			p.advance()
-			p.f.RuleSet = p.name("the name of the rule set")
-		})
+			name = p.name("the name of the rule set")
+		}) {
+			p.f.RuleSet = name
+		}
 	}
 	for p.at("import") {
-		if !p.guard(p.importLine) {
+		var im *Import
+		if p.guard(func() { im = p.importLine() }) {
+			p.f.Imports = append(p.f.Imports, im)
+		} else {
 			p.f.BadImport = true
 		}
 	}
 	for p.tok().Kind != EOF {
 		before := p.i
-		p.guard(func() {
+		var d Decl
+		if p.guard(func() {
 			switch {
 			case p.at("rule"):
-				p.rule()
+				p.rule() // kept whatever follows it
 			case p.at("model"):
-				p.f.Decls = append(p.f.Decls, p.model())
+				d = p.model()
 			case p.at("enable", "disable", "soften", "root", "noroot", "pin"):
-				p.setting()
+				d = p.setting()
 			case p.at("import"):
 				p.f.BadImport = true
 				p.errs = append(p.errs, p.f.Errorf(Grammatical, p.tok().Span, "", "import stands before all rules, models and settings"))
@@ -282,7 +292,9 @@ func (p *parser) file() {
 			default:
 				p.fail("a rule, a model or a setting")
 			}
-		})
+		}) && d != nil {
+			p.f.Decls = append(p.f.Decls, d)
+		}
 		if p.i == before { // a closing brace too many
 			p.i++
 		}
@@ -321,7 +333,7 @@ func (p *parser) int(what string) *IntLit {
 	return &IntLit{t.Span, v}
 }
 
-func (p *parser) importLine() {
+func (p *parser) importLine() *Import {
 	from := p.expect("import").From
 	im := &Import{}
 	if p.tok().Kind == Name {
@@ -329,7 +341,7 @@ func (p *parser) importLine() {
 	}
 	im.Path = p.str(`the package's path between "…"`)
 	im.Span = p.since(from)
-	p.f.Imports = append(p.f.Imports, im)
+	return im
 }
 
 func (p *parser) rule() {
@@ -553,7 +565,7 @@ func (p *parser) model() *Model {
 	return m
 }
 
-func (p *parser) setting() {
+func (p *parser) setting() *Setting {
 	t := p.advance()
 	s := &Setting{Word: t.Text}
 	switch t.Text {
@@ -584,7 +596,7 @@ func (p *parser) setting() {
 		s.Reason = p.reason()
 	}
 	s.Span = p.since(t.From)
-	p.f.Decls = append(p.f.Decls, s)
+	return s
 }
 
 func (p *parser) event() *Event {
