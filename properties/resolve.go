@@ -181,20 +181,28 @@ func (r *resolver) rule(d *syntax.Rule) {
 	before := len(r.errs)
 	bad := false
 
+	// step runs f on a clause, unless an earlier step found an error in it.
+	failed := map[syntax.Clause]bool{}
+	step := func(c syntax.Clause, f func()) {
+		if !failed[c] && !r.clause(f) {
+			failed[c] = true
+		}
+	}
 	for _, c := range d.Clauses {
 		_, isBad := c.(*syntax.Bad)
 		bad = bad || isBad
-		r.clause(func() { r.name(c) })
+		step(c, func() { r.name(c) })
 	}
 	for _, c := range d.Clauses {
 		if e, ok := c.(*syntax.Each); ok && e == r.inst {
-			if !r.clause(func() { r.each(e) }) {
+			step(c, func() { r.each(e) })
+			if failed[c] {
 				r.instTypes = nil // the events are still checked, with any type
 			}
 		}
 	}
 	for _, c := range d.Clauses {
-		r.clause(func() { r.events(c) })
+		step(c, func() { r.events(c) })
 	}
 	nonneg := make([]bool, len(r.countNames))
 	for i := range nonneg {
@@ -210,11 +218,11 @@ func (r *resolver) rule(d *syntax.Rule) {
 		switch c := c.(type) {
 		case *syntax.Claim:
 			claims++
-			r.clause(func() { r.claim(c, nonneg) })
+			step(c, func() { r.claim(c, nonneg) })
 		case *syntax.Example:
-			r.clause(func() { r.example(c) })
+			step(c, func() { r.example(c) })
 		case *syntax.Model:
-			r.clause(func() { r.out.Models = append(r.out.Models, r.model(c)) })
+			step(c, func() { r.out.Models = append(r.out.Models, r.model(c)) })
 		}
 	}
 	if claims == 0 && len(r.errs) == before && !bad {
@@ -323,9 +331,6 @@ func (r *resolver) each(e *syntax.Each) {
 func (r *resolver) events(c syntax.Clause) {
 	switch c := c.(type) {
 	case *syntax.Count:
-		if c.Since != nil {
-			panic(bail{}) // said before
-		}
 		weight := int64(1)
 		if c.By != nil {
 			weight = r.weight(c.By)
