@@ -21,13 +21,25 @@
 // or what pointers of one type point to; a site is a call, defer or go
 // statement; a group is the set of candidates of a dynamic call.
 //
+// In code: n node, s site or summary, t table, m mask of roots, p place; rel is
+// "relative to roots", ext the effect of a callee without body.
+//
+// # Asking
+//
+// Of answers for a function, OfCall for one call: it knows the candidates of a
+// dynamic call, and for callees without body the types of these arguments and
+// what they may call back. MayOverwriteField and its likes answer for any object;
+// OverwritesParamField for the object of a root. InitOnlyGlobal, GlobalNonNil and
+// GlobalConst answer for package variables.
+//
 // # Phases
 //
 // Compute runs them in this order: scan (stores.go) reads the stores, loads and
 // calls of each body; order (graph.go) finds the components; then for each
 // component, callees first, overwrites (table.go), exits (exits.go), purity
 // (table.go), results (results.go), flows (flows.go), each to its least
-// fixpoint.
+// fixpoint. sanity.go solves everything once more and must find no change;
+// random_test.go compares summaries with runs of random programs.
 //
 // # Instructions
 //

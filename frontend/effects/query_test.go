@@ -69,6 +69,9 @@ func copying(r io.Reader) int {
 
 func opens(f *os.File) { f.Close() }
 
+func joins(e error) error   { return errors.Join(e, ErrX) }
+func joinsAny(e error) error { return errors.Join(e) }
+
 func dyn(f func(*S), s *S) { f(s) }
 func use()               { dyn(setB, &S{}) }
 `
@@ -138,6 +141,9 @@ func TestQueries(t *testing.T) {
 		{"and only that", call("opens").MayOverwriteField(a), false},
 		{"a dynamic call does what its candidates do", call("dyn").OverwritesParamField(0, fb), true},
 		{"and keeps the root apart", call("dyn").MayOverwriteFieldElsewhere(fb), false},
+		{"a sentinel is joined", call("joins").Result(0).NeverNil(), true},
+		{"nothing is known of what is joined", call("joinsAny").Result(0).Known(), false},
+		{"a joined parameter decides", of("joinsAny").Result(0).NilIff == 0, true},
 		{"ErrX is a sentinel", b.table.GlobalNonNil(b.pkg.Var("ErrX")), true},
 		{"ErrY is assigned to", b.table.GlobalNonNil(b.pkg.Var("ErrY")), false},
 		{"late is nil at first", b.table.GlobalNonNil(b.pkg.Var("late")), false},

@@ -46,6 +46,9 @@ func genBody(r *rand.Rand, fns, depth, n int) []rstmt {
 		if depth < 2 {
 			ops = append(ops, "ifnil", "ifeq", "closure", "closurevar", "defer")
 		}
+		if depth > 0 {
+			ops = append(ops, "panic", "recover")
+		}
 		s.op = ops[r.IntN(len(ops))]
 		switch s.op {
 		case "ifnil", "ifeq":
@@ -91,6 +94,10 @@ func (s rstmt) print(b *strings.Builder, fns []rfunc, ind string) {
 		w("v%d = %s(v%d, v%d, v%d)", s.x, fns[s.fn].name, s.y, s.z, s.x)
 	case "dyn":
 		w("v%d = apply(%s, v%d, v%d, v%d)", s.x, fns[s.fn].name, s.y, s.z, s.x)
+	case "panic":
+		w("panic(v%d)", s.x)
+	case "recover":
+		w("if r, ok := recover().(*N); ok {\n%s\tv%d = r\n%s}", ind, s.x, ind)
 	case "ifnil":
 		w("if v%d == nil {", s.x)
 		block(s.body)
@@ -134,7 +141,6 @@ type machine struct {
 	g      *robj
 	gset   bool
 	writes map[*robj]*[numFields]bool
-	steps  int
 }
 
 func (m *machine) field(o *robj, f int) **robj {
@@ -152,31 +158,55 @@ func (m *machine) store(o *robj, f int, v *robj) {
 	m.writes[o][f] = true
 }
 
-func (m *machine) call(fn int, a [numArgs]*robj) *robj {
+// thrown is an explicit panic.
+type thrown struct{ val *robj }
+
+// frame is one activation of a function or closure.
+type frame struct {
+	m        *machine
+	v        *[numVars]*robj
+	deferred [][]rstmt
+	unwinds  **thrown // the panic that recover stops: this call is deferred by its frame
+}
+
+func (m *machine) call(fn int, a [numArgs]*robj) (res *robj) {
 	var v [numVars]*robj
 	copy(v[:], a[:])
-	var deferred [][]rstmt
-	m.run(m.fns[fn].body, &v, &deferred)
-	// Results are evaluated before deferred calls run.
-	res := v[m.fns[fn].ret]
-	for i := len(deferred) - 1; i >= 0; i-- {
-		var inner [][]rstmt
-		m.closure(deferred[i], &v, &inner)
-	}
+	// Results are evaluated before deferred calls run; after a panic that was
+	// stopped they are zero.
+	m.activate(&v, nil, m.fns[fn].body, func() { res = v[m.fns[fn].ret] })
 	return res
 }
 
-func (m *machine) closure(body []rstmt, v *[numVars]*robj, inner *[][]rstmt) {
-	m.run(body, v, inner)
-	for i := len(*inner) - 1; i >= 0; i-- {
-		var next [][]rstmt
-		m.closure((*inner)[i], v, &next)
+// activate runs a body, done if it comes to its end, and then what it deferred.
+func (m *machine) activate(v *[numVars]*robj, unwinds **thrown, body []rstmt, done func()) {
+	f := &frame{m: m, v: v, unwinds: unwinds}
+	try := func(run func()) (th *thrown) {
+		defer func() {
+			if p := recover(); p != nil {
+				var ok bool
+				if th, ok = p.(*thrown); !ok {
+					panic(p)
+				}
+			}
+		}()
+		run()
+		return nil
+	}
+	th := try(func() { f.run(body); done() })
+	for i := len(f.deferred) - 1; i >= 0; i-- {
+		if again := try(func() { m.activate(v, &th, f.deferred[i], func() {}) }); again != nil {
+			th = again
+		}
+	}
+	if th != nil {
+		panic(th)
 	}
 }
 
-func (m *machine) run(body []rstmt, v *[numVars]*robj, deferred *[][]rstmt) {
+func (fr *frame) run(body []rstmt) {
+	m, v := fr.m, fr.v
 	for _, s := range body {
-		m.steps++
 		switch s.op {
 		case "copy":
 			v[s.x] = v[s.y]
@@ -192,25 +222,31 @@ func (m *machine) run(body []rstmt, v *[numVars]*robj, deferred *[][]rstmt) {
 			m.g, m.gset = v[s.x], true
 		case "gget":
 			v[s.x] = m.g
+		case "panic":
+			panic(&thrown{v[s.x]})
+		case "recover":
+			if fr.unwinds != nil && *fr.unwinds != nil {
+				v[s.x] = (*fr.unwinds).val
+				*fr.unwinds = nil
+			}
 		case "call", "dyn":
 			v[s.x] = m.call(s.fn, [numArgs]*robj{v[s.y], v[s.z], v[s.x]})
 		case "ifnil":
 			if v[s.x] == nil {
-				m.run(s.body, v, deferred)
+				fr.run(s.body)
 			} else {
-				m.run(s.alt, v, deferred)
+				fr.run(s.alt)
 			}
 		case "ifeq":
 			if v[s.x] == v[s.y] {
-				m.run(s.body, v, deferred)
+				fr.run(s.body)
 			} else {
-				m.run(s.alt, v, deferred)
+				fr.run(s.alt)
 			}
 		case "closure", "closurevar":
-			var inner [][]rstmt
-			m.closure(s.body, v, &inner)
+			m.activate(v, nil, s.body, func() {})
 		case "defer":
-			*deferred = append(*deferred, s.body)
+			fr.deferred = append(fr.deferred, s.body)
 		default:
 			panic(s.op)
 		}
@@ -306,7 +342,19 @@ func checkRun(t *testing.T, r *rand.Rand, b *built, fns []rfunc, i int, fn *ssa.
 			}
 		}
 	}
-	res := m.call(i, args)
+	var res *robj
+	var panicked *thrown
+	func() {
+		defer func() {
+			if p := recover(); p != nil {
+				var ok bool
+				if panicked, ok = p.(*thrown); !ok {
+					panic(p)
+				}
+			}
+		}()
+		res = m.call(i, args)
+	}()
 	s := b.table.Of(fn)
 	n := b.pkg.Pkg.Scope().Lookup("N").Type().Underlying().(*types.Struct)
 
@@ -337,8 +385,35 @@ func checkRun(t *testing.T, r *rand.Rand, b *built, fns []rfunc, i int, fn *ssa.
 	if changed && s.PureGetter() {
 		t.Error("a pure getter changed something")
 	}
-	if s.MayPanic() || s.NeverReturns() {
-		t.Error("it returns and has no panics")
+	switch {
+	case panicked != nil && !s.MayPanic():
+		t.Error("it panicked")
+	case panicked == nil && s.NeverReturns():
+		t.Error("it returned")
+	}
+
+	// Flows into memory.
+	for k, a := range args {
+		for o := range reachable(a, map[*robj]bool{}) {
+			if o.origin >= 0 && o.origin != k && !s.Flow(o.origin).ToRoot(k) {
+				t.Errorf("parameter %d is in the memory of parameter %d", o.origin, k)
+			}
+		}
+	}
+	for _, top := range []*robj{g, m.g} {
+		for o := range reachable(top, map[*robj]bool{}) {
+			if o.origin >= 0 && !s.Flow(o.origin).Global {
+				t.Errorf("parameter %d is in a package variable", o.origin)
+			}
+		}
+	}
+	if panicked != nil {
+		for o := range reachable(panicked.val, map[*robj]bool{}) {
+			if o.origin >= 0 && !s.Flow(o.origin).Kept {
+				t.Errorf("parameter %d is in a panic", o.origin)
+			}
+		}
+		return true
 	}
 
 	// Results.
@@ -378,24 +453,10 @@ func checkRun(t *testing.T, r *rand.Rand, b *built, fns []rfunc, i int, fn *ssa.
 		t.Errorf("result is not %q", rs)
 	}
 
-	// Flows.
+	// Flows into the result.
 	for o := range reachable(res, map[*robj]bool{}) {
 		if o.origin >= 0 && !s.Flow(o.origin).ToResult(0) {
 			t.Errorf("parameter %d is in the result", o.origin)
-		}
-	}
-	for k, a := range args {
-		for o := range reachable(a, map[*robj]bool{}) {
-			if o.origin >= 0 && o.origin != k && !s.Flow(o.origin).ToRoot(k) {
-				t.Errorf("parameter %d is in the memory of parameter %d", o.origin, k)
-			}
-		}
-	}
-	for _, top := range []*robj{g, m.g} {
-		for o := range reachable(top, map[*robj]bool{}) {
-			if o.origin >= 0 && !s.Flow(o.origin).Global {
-				t.Errorf("parameter %d is in a package variable", o.origin)
-			}
 		}
 	}
 	return true

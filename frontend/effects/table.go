@@ -458,11 +458,24 @@ func (t *Table) ofCall(instr ssa.CallInstruction) *Summary {
 	if s == nil {
 		panic(fmt.Sprintf("effects: %s: no call site %s", instr.Parent(), instr))
 	}
-	callee := &t.nodes[s.target].sum
-	if s.ext == nil {
+	target := t.nodes[s.target]
+	callee := &target.sum
+	call, isCall := instr.(*ssa.Call)
+	joins := isCall && target.model.joinsNil
+	if s.ext == nil && !joins {
 		return callee
 	}
 	sum := *callee
+	if joins {
+		// What is joined is known at the call only.
+		ev := evaluator{t: t, n: n}
+		r := unknownResult(call.Type())
+		r.Nil = ev.evalJoin(call, r, call.Block(), 0).Nil
+		sum.results = []Result{r}
+	}
+	if s.ext == nil {
+		return &sum
+	}
 	sum.rel = s.ext.direct
 	sum.writes = s.ext.deep
 	for i := range n.sites {
