@@ -82,10 +82,11 @@ func (p *parser) expect(w string) *Token {
 	return p.advance()
 }
 
-// since gives the span from a token's start to the end of the last written token read.
+// since gives the span from a token's start to the end of the last token read
+// that is no semicolon.
 func (p *parser) since(from int) Span {
 	last := p.i - 1
-	for last > 0 && p.toks[last].auto {
+	for last > 0 && p.toks[last].Kind == Word && p.toks[last].Text == ";" {
 		last--
 	}
 	if last < 0 {
