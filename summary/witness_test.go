@@ -419,3 +419,55 @@ func TestGrammarAgainstRounds(t *testing.T) {
 		}
 	}
 }
+
+// Without windows, every witness is a heaviest run or a pump: the second and third
+// way of Witness, on random systems.
+func TestFallbackWitnesses(t *testing.T) {
+	defer func(old []int64) { windows = old }(windows)
+	windows = nil
+	pumped, repeats, heaviest := 0, 0, 0
+	for seed := range uint64(1500) {
+		r := rand.New(rand.NewPCG(seed, 4))
+		sys := randomSystem(r, int(seed%4))
+		q := questions(r)[seed%3]
+		q.AnyMoment = seed%2 == 0
+		q.Prefixes = seed%5 == 0
+		e := New(sys, 0)
+		h := sys.Starts()[0]
+		s := e.Solve(q)
+		if seed%7 == 0 {
+			s.allowance = -1
+		}
+		v := s.Greatest(h, all)
+		bound := int64(60)
+		switch v.Kind {
+		case Finite:
+			n, _ := v.Int64()
+			bound = n - 1
+			heaviest++
+		case NoPath:
+			continue
+		default:
+			pumped++
+		}
+		p, err := s.FindWitness(h, all, bound)
+		if err != nil {
+			t.Fatalf("seed %d: %v, bound %d: %v\n%s", seed, v, bound, err, sys)
+		}
+		run := replayed(t, sys, p)
+		if got := run.Total[0]*q.Weights[0] + run.Total[1]*q.Weights[1]; got <= bound {
+			t.Fatalf("seed %d: %v, bound %d: witness weighs %d\n%s", seed, v, bound, got, sys)
+		}
+		for _, r := range p.Repeats {
+			repeats++
+			for i := range r.Len * (r.Times - 1) {
+				if a, b := p.Steps[r.From+i], p.Steps[r.From+i+r.Len]; a.Head != b.Head || a.Index != b.Index {
+					t.Fatalf("seed %d: %v: steps %d and %d differ", seed, r, r.From+i, r.From+i+r.Len)
+				}
+			}
+		}
+	}
+	if pumped < 50 || heaviest < 50 || repeats < 50 {
+		t.Errorf("only %d pumped, %d heaviest, %d repeats", pumped, heaviest, repeats)
+	}
+}
