@@ -24,6 +24,14 @@ type blamed struct {
 	mask    []ruleAt            // switched off before asking again
 }
 
+// event is the text of the event that breaks a claim about moments.
+func (b *blamed) event() string {
+	if b.passed != nil {
+		return b.passed.Text
+	}
+	return b.cause.Text
+}
+
 // blame finds the frame and the step that lose the instance.
 func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leaving) (*blamed, *stopped) {
 	w := a.weights
@@ -31,13 +39,25 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 	if b.opening >= 0 {
 		b.opened = j.spot(t, b.opening)
 	}
-	act, stop := j.frame(s, w, t, b.opening, by)
+	act, stop := j.frame(s, a, bound, t, b.opening, by)
 	if stop != nil {
 		return nil, stop
 	}
 	b.act = act
 	if by == byMoment {
 		j.causeAtMoment(a, t, b)
+		// The event may stand in a callee that is right on its own: then the step
+		// of the blamed function that leads to it is the one to change.
+		last := len(t.moves) - 1
+		if a.stops == 0 && b.opening >= 0 {
+			last = b.opening
+		}
+		if j.endsIn(a, t, b) != b.act {
+			if at, ok := j.anchor(t, b.act, last); ok {
+				event := b.cause
+				b.passed, b.cause, b.kind = &event, at, properties.StepCall
+			}
+		}
 		return b, nil
 	}
 	from := b.opening + 1
@@ -76,16 +96,22 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 	return b, nil
 }
 
-// frame climbs from the function of the opening event while a function, judged
-// alone, is right or keeps a contract.
-func (j *judge) frame(s *properties.Start, w []int64, t *trace, opening int, by leaving) (int, *stopped) {
-	if opening < 0 {
+// frame climbs from the function of the opening event (for a claim about
+// moments: of the event that breaks it) while a function, judged alone, is
+// right or keeps a contract.
+func (j *judge) frame(s *properties.Start, a ask, bound int64, t *trace, opening int, by leaving) (int, *stopped) {
+	act := 0
+	switch {
+	case by == byMoment && a.stops != 0:
+		act = j.actAtEnd(t)
+	case opening < 0:
 		return 0, nil
+	default:
+		act = t.moves[opening].act
 	}
-	act := t.moves[opening].act
 	lent := -1 // innermost function that was passed for its contract
 	for act > 0 {
-		right, contract, stop := j.alone(s, w, t, act)
+		right, contract, stop := j.alone(s, a, bound, t, act, by)
 		if stop != nil {
 			return 0, stop
 		}
@@ -100,7 +126,7 @@ func (j *judge) frame(s *properties.Start, w []int64, t *trace, opening int, by 
 	if lent >= 0 && by != byMoment {
 		// Everybody up to the root is uniform: then nobody on this path settles, and
 		// the innermost one is the place to look at, unless a settler is known.
-		u := direction(w)
+		u := direction(a.weights)
 		own, stop := j.surplusOf(s.Head, s.Born, u)
 		if stop != nil {
 			return 0, stop
@@ -127,23 +153,38 @@ func (j *judge) settled(s *properties.Start, u []int64) bool {
 }
 
 // alone judges an activation from its entry head: right if it leaves nothing
-// or hands all on; a contract if it counts once and returns with the same
-// surplus, or with it exactly on success.
-func (j *judge) alone(s *properties.Start, w []int64, t *trace, act int) (right, contract bool, stop *stopped) {
+// or hands all on (for a claim about moments: if it keeps the claim); a contract
+// if it counts once and returns with the same surplus, or with it exactly on
+// success.
+func (j *judge) alone(s *properties.Start, a ask, bound int64, t *trace, act int, by leaving) (right, contract bool, stop *stopped) {
+	w := a.weights
 	head := t.acts[act].entry
-	owed := func(e properties.Exit) bool {
-		return !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
-	}
-	all, stop := j.span(head, w, func(properties.Exit) bool { return true })
-	if stop != nil || all.none {
-		return false, false, stop
-	}
-	rest, stop := j.span(head, w, owed)
+	inner := ask{start: head, weights: w, stops: a.stops, moment: a.moment}
+	most, stop := j.s.greatest(inner)
 	if stop != nil {
 		return false, false, stop
 	}
-	if rest.none || rest.is(0) {
-		return true, false, nil
+	if by == byMoment {
+		if !most.over(bound) {
+			return true, false, nil
+		}
+	} else {
+		if most.over(0) {
+			return false, false, nil // it loses the instance itself
+		}
+		all, stop := j.span(head, w, func(properties.Exit) bool { return true })
+		if stop != nil || all.none {
+			return false, false, stop
+		}
+		rest, stop := j.span(head, w, func(e properties.Exit) bool {
+			return !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
+		})
+		if stop != nil {
+			return false, false, stop
+		}
+		if rest.none || rest.is(0) {
+			return true, false, nil
+		}
 	}
 	if t.within(act, w) != 1 {
 		return false, false, nil
@@ -153,6 +194,18 @@ func (j *judge) alone(s *properties.Start, w []int64, t *trace, act int) (right,
 		return false, false, stop
 	}
 	return false, (own.uniform && own.always != 0) || (own.split && own.success != 0), nil
+}
+
+// anchor is the step of the blamed function that move i is, or that leads to
+// it through calls; ok is false if it shows none.
+func (j *judge) anchor(t *trace, act, i int) (at Spot, ok bool) {
+	for k := min(i, len(t.moves)-1); k >= 0; k-- {
+		if t.moves[k].act == act && t.moves[k].rule.Label != 0 {
+			s := j.spot(t, k)
+			return s, s.Place.Line > 0
+		}
+	}
+	return Spot{}, false
 }
 
 // spot describes the step of a move.
@@ -190,10 +243,6 @@ func (j *judge) causeAtMoment(a ask, t *trace, b *blamed) {
 				fn := j.m.Frame(t.end).Func
 				b.cause = Spot{Place: fn.Place, Function: fn.Name}
 			}
-			if b.opening < 0 {
-				// Nothing was counted: the function that comes to the event is to blame.
-				b.act = j.actAtEnd(t)
-			}
 			return
 		}
 	}
@@ -208,6 +257,17 @@ func (j *judge) causeAtMoment(a ask, t *trace, b *blamed) {
 	}
 	b.cause = j.spot(t, i)
 	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
+}
+
+// endsIn is the activation of the event that breaks a claim about moments.
+func (j *judge) endsIn(a ask, t *trace, b *blamed) int {
+	if a.stops != 0 {
+		return j.actAtEnd(t)
+	}
+	if b.opening >= 0 {
+		return t.moves[b.opening].act
+	}
+	return b.act
 }
 
 // actAtEnd is the activation in which the path stopped.

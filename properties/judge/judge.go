@@ -26,7 +26,7 @@ type Options struct {
 }
 
 const (
-	DefaultSteps  = 50_000_000
+	DefaultSteps  = 200_000
 	DefaultCauses = 20
 )
 
@@ -205,8 +205,7 @@ func (j *judge) undecided(s *properties.Start, c *properties.Claim, stop *stoppe
 	o := j.openFor(s, c, stop.reason, stop.steps)
 	if stop.at.Symbol != 0 {
 		if fn := j.m.Frame(stop.at).Func; fn.Place.Line > 0 {
-			o.Place = fn.Place
-			o.StoppedBy += "; most of them in " + fn.Name
+			o.StoppedBy += "; of all starts most went into " + fn.Name
 		}
 	}
 	o.SoFar = "nothing broken on what was seen; that is not an answer"
@@ -403,7 +402,7 @@ func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.
 		Root: s.Root, RootKind: s.Kind, Blame: fn, Instance: s.Instance, Home: s.Home,
 		Opened: b.opened, Cause: b.cause, CountNames: j.rule.Counts, Counts: t.total(), Starts: 1, OtherWay: b.other,
 	}
-	f.Message = message(fn.Name, j.rule, c, *q, subj, by, f.Counts, b.cause.Text)
+	f.Message = message(fn.Name, j.rule, c, *q, subj, by, f.Counts, b.event())
 	word := ""
 	f.OpenedVerb = "counted at"
 	if b.opening >= 0 {
@@ -418,21 +417,21 @@ func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.
 			}
 		}
 	}
-	f.CauseText = causeText(b.kind, by, c.Point, b.passed, b.cause.Place.File, *q, word)
+	f.CauseText = causeText(b.kind, by, b.passed, b.cause.Place.File, *q, word)
 	if text, ok := instantiate(q.Text, j.rule.Counts, f.Counts); ok {
 		f.Fact = text + " is false"
 	}
 	f.Path = t.steps(j.m, j.lastStep(t, by))
 	f.Assumptions = j.assumed(t)
-	what := s.Home
-	if what == "" {
-		what = s.Instance
+	// The instance as the blamed function sees it: the step there that opens it.
+	// Starts that reach it under other names are one finding.
+	seen, ok := j.anchor(t, b.act, b.opening)
+	if b.opening < 0 || !ok {
+		seen = Spot{Text: s.Home}
 	}
-	if what == "" {
-		what = "born " + b.opened.Text
-	}
+	what := seen.Text
 	f.Fingerprint = fingerprint(j.rule.Name, c.Name, q.Text, fn.Package, fn.Name, what, b.cause.Function, string(b.kind), b.cause.Text)
-	parts := []string{j.rule.Set, j.rule.Name, c.Name, fn.Package, fn.Name, what, placeKey(b.cause.Place)}
+	parts := []string{j.rule.Set, j.rule.Name, c.Name, fn.Package, fn.Name, what, placeKey(seen.Place), placeKey(b.cause.Place)}
 	if !b.byFork || s.Born {
 		parts = append(parts, placeKey(b.opened.Place))
 	}

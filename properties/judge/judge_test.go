@@ -302,7 +302,7 @@ func TestBornUnbornOutsideAndLoss(t *testing.T) {
 	want(t, build("panic"), "Load closed holds")
 	r := build("loss")
 	want(t, r, "Load closed broken")
-	if got := r.Findings[0].Message; got != "Load can lose its f while it is still opened" {
+	if got := r.Findings[0].Message; got != "Load can lose its f opened but not closed" {
 		t.Errorf("message %q", got)
 	}
 }

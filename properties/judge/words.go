@@ -27,10 +27,10 @@ func subject(rule *properties.ResolvedRule, start *properties.Start) string {
 	if len(names) == 0 {
 		return "its " + rule.Each.Name
 	}
-	if len(names) > 2 {
+	if len(names) > 1 {
 		return "its " + rule.Each.Name
 	}
-	return article(names[0]) + " " + strings.Join(names, " or ")
+	return article(names[0]) + " " + names[0]
 }
 
 // article is a or an, by the first letter that is spoken.
@@ -94,9 +94,11 @@ func message(who string, rule *properties.ResolvedRule, claim *properties.Claim,
 		case by == byMoment:
 			return fmt.Sprintf("%s can count %s more often than %s", who, names[p], names[n])
 		case by == byLoss && subj != "" && surplus:
-			return fmt.Sprintf("%s can lose %s while it is still %s", who, subj, names[p])
+			return fmt.Sprintf("%s can lose %s %s but not %s", who, subj, names[p], names[n])
 		case by == byLoss:
 			return fmt.Sprintf("%s can lose %s with more %s than %s", who, orIt(subj), names[p], names[n])
+		case subj != "" && surplus && rule.Moves:
+			return fmt.Sprintf("%s can %s with %s %s but not %s", who, verb, subj, names[p], names[n])
 		case subj != "" && surplus:
 			return fmt.Sprintf("%s can %s with %s still %s", who, verb, subj, names[p])
 		case subj != "":
@@ -177,8 +179,15 @@ func instantiate(formula string, names []string, counts []int64) (string, bool) 
 }
 
 // causeText says in a few words why the instance is lost at a step.
-func causeText(kind properties.StepKind, by leaving, point properties.Point, passed *Spot, samePlaceFile string, q properties.Question, word string) string {
-	if point == properties.Before || point == properties.After || by == byMoment {
+func causeText(kind properties.StepKind, by leaving, passed *Spot, here string, q properties.Question, word string) string {
+	if by == byMoment && passed != nil {
+		text := passed.Text
+		if text == "" {
+			text = "the event"
+		}
+		return fmt.Sprintf("this leads to %s in %s, where %s is false", text, lineOf(passed.Place, here), q.Text)
+	}
+	if by == byMoment {
 		return "here " + q.Text + " is false"
 	}
 	who := "this step"
@@ -204,11 +213,7 @@ func causeText(kind properties.StepKind, by leaving, point properties.Point, pas
 		if text == "" {
 			text = "the right way"
 		}
-		at := fmt.Sprintf("line %d", passed.Place.Line)
-		if passed.Place.File != samePlaceFile {
-			at = fmt.Sprintf("%s:%d", passed.Place.File, passed.Place.Line)
-		}
-		return fmt.Sprintf("%s passes by %s in %s", who, text, at)
+		return fmt.Sprintf("%s passes by %s in %s", who, text, lineOf(passed.Place, here))
 	}
 	if kind == properties.StepEvent {
 		return "this is one too many"
@@ -217,4 +222,12 @@ func causeText(kind properties.StepKind, by leaving, point properties.Point, pas
 		return who + " leaves it so"
 	}
 	return fmt.Sprintf("%s leaves it %s", who, word)
+}
+
+// lineOf names a line, with its file if it is another one than the reader's.
+func lineOf(p properties.Place, here string) string {
+	if p.File == here {
+		return fmt.Sprintf("line %d", p.Line)
+	}
+	return fmt.Sprintf("%s:%d", p.File, p.Line)
 }

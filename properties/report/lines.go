@@ -41,13 +41,13 @@ func Lines(w io.Writer, run *Run, opt Options) error {
 			fmt.Fprintf(b, "%s:   %*d/%d %s: %s [%s]\n", place(s.Place), digits, k+1, n, s.Function, text, strings.Join(c, ", "))
 		}
 	}
-	for i := range run.Result.Open {
-		o := &run.Result.Open[i]
+	for _, g := range grouped(run.Result.Open) {
+		o := &g[0]
 		inst := ""
 		if o.Instance != "" {
 			inst = " for " + o.Instance
 		}
-		fmt.Fprintf(b, "%s: undecided %s/%s: %s%s: %s\n", place(o.Place), o.Rule, o.Claim, o.Root.Name, inst, o.StoppedBy)
+		fmt.Fprintf(b, "%s: undecided %s: %s%s: %s\n", place(o.Place), claims(g), o.Root.Name, inst, o.StoppedBy)
 	}
 	if !opt.Quiet {
 		total, parts := Sentence(run.Result)

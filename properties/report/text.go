@@ -24,8 +24,8 @@ func Text(w io.Writer, run *Run, opt Options) error {
 		t.finding(&run.Result.Findings[i])
 		t.line("")
 	}
-	for i := range run.Result.Open {
-		t.open(&run.Result.Open[i])
+	for _, g := range grouped(run.Result.Open) {
+		t.open(g)
 		t.line("")
 	}
 	if opt.Assumptions && len(run.Result.Assumptions) > 0 {
@@ -104,16 +104,17 @@ func (t *texter) finding(f *judge.Finding) {
 	}
 	t.line("%s: %s%s", t.paint(bold, place(f.Cause.Place)), advice, t.paint(bold, f.Message))
 
+	lostAt := "lost at"
+	if !strings.HasPrefix(f.Point, "at ") {
+		lostAt = "broken at"
+	}
 	type fact struct{ label, at, text string }
 	var facts []fact
 	if f.Opened.Place.Line > 0 && (f.Opened.Place != f.Cause.Place || f.CauseText == "") {
 		facts = append(facts, fact{f.OpenedVerb, place(f.Opened.Place), f.Opened.Text})
 	}
 	if f.CauseText != "" {
-		facts = append(facts, fact{"lost at", place(f.Cause.Place), f.CauseText})
-	}
-	if len(facts) == 1 && facts[0].label == "lost at" && f.Opened.Place == f.Cause.Place {
-		facts[0].label = "broken at"
+		facts = append(facts, fact{lostAt, place(f.Cause.Place), f.CauseText})
 	}
 	widest := 0
 	for _, c := range facts {
@@ -322,17 +323,52 @@ func (t *texter) path(f *judge.Finding) {
 	}
 }
 
-func (t *texter) open(o *judge.Open) {
-	who := o.Root.Name
-	what := fmt.Sprintf("does every path of %s keep %s?", who, o.Formula)
+// grouped puts undecided questions that one thing stopped together: the claims
+// of a rule at one start.
+func grouped(open []judge.Open) [][]judge.Open {
+	var out [][]judge.Open
+	at := map[string]int{}
+	for _, o := range open {
+		key := strings.Join([]string{o.Set, o.Rule, o.Root.Package, o.Root.Name, place(o.Root.Place), o.Instance, o.StoppedBy, place(o.Place)}, "\x00")
+		i, ok := at[key]
+		if !ok {
+			i = len(out)
+			at[key] = i
+			out = append(out, nil)
+		}
+		out[i] = append(out[i], o)
+	}
+	return out
+}
+
+// claims names the claims of a group: mutex/balanced, not-early.
+func claims(g []judge.Open) string {
+	var names []string
+	for _, o := range g {
+		names = append(names, o.Claim)
+	}
+	return g[0].Rule + "/" + strings.Join(names, ", ")
+}
+
+func (t *texter) open(g []judge.Open) {
+	o := &g[0]
+	keep := o.Formula
+	if len(g) > 1 {
+		keep = fmt.Sprintf("%d claims of %s", len(g), o.Rule)
+	}
+	what := fmt.Sprintf("does every path of %s keep %s?", o.Root.Name, keep)
 	if o.Instance != "" {
-		what = fmt.Sprintf("does every path of %s keep %s for %s?", who, o.Formula, o.Instance)
+		what = fmt.Sprintf("does every path of %s keep %s for %s?", o.Root.Name, keep, o.Instance)
 	}
 	t.line("%s: %s: %s", t.paint(bold, place(o.Place)), t.paint(yellow, "undecided"), t.paint(bold, what))
 	label := func(name, rest string) {
 		t.line("    %s %s", t.paint(faint, pad(name, 11)), rest)
 	}
-	label("claim", o.Rule+"/"+o.Claim+", "+o.Point+": "+o.Formula)
+	if len(g) == 1 {
+		label("claim", o.Rule+"/"+o.Claim+", "+o.Point+": "+o.Formula)
+	} else {
+		label("claims", claims(g))
+	}
 	label("stopped by", o.StoppedBy)
 	if o.SoFar != "" {
 		label("so far", o.SoFar)
@@ -342,7 +378,11 @@ func (t *texter) open(o *judge.Open) {
 		if target == "" {
 			target = relative(o.Root.Package, t.run.Module)
 		}
-		label("to settle", fmt.Sprintf("pathtally check %s --only %s/%s --steps %d", target, o.Rule, o.Claim, o.Steps))
+		only := o.Rule
+		if len(g) == 1 {
+			only += "/" + o.Claim
+		}
+		label("to settle", fmt.Sprintf("pathtally check %s --only %s --steps %d", target, only, o.Steps))
 	}
 }
 
