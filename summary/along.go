@@ -173,11 +173,6 @@ func (c *completer) stepValue(rule int32) Value {
 	v := Value{Finite, w}
 	for _, h := range s.e.rules[rule].Spawn {
 		a := s.e.nt(spawned, s.e.nodeOf[h])
-		if s.q.leastWork() {
-			if s.cell(a).status == unsolved {
-				s.constant(a)
-			}
-		}
 		v = plus(v, s.value(a))
 	}
 	return v

@@ -209,7 +209,7 @@ func (e *Engine) Grammar(h pds.Head, accept func(pds.StateID) bool, q Question) 
 			}
 		}
 		g.Prods = append(g.Prods, out)
-		if e.g.nts[a].kind == spawned && e.g.nts[rhs[0]].kind == begun && s.endless[e.g.nts[a].of] {
+		if e.g.nts[a].kind == spawned && e.g.nts[rhs[0]].kind == begun && s.isEndless(e.g.nts[a].of) {
 			g.Endless = append(g.Endless, e.headOf(a))
 		}
 	})
@@ -263,7 +263,7 @@ func (e *Engine) Endless(h pds.Head) (heads []pds.Head, ok bool) {
 				}
 				listed[k] = true
 				s.value(e.nt(spawned, k))
-				if s.endless[k] {
+				if s.isEndless(k) {
 					heads = append(heads, h)
 				}
 			}

@@ -192,7 +192,7 @@ func (s *Solution) emitSpawned(a NT, t *tree, budget *int) (Path, error) {
 	}
 	endless := false
 	for e.g.nts[t.nt].kind == spawned || e.g.nts[t.nt].kind == begun {
-		endless = endless || e.g.nts[t.nt].kind == spawned && s.endless[e.g.nts[t.nt].of]
+		endless = endless || e.g.nts[t.nt].kind == spawned && s.isEndless(e.g.nts[t.nt].of)
 		t = t.kids[0]
 	}
 	sub, err := s.emit(t, budget)
@@ -215,7 +215,15 @@ func (s *Solution) emitBest(a NT, budget *int) (Path, error) {
 
 // bestTree follows best productions.
 func (s *Solution) bestTree(a NT) (*tree, error) {
-	return s.build(a, func(a NT) int32 { return s.cell(a).best })
+	return s.build(a, s.bestOf)
+}
+
+// bestOf is the best production of a nonterminal, see cell.best.
+func (s *Solution) bestOf(a NT) int32 {
+	for s.borrows(s.e.nodeOfNT(a)) {
+		s = s.base
+	}
+	return s.cell(a).best
 }
 
 // build makes the derivation that takes the same production wherever a

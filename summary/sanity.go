@@ -112,6 +112,12 @@ func (s *Solution) Sanity() error {
 		if c.status == unsolved || least && e.g.nts[a].kind == spawned {
 			continue
 		}
+		if s.borrows(e.nodeOfNT(a)) {
+			if b := s.base.value(a); b.String() != s.value(a).String() {
+				errs = append(errs, fmt.Errorf("%s: %v, taken over from %v", e.name(a), s.value(a), b))
+			}
+			continue
+		}
 		var v Value
 		v.Kind = NoPath
 		start, end := e.productions(a)

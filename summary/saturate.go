@@ -76,6 +76,8 @@ type Engine struct {
 	rules  []pds.Rule
 	target []node // per rule: the node of the successor head (pushed top); -1 for pop and stop
 	owner  []node // per rule
+	// spawners lists, per spawned node, who spawns it.
+	spawners map[node][]node
 
 	epoch   int32
 	queue   []node
@@ -93,7 +95,7 @@ func New(sys pds.System, budget int64) *Engine {
 	if budget <= 0 {
 		budget = DefaultBudget
 	}
-	return &Engine{sys: sys, budget: budget, nodeOf: map[pds.Head]node{}, pairOf: map[uint64]pair{}, worst: -1}
+	return &Engine{sys: sys, budget: budget, nodeOf: map[pds.Head]node{}, pairOf: map[uint64]pair{}, spawners: map[node][]node{}, worst: -1}
 }
 
 // Size says how much was built.
@@ -291,7 +293,9 @@ func (e *Engine) expand(n node, cone *[]node) int64 {
 		}
 		e.target = append(e.target, t)
 		for _, s := range r.Spawn {
-			e.enter(e.node(s), cone)
+			k := e.node(s)
+			e.spawners[k] = append(e.spawners[k], n)
+			e.enter(k, cone)
 		}
 		switch r.Kind {
 		case pds.Stop:

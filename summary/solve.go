@@ -165,6 +165,14 @@ type Solution struct {
 	endless  map[node]bool
 	searches map[int64]*search // by half-width; -1: weights ignored
 	gaveUp   []pds.Head
+	// base answers for all heads that lead to none of the rules in without; nil: none.
+	base    *Solution
+	without []RuleRef
+	touched struct { // nodes that lead to a rule in without
+		nodes map[node]bool
+		deps  int // len(e.deps) and len(e.nodes) when they were found
+		known int
+	}
 	// exact: look for pumps after every improvement, whatever it costs.
 	exact bool
 	// allowance of every component, see pumpAllowance; tests lower it.
@@ -183,6 +191,83 @@ func (e *Engine) Solve(q Question) *Solution {
 		s.doubt = 1
 	}
 	return s
+}
+
+// Without is the solution of the same question with some more rules taken out.
+// What does not lead to these rules is taken over from s, so asking costs only
+// what does.
+func (s *Solution) Without(rules []RuleRef) *Solution {
+	off := make(map[RuleRef]bool, len(rules))
+	for _, r := range rules {
+		off[r] = true
+	}
+	q := s.q
+	before := s.q.Off
+	q.Off = func(h pds.Head, rule int) bool {
+		return off[RuleRef{h, rule}] || before != nil && before(h, rule)
+	}
+	t := s.e.Solve(q)
+	t.doubt, t.exact, t.allowance = s.doubt, s.exact, s.allowance
+	t.base, t.without = s, slices.Clone(rules)
+	t.touched.known = -1
+	return t
+}
+
+// touches: the node leads to a rule that was taken out. The node must be closed;
+// then the answer is final.
+func (s *Solution) touches(n node) bool {
+	e := s.e
+	if s.touched.known != len(e.nodes) || s.touched.deps != len(e.deps) {
+		s.touched.known, s.touched.deps = len(e.nodes), len(e.deps)
+		s.touched.nodes = map[node]bool{}
+		var work []node
+		take := func(n node) {
+			if !s.touched.nodes[n] {
+				s.touched.nodes[n] = true
+				work = append(work, n)
+			}
+		}
+		for _, r := range s.without {
+			if n, ok := e.nodeOf[r.Head]; ok {
+				take(n)
+			}
+		}
+		for len(work) > 0 {
+			n := work[len(work)-1]
+			work = work[:len(work)-1]
+			for d := e.nodes[n].deps; d >= 0; d = e.deps[d].next {
+				take(e.deps[d].to)
+			}
+			for _, k := range e.spawners[n] {
+				take(k)
+			}
+		}
+	}
+	return s.touched.nodes[n]
+}
+
+func (e *Engine) nodeOfNT(a NT) node {
+	i := e.g.nts[a]
+	if i.kind == closed || i.kind == cutClosed {
+		return e.pairs[i.of].node
+	}
+	return i.of
+}
+
+// borrows: the base's answer for a nonterminal of the node is this one's too.
+func (s *Solution) borrows(n node) bool { return s.base != nil && !s.touches(n) }
+
+func (s *Solution) isEndless(n node) bool {
+	return s.endless[n] || s.borrows(n) && s.base.isEndless(n)
+}
+
+// pump is the pump of an unbounded nonterminal; nil if it has none of its own or
+// none was kept.
+func (s *Solution) pump(a NT) []pumpStep {
+	if p := s.pumps[a]; p != nil || !s.borrows(s.e.nodeOfNT(a)) {
+		return p
+	}
+	return s.base.pump(a)
 }
 
 func (s *Solution) cell(a NT) *cell {
@@ -212,7 +297,7 @@ func (s *Solution) live(p *prod) bool {
 			return false
 		}
 	case ifEndless:
-		return s.q.Prefixes || s.endless[s.e.g.nts[s.e.g.rhs[p.rhs]].of]
+		return s.q.Prefixes || s.isEndless(s.e.g.nts[s.e.g.rhs[p.rhs]].of)
 	case atMarks:
 		return s.e.rules[p.rule].Mark&s.q.StopMarks != 0
 	}
@@ -269,6 +354,9 @@ func (s *Solution) leastPrefixes() *Solution {
 			}
 		}
 		s.least = s.e.Solve(q)
+		if s.base != nil {
+			s.least = s.base.leastPrefixes().Without(s.without)
+		}
 		s.least.doubt = -s.doubt
 		s.least.exact = s.exact
 	}
@@ -436,6 +524,12 @@ func (s *Solution) collect(a NT) *ask {
 	take := func(a NT) {
 		c := s.cell(a)
 		if c.status != unsolved || c.local != 0 {
+			return
+		}
+		if s.borrows(s.e.nodeOfNT(a)) {
+			s.base.value(a)
+			b := s.base.cell(a)
+			c.status, c.val, c.best = b.status, b.val, b.best
 			return
 		}
 		if least && s.e.g.nts[a].kind == spawned {

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"fmt"
 	"math/big"
+	"math/rand/v2"
 	"strings"
 	"testing"
 
@@ -327,5 +328,66 @@ func TestSolvingGivesUp(t *testing.T) {
 	e.budget = DefaultBudget
 	if v := e.Solve(Question{Weights: []int64{1, 0}}).Greatest(h, all); v.Kind != Finite {
 		t.Errorf("with budget: %v", v)
+	}
+}
+
+// Taking rules out of a solution is the same as asking anew.
+func TestWithout(t *testing.T) {
+	changed := 0
+	for seed := range uint64(600) {
+		r := rand.New(rand.NewPCG(seed, 5))
+		sys := randomSystem(r, int(seed%4))
+		q := questions(r)[seed%3]
+		q.AnyMoment = seed%2 == 0
+		e := New(sys, 0)
+		base := e.Solve(q)
+		heads := sys.Heads()
+		if seed%3 == 0 {
+			base.Greatest(heads[0], all)
+		}
+		s := base
+		off := map[RuleRef]bool{}
+		for range 2 {
+			h := heads[r.IntN(len(heads))]
+			ref := RuleRef{h, r.IntN(len(sys.Rules(h, nil)))}
+			off[ref] = true
+			s = s.Without([]RuleRef{ref})
+			q2 := q
+			q2.Off = func(h pds.Head, rule int) bool { return off[RuleRef{h, rule}] }
+			anew := New(sys, 0).Solve(q2)
+			for _, h := range heads {
+				got, want := s.Greatest(h, all), anew.Greatest(h, all)
+				if got.String() != want.String() {
+					t.Fatalf("seed %d, %v without %v: %v, asked anew %v\n%s", seed, h, off, got, want, sys)
+				}
+				if got.String() != base.Greatest(h, all).String() {
+					changed++
+				}
+				p1, err1 := s.FindWitness(h, all, 0)
+				p2, err2 := anew.FindWitness(h, all, 0)
+				if fmt.Sprint(p1, err1) != fmt.Sprint(p2, err2) {
+					t.Fatalf("seed %d, %v without %v: witness %v %v, asked anew %v %v\n%s", seed, h, off, p1, err1, p2, err2, sys)
+				}
+			}
+			if err := s.Sanity(); err != nil {
+				t.Fatal(err)
+			}
+		}
+	}
+	if changed < 100 {
+		t.Errorf("only %d answers changed", changed)
+	}
+}
+
+func BenchmarkWithout(b *testing.B) {
+	e := New(loops(20000), 0)
+	h := pds.Head{State: 1, Symbol: 1}
+	base := e.Solve(Question{Weights: []int64{1, 0}})
+	base.Greatest(h, all)
+	for b.Loop() {
+		// The loop that is taken out is near the start: nearly all is kept.
+		if v := base.Without([]RuleRef{{pds.Head{State: 1, Symbol: 401}, 0}}).Greatest(h, all); v.Kind != Finite {
+			b.Fatal(v)
+		}
 	}
 }

@@ -224,7 +224,7 @@ func (w *search) grow(targets []NT) bool {
 			continue
 		}
 		if least && e.g.nts[a].kind == spawned {
-			put(s.cell(a).val, searchProd{id: -2, lhs: l, a: -1, b: -1})
+			put(s.value(a).n, searchProd{id: -2, lhs: l, a: -1, b: -1})
 			continue
 		}
 		start, end := e.productions(a)
@@ -464,15 +464,6 @@ func (w *search) tree(item int64) *tree {
 // pumped makes a derivation past the bound for unbounded targets: a shortest way
 // to a pump, the pump as often as is needed, and a shortest end.
 func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
-	if len(s.pumps) == 0 && !s.exact {
-		// Only found late: ask again, looking closely.
-		again := s.e.Solve(s.q)
-		again.doubt, again.exact = s.doubt, true
-		for _, a := range targets {
-			again.value(a)
-		}
-		return again.pumped(targets, bound)
-	}
 	e := s.e
 	w := s.search(targets, -1)
 	if w == nil {
@@ -508,7 +499,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 		}
 		final[l] = true
 		a := w.nts[l]
-		if _, ok := s.pumps[a]; ok && s.value(a).Kind == Unbounded {
+		if s.value(a).Kind == Unbounded && s.pump(a) != nil {
 			at = l
 			break
 		}
@@ -551,6 +542,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 		if s.exact {
 			panic("summary: witness: unbounded without a pump")
 		}
+		// Pumps were found late: ask again, looking closely.
 		again := s.e.Solve(s.q)
 		again.doubt, again.exact = s.doubt, true
 		for _, a := range targets {
@@ -588,7 +580,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 		return t, nil
 	}
 	anchor := w.nts[at]
-	pump := s.pumps[anchor]
+	pump := s.pump(anchor)
 	core, err := short(anchor)
 	if err != nil {
 		return nil, err
@@ -608,7 +600,7 @@ func (s *Solution) pumped(targets []NT, bound int64) (*tree, error) {
 				continue
 			}
 			if s.q.leastWork() && e.g.nts[b].kind == spawned {
-				gain = gain.add(s.cell(b).val)
+				gain = gain.add(s.value(b).n)
 				continue
 			}
 			t, err := s.bestTree(b)
@@ -691,7 +683,7 @@ func (s *Solution) treeWeight(t *tree, memo map[*tree]num) num {
 		sum := s.prodWeight(pr)
 		for i, k := range t.kids {
 			if k == nil {
-				sum = sum.add(s.cell(s.e.g.rhs[int(pr.rhs)+i]).val)
+				sum = sum.add(s.value(s.e.g.rhs[int(pr.rhs)+i]).n)
 				continue
 			}
 			n, ok := memo[k]
