@@ -76,6 +76,21 @@ func TestRoundTrip(t *testing.T) {
 	}
 }
 
+func TestGoldenJSON(t *testing.T) {
+	golden := filepath.Join("testdata", "drain.json")
+	want, err := os.ReadFile(golden)
+	if err != nil {
+		t.Fatal(err)
+	}
+	var out bytes.Buffer
+	if err := drain().WriteJSON(&out); err != nil {
+		t.Fatal(err)
+	}
+	if out.String() != string(want) {
+		t.Errorf("got\n%swant (%s)\n%s", out.String(), golden, want)
+	}
+}
+
 func TestReadErrors(t *testing.T) {
 	const head = `{"format": "pathtally-system", "version": 1, "counts": ["a"], "states": ["p"], "symbols": ["x"], `
 	rule := func(s string) string {

@@ -92,8 +92,13 @@ func loops(n int) family {
 
 func all(pds.StateID) bool { return true }
 
-// Measured on 2 cores shared with other work (linux/amd64, go 1.26); see the
-// metrics beside the times: nodes, pairs, productions.
+// Measured once on 2 cores shared with other work (AMD EPYC, linux/amd64, go
+// 1.26.8), seconds for saturation and solving together, ended / at any moment:
+//
+//	nested, 50,000 functions, 1 exit     200,000 pairs   0.5 / 0.9
+//	nested, 1,200 functions, 20 exits  1,007,000 pairs   4.7 / 3.7 (weights of 1,200 bits; saturation alone 0.8)
+//	recursion, 20,000 functions          140,000 pairs   0.5 / 0.8 (one component)
+//	loops, 50,000                        200,000 pairs   0.5 / 0.7
 func BenchmarkSolve(b *testing.B) {
 	for _, c := range []struct {
 		name string

@@ -22,34 +22,38 @@
 //
 //  1. Saturation ([Engine.Saturate]): which heads are reached, and their exits.
 //
-//  2. Grammar (grammar.go): nonterminals and productions, built when first used:
-//
-//     C[q g r]  from ⟨q, g⟩ until g is popped in r      closed
-//     O[q g]    from ⟨q, g⟩, stopped before g is popped open
-//     K, P      like C and O, stopped anywhere, spawned work too
-//     L[q g]    from ⟨q, g⟩, stopped before a loss
-//     S[q g]    spawned work that has ended: C[q g r] for any r, L[q g], or B[q g]
-//     if it can never end
-//     B[q g]    spawned work stopped anywhere: P[q g] or K[q g r]
-//
-//     ⟨q, g⟩ → ⟨r, ε⟩        C[q g r] → e
-//     ⟨q, g⟩ → ⟨p, h⟩        C[q g r] → e C[p h r];           O[q g] → e O[p h]
-//     ⟨q, g⟩ → ⟨p, h k⟩      C[q g r] → e C[p h s] C[s k r];  O[q g] → e O[p h] | e C[p h s] O[s k]
-//
-//     Open nonterminals come from the system itself and not from the grammar of
-//     ended runs: for { mu.Lock() } has no ended run, and still every moment of it
-//     counts.
+//  2. Grammar (grammar.go): nonterminals and productions, built when first used;
+//     see below.
 //
 //  3. Greatest weights ([Solution]): what has no run is dropped; then, component
 //     by component, values rise from nothing over (max, +); a cycle among the best
 //     productions is a pump with a gain, and the component and all that uses it are
-//     unbounded.
+//     unbounded. [Solution.Without] asks again with rules taken out.
 //
 //  4. Witnesses ([Solution.Witness]): not the heaviest run but a shortest one past
 //     a bound, as choices that [pds.Replay] executes.
 //
 //  5. Blame ([Solution.AlongPath]): what could still have come of each
 //     configuration of a run.
+//
+// # The grammar
+//
+//	C[q g r]  from ⟨q, g⟩ until g is popped in r         closed
+//	O[q g]    from ⟨q, g⟩, stopped before g is popped    open
+//	K, P      like C and O, stopped anywhere, spawned work too
+//	L[q g]    from ⟨q, g⟩, stopped before a loss
+//	S[q g]    spawned work that has ended: C[q g r] for any r, L[q g], or B[q g] if it can never end
+//	B[q g]    spawned work stopped anywhere: P[q g] or K[q g r]
+//
+//	⟨q, g⟩ → ⟨r, ε⟩        C[q g r] → e
+//	⟨q, g⟩ → ⟨p, h⟩        C[q g r] → e C[p h r];           O[q g] → e O[p h]
+//	⟨q, g⟩ → ⟨p, h k⟩      C[q g r] → e C[p h s] C[s k r];  O[q g] → e O[p h] | e C[p h s] O[s k]
+//
+// e is the rule's effect, followed by an S (in K and P: a B) for everything that the
+// rule spawns. O stops where the question says: O → ε, anywhere or before a mark.
+//
+// Open nonterminals come from the system itself and not from the grammar of ended
+// runs: for { mu.Lock() } has no ended run, and still every moment of it counts.
 //
 // [Engine.Grammar] hands the trimmed grammar to engines that ask for more than
 // weights.
