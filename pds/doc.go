@@ -29,7 +29,7 @@
 // [System] is the interface that the rest of the program works on: a system
 // given on demand, which is never listed as a whole. [Table] is a system listed
 // in full, made by a [Builder] or read from JSON with [Read]; [Table.WriteJSON]
-// writes it, and [Explore] lists what can be reached of any System.
+// writes it, and [List] and [Explore] list parts of any System.
 //
 // # Checks
 //

@@ -327,18 +327,10 @@ func (b *Builder) Table() *Table {
 	return t
 }
 
-// Explore lists what can be reached from starts in any system as a table with
-// made-up names (q1, g1, ...; ids are kept). It over-approximates: a head counts
-// as reached if some state and symbol on its own lead there. limit bounds the
-// number of heads; ok is false if it was passed.
+// Explore lists what can be reached from starts in any system, see [List]. It
+// over-approximates: any state that a pop leads to is taken to meet any symbol that
+// was pushed below. limit bounds the number of heads; ok is false if it was passed.
 func Explore(sys System, starts []Head, limit int) (t *Table, ok bool) {
-	n := sys.NumCounts()
-	counts := make([]string, n)
-	for i := range counts {
-		counts[i] = fmt.Sprintf("c%d", i)
-	}
-	b := NewBuilder(counts...)
-	found := map[Head][]Rule{}
 	// Any state that a pop leads to may meet any symbol that was ever pushed
 	// below: closed under both until nothing new appears.
 	var popped []StateID
@@ -360,9 +352,7 @@ func Explore(sys System, starts []Head, limit int) (t *Table, ok bool) {
 			return nil, false
 		}
 		h := work[i]
-		rules := sys.Rules(h, nil)
-		found[h] = rules
-		for _, r := range rules {
+		for _, r := range sys.Rules(h, nil) {
 			switch r.Kind {
 			case Pop:
 				if !seenPop[r.State] {
@@ -389,11 +379,38 @@ func Explore(sys System, starts []Head, limit int) (t *Table, ok bool) {
 			}
 		}
 	}
+	return List(sys, starts, work), true
+}
+
+// List makes a table of some heads of any system, with made-up names (c0, q1, g1,
+// label1, ...); ids of states, symbols, labels, doubts and marks are kept. Heads
+// are put in order; they must be different.
+func List(sys System, starts, heads []Head) *Table {
+	counts := make([]string, sys.NumCounts())
+	for i := range counts {
+		counts[i] = fmt.Sprintf("c%d", i)
+	}
+	b := NewBuilder(counts...)
+	heads = slices.Clone(heads)
+	sort.Slice(heads, func(i, j int) bool {
+		if heads[i].State != heads[j].State {
+			return heads[i].State < heads[j].State
+		}
+		return heads[i].Symbol < heads[j].Symbol
+	})
+	found := make([][]Rule, len(heads))
 	var maxState, maxSymbol, maxLabel, maxDoubt int
 	var marks Mark
-	for _, h := range work {
+	for _, h := range starts {
 		maxState, maxSymbol = max(maxState, int(h.State)), max(maxSymbol, int(h.Symbol))
-		for _, r := range found[h] {
+	}
+	for i, h := range heads {
+		found[i] = sys.Rules(h, nil)
+		maxState, maxSymbol = max(maxState, int(h.State)), max(maxSymbol, int(h.Symbol))
+		for _, r := range found[i] {
+			for _, s := range r.Spawn {
+				maxState, maxSymbol = max(maxState, int(s.State)), max(maxSymbol, int(s.Symbol))
+			}
 			maxState, maxSymbol = max(maxState, int(r.State)), max(maxSymbol, int(r.Top), int(r.Below))
 			maxLabel, maxDoubt = max(maxLabel, int(r.Label)), max(maxDoubt, int(r.Doubt))
 			marks |= r.Mark
@@ -414,14 +431,8 @@ func Explore(sys System, starts []Head, limit int) (t *Table, ok bool) {
 	for i := 1; i < 32 && marks>>i != 0; i++ {
 		b.Mark(fmt.Sprintf("mark%d", i))
 	}
-	sort.Slice(work, func(i, j int) bool {
-		if work[i].State != work[j].State {
-			return work[i].State < work[j].State
-		}
-		return work[i].Symbol < work[j].Symbol
-	})
-	for _, h := range work {
-		for _, r := range found[h] {
+	for i, h := range heads {
+		for _, r := range found[i] {
 			r.Effect = b.Effect(sys.Vector(r.Effect))
 			if r.Doubt != 0 {
 				r.DoubtEffect = b.Effect(sys.Vector(r.DoubtEffect))
@@ -432,7 +443,7 @@ func Explore(sys System, starts []Head, limit int) (t *Table, ok bool) {
 		}
 	}
 	b.t.starts = slices.Clone(starts)
-	return b.Table(), true
+	return b.Table()
 }
 
 // safeAdd adds; ok is false if the sum passes 64 bits.

@@ -3,7 +3,9 @@
 package summary
 
 import (
+	"fmt"
 	"slices"
+	"strings"
 
 	"pathtally/pds"
 )
@@ -48,6 +50,30 @@ type Grammar struct {
 	// the question asks for it (Question.Prefixes) or is about moments. A run of it that breaks a claim may be one
 	// that only a certain schedule shows.
 	Prefixes bool
+}
+
+// String lists the productions, one a line: left side, effect if any, right side;
+// spawned work stands behind "spawn", a stop before a rule reads "stop".
+func (g *Grammar) String() string {
+	var b strings.Builder
+	for _, p := range g.Prods {
+		fmt.Fprintf(&b, "%s ->", g.Names[p.Lhs])
+		if p.Effect != 0 {
+			fmt.Fprintf(&b, " e%d", p.Effect)
+		}
+		for i, a := range p.Rhs {
+			if i >= p.Main {
+				b.WriteString(" spawn")
+			}
+			b.WriteByte(' ')
+			b.WriteString(g.Names[a])
+		}
+		if p.Before {
+			b.WriteString(" stop")
+		}
+		b.WriteByte('\n')
+	}
+	return b.String()
 }
 
 // Grammar gives the trimmed grammar of the runs that [Solution.Greatest] speaks

@@ -387,6 +387,19 @@ func (e *Engine) exits(n node) []pds.StateID {
 	return exits
 }
 
+// Heads lists, in order, all heads whose exits are final: what was reached from the
+// starts that were saturated to the end. [pds.List] makes a table of them.
+func (e *Engine) Heads() []pds.Head {
+	var heads []pds.Head
+	for i := range e.nodes {
+		if e.nodes[i].closed {
+			heads = append(heads, e.nodes[i].head)
+		}
+	}
+	slices.SortFunc(heads, compareHeads)
+	return heads
+}
+
 // ensure saturates a head for a question.
 func (e *Engine) ensure(h pds.Head) (node, bool) {
 	if n, ok := e.nodeOf[h]; ok && e.nodes[n].closed {

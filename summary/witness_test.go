@@ -335,6 +335,40 @@ func TestGrammar(t *testing.T) {
 	}
 }
 
+func TestGrammarText(t *testing.T) {
+	b := pds.NewBuilder("n")
+	b.Start("q", "S")
+	b.Push("q", "S", "q", "A", "B", pds.Adds("n", 1), pds.Spawns("q", "A"))
+	b.Pop("q", "A", "q")
+	b.Stop("q", "B", pds.Marked(pds.LossMark))
+	b.Pop("q", "B", "r", pds.Adds("n", 2))
+	sys := b.Table()
+	e := New(sys, 0)
+	g, err := e.Grammar(sys.Starts()[0], all, Question{StopMarks: pds.MarkLoss})
+	if err != nil {
+		t.Fatal(err)
+	}
+	want := `start -> C[1 1 2]
+start -> O[1 1]
+C[1 1 2] -> e1 C[1 2 1] C[1 3 2] spawn S[1 2]
+O[1 1] -> e1 C[1 2 1] O[1 3] spawn S[1 2]
+C[1 2 1] ->
+C[1 3 2] -> e2
+S[1 2] -> C[1 2 1]
+O[1 3] -> stop
+`
+	if got := g.String(); got != want {
+		t.Errorf("got\n%swant\n%s", got, want)
+	}
+	if got := len(e.Heads()); got != 3 {
+		t.Errorf("%d heads", got)
+	}
+	list := pds.List(sys, sys.Starts(), e.Heads())
+	if err := list.Sanity(); err != nil || len(list.Heads()) != 3 {
+		t.Errorf("%v\n%s", err, list)
+	}
+}
+
 // Answers do not depend on what was asked before.
 func TestOrderOfQuestions(t *testing.T) {
 	sys := recursion(30)
