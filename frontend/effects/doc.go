@@ -90,6 +90,9 @@
 //     fields, elements and pointers (in a package with bodies, its own fields
 //     too), calls only function values and interface methods that it is handed,
 //     keeps nothing (unless modelled) but in its results, and does not panic.
+//   - An interface call whose interface is declared in a package without bodies,
+//     and a call of a function value whose type such a package can make, may
+//     reach such code besides the candidates: then nothing is known of results.
 //   - Code out of sight does not assign to variables of other packages, and a
 //     variable of type error named Err... or EOF in such a package is not nil.
 //   - Run-time panics (nil, index, division) are no explicit panics.

@@ -76,6 +76,9 @@ func (t *Table) stepExits(n *node) bool {
 		if n.partial {
 			e |= Returns | CallsOpaque
 		}
+		if n.open {
+			e |= Returns | CallsBlind
+		}
 	default:
 		e = t.exitsOf(n)
 	}

@@ -50,6 +50,23 @@ func (s *scanner) externCall(st *site, fn *ssa.Function) {
 	}
 }
 
+// openCall fills st.ext for a dynamic call that may reach code without body.
+func (s *scanner) openCall(st *site) {
+	st.ext = &extern{direct: make([]*set, len(st.args))}
+	c := st.instr.Common()
+	var pkg *types.Package
+	if c.IsInvoke() {
+		if pkg = c.Method.Pkg(); pkg == nil {
+			return // error.Error tells, it changes nothing
+		}
+	}
+	for k, a := range st.args {
+		r := s.t.reachOf(pkg, a.Type())
+		st.ext.direct[k] = r.direct
+		st.ext.deep = s.t.sets.union(st.ext.deep, r.deep)
+	}
+}
+
 // callbackMethods adds the methods of a value that code out of sight gets as an
 // interface.
 func (s *scanner) callbackMethods(st *site, handed ssa.Value, typ types.Type, iface *types.Interface) {

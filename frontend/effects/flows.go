@@ -141,6 +141,11 @@ func (t *Table) groupFlows(n *node) (fl []Flow, outside [2]Flow) {
 			outside[i] = outside[i].union(rename(f))
 		}
 	}
+	if n.open {
+		for i := range fl { // as blindFlows
+			fl[i].Results = ^uint64(0)
+		}
+	}
 	if n.partial {
 		// Anything may go anywhere.
 		all := Flow{^uint64(0), ^uint64(0) &^ (1<<globalBit | 1<<keptBit), true, true}

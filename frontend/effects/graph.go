@@ -50,7 +50,8 @@ type node struct {
 	id      nodeID
 	fn      *ssa.Function // nil: a group
 	members []nodeID      // group only
-	partial bool          // group only: code out of sight may be called too
+	partial bool          // group only: code out of sight may be called too, which may do anything
+	open    bool          // group only: code without body may be called too, see isOpen
 	sites   []site
 	globals []*ssa.Global                 // package variables of types with nil that the body loads; only until the graph is built
 	index   map[ssa.CallInstruction]int32 // sites by instruction, if there are many; made on demand
@@ -76,10 +77,32 @@ type groupKey struct {
 	first   **ssa.Function
 	n       int
 	partial bool
+	open    bool
 }
 
 // isBodyless says whether nothing is known about what fn does.
 func isBodyless(fn *ssa.Function) bool { return fn.Blocks == nil || isGenericOriginal(fn) }
+
+// usesTarget says whether the target's summary holds for the call: a callee
+// without body is described by ext, candidates of a dynamic call count besides.
+func (t *Table) usesTarget(s *site) bool {
+	return s.target != noNode && (s.ext == nil || t.nodes[s.target].fn == nil)
+}
+
+// isOpen says whether a dynamic call may reach code without body that no loaded
+// body mentions: the interface is declared where no bodies are loaded (its
+// implementations may come from there), or a function value of a type that code
+// without body can make.
+func (t *Table) isOpen(c *ssa.CallCommon) bool {
+	if !t.blind {
+		return false
+	}
+	if c.IsInvoke() {
+		return c.Method.Pkg() == nil || !t.bodies[c.Method.Pkg()]
+	}
+	n, ok := types.Unalias(c.Value.Type()).(*types.Named)
+	return !ok || n.Obj().Pkg() == nil || !t.bodies[n.Obj().Pkg()]
+}
 
 func (n *node) bodyless() bool { return n.blind || isBodyless(n.fn) }
 
@@ -108,15 +131,15 @@ func numRoots(fn *ssa.Function) int {
 // numParams is numRoots without the free variables.
 func numParams(fn *ssa.Function) int { return numRoots(fn) - len(fn.FreeVars) }
 
-func (t *Table) groupOf(fns []*ssa.Function, complete bool) nodeID {
-	key := groupKey{n: len(fns), partial: !complete}
+func (t *Table) groupOf(fns []*ssa.Function, complete, open bool) nodeID {
+	key := groupKey{n: len(fns), partial: !complete, open: open}
 	if len(fns) > 0 {
 		key.first = &fns[0]
 	}
 	if id, ok := t.byGroup[key]; ok {
 		return id
 	}
-	n := &node{id: nodeID(len(t.nodes)), partial: !complete, scc: -1}
+	n := &node{id: nodeID(len(t.nodes)), partial: !complete, open: open, scc: -1}
 	t.nodes = append(t.nodes, n)
 	t.byGroup[key] = n.id
 	t.groupKeep = append(t.groupKeep, fns)

@@ -215,7 +215,7 @@ func (t *Table) groupResults(n *node) []Result {
 			}
 			rs[j] = join(rs[j], r)
 		}
-		if n.partial {
+		if n.partial || n.open {
 			r := Result{Nil: IsNil | NonNil, Param: -1, NilIff: -1}
 			rs[j] = join(rs[j], r)
 		}
@@ -593,11 +593,11 @@ func (ev *evaluator) evalCall(c *ssa.Call, j int, b *ssa.BasicBlock, depth int) 
 		return unknown
 	}
 	r := callee.sum.results[j]
-	if r.bottom {
-		return r
-	}
 	if callee.fn == nil && len(callee.members) == 0 {
 		return unknown
+	}
+	if r.bottom {
+		return r
 	}
 	out := Result{Nil: r.Nil, Const: r.Const, Param: -1, NilIff: -1}
 	if unknown.Nil == 0 {

@@ -60,14 +60,15 @@ func (t *Table) writesOnce(n *node) (*set, []*set) {
 			}
 		}
 	}
-	for _, s := range n.sites {
+	for i := range n.sites {
+		s := &n.sites[i]
 		at := func(k int) mask {
 			if k < len(s.origins) {
 				return s.origins[k]
 			}
 			return unknownRoot
 		}
-		if s.target != noNode && s.ext == nil {
+		if t.usesTarget(s) {
 			put(t.nodes[s.target].sum.writes, unknownRoot)
 			for k, r := range t.nodes[s.target].sum.rel {
 				put(r, at(k))

@@ -395,12 +395,13 @@ func (s *scanner) call(instr ssa.CallInstruction) {
 	}
 	st := site{instr: instr, target: noNode, args: callArgs(c)}
 	var fn *ssa.Function
-	if c.IsInvoke() {
-		st.target = s.resolve(instr)
-	} else if fn, st.bound = calleeOf(c.Value); fn != nil {
+	if !c.IsInvoke() {
+		fn, st.bound = calleeOf(c.Value)
+	}
+	if fn != nil {
 		st.target = s.t.nodeOf(fn)
 	} else {
-		st.target = s.resolve(instr)
+		s.resolve(&st)
 	}
 	for _, a := range st.args {
 		st.origins = append(st.origins, s.originOf(a))
@@ -425,12 +426,18 @@ func (s *scanner) call(instr ssa.CallInstruction) {
 	s.n.sites = append(s.n.sites, st)
 }
 
-func (s *scanner) resolve(instr ssa.CallInstruction) nodeID {
+func (s *scanner) resolve(st *site) {
+	c := st.instr.Common()
 	if s.t.opts.Callees == nil {
-		return s.t.groupOf(nil, false)
+		st.target = s.t.groupOf(nil, false, false)
+		return
 	}
-	fns, complete := s.t.opts.Callees(instr)
-	return s.t.groupOf(fns, complete)
+	fns, complete := s.t.opts.Callees(st.instr)
+	open := s.t.isOpen(c)
+	st.target = s.t.groupOf(fns, complete, open)
+	if open {
+		s.openCall(st)
+	}
 }
 
 func (s *scanner) builtin(instr ssa.CallInstruction, b *ssa.Builtin) {

@@ -7,6 +7,7 @@ import (
 	"go/constant"
 	"go/types"
 	"math/bits"
+	"slices"
 	"sync"
 
 	"golang.org/x/tools/go/ssa"
@@ -28,6 +29,7 @@ type Table struct {
 	places *places
 	sets   *sets
 	bodies map[*types.Package]bool // packages with loaded bodies
+	blind  bool                    // some package with functions has none
 
 	nodes     []*node // by nodeID
 	byFn      map[*ssa.Function]nodeID
@@ -120,6 +122,13 @@ func Compute(prog *ssa.Program, fns []*ssa.Function, opts Options) *Table {
 			t.bodies[fn.Pkg.Pkg] = true
 		}
 		t.nodeOf(fn)
+	}
+	for _, p := range prog.AllPackages() {
+		for _, m := range p.Members {
+			if fn, ok := m.(*ssa.Function); ok && fn.Object() != nil && !t.bodies[p.Pkg] {
+				t.blind = true
+			}
+		}
 	}
 	t.scanAll()
 	t.sccs = t.sortComponents()
@@ -282,7 +291,7 @@ func (t *Table) solveWrites(c []nodeID) {
 		}
 		for i := range n.sites {
 			s := &n.sites[i]
-			if s.target != noNode && s.ext == nil && t.nodes[s.target].scc != scc {
+			if t.usesTarget(s) && t.nodes[s.target].scc != scc {
 				any = t.sets.union(any, t.nodes[s.target].sum.writes)
 			}
 			if s.ext != nil {
@@ -326,7 +335,7 @@ func (t *Table) solveWrites(c []nodeID) {
 						put(r, m)
 					}
 				}
-				if s.target != noNode && s.ext == nil {
+				if t.usesTarget(s) {
 					apply(t.nodes[s.target].sum.rel)
 				}
 				if s.ext != nil {
@@ -360,7 +369,7 @@ func (t *Table) stepPure(n *node) bool {
 		// Reads of callees only matter while all are pure.
 		return false
 	}
-	pure := !n.impure && !n.partial && n.sum.exits == Returns && n.sum.writes == nil
+	pure := !n.impure && !n.partial && !n.open && n.sum.exits == Returns && n.sum.writes == nil
 	for _, r := range n.sum.rel {
 		pure = pure && r == nil
 	}
@@ -474,6 +483,17 @@ func (t *Table) ofCall(instr ssa.CallInstruction) *Summary {
 		sum.results = []Result{r}
 	}
 	if s.ext == nil {
+		return &sum
+	}
+	if t.usesTarget(s) {
+		sum.rel = slices.Clone(sum.rel)
+		for len(sum.rel) < len(s.ext.direct) {
+			sum.rel = append(sum.rel, nil)
+		}
+		for k, r := range s.ext.direct {
+			sum.rel[k] = t.sets.union(sum.rel[k], r)
+		}
+		sum.writes = t.sets.union(sum.writes, s.ext.deep)
 		return &sum
 	}
 	sum.rel = s.ext.direct

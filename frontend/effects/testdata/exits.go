@@ -116,7 +116,7 @@ func upto(yield func(int) bool) {
 	}
 }
 
-// want rangeFunc exits: returns
+// want rangeFunc exits: returns|blind
 func rangeFunc() (n int) {
 	for i := range upto {
 		n += i
