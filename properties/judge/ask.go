@@ -43,8 +43,7 @@ func (g greatestWeight) is(n int64) bool { return !g.none && !g.infinite && g.n 
 // A stopped says that a search ended without an answer.
 type stopped struct {
 	reason string
-	steps  int64    // budget of the search; 0 if no greater budget helps
-	at     pds.Head // where most steps went; Symbol 0 if not known
+	steps  int64 // budget of the search; 0 if no greater budget helps
 }
 
 // A searcher answers asks about one model. engine (engine.go) is the one that

@@ -21,6 +21,7 @@ type blamed struct {
 	passed  *Spot               // the event that the way not taken has
 	other   string              // the way not taken
 	byFork  bool                // the cause stands behind a fork
+	fork    Spot                // that fork
 	mask    []ruleAt            // switched off before asking again
 }
 
@@ -186,7 +187,8 @@ func (j *judge) alone(s *properties.Start, a ask, bound int64, t *trace, act int
 			return true, false, nil
 		}
 	}
-	if t.within(act, w) != 1 {
+	// What was born and may move is handed on or lost; nobody lends it nameless.
+	if t.within(act, w) != 1 || (s.Born && j.rule.Moves) {
 		return false, false, nil
 	}
 	own, stop := j.surplusOf(head, s.Born, direction(w))
@@ -288,7 +290,7 @@ func (j *judge) actAtEnd(t *trace) int {
 // a right way out. A fork at which the path leaves its line (a call that
 // panics) is itself that step.
 func (j *judge) causeAtFork(w []int64, t *trace, i, other int, b *blamed) {
-	b.byFork = true
+	b.byFork, b.fork = true, j.spot(t, i)
 	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
 	at := i
 	kind := properties.StepKind("")

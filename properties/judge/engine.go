@@ -38,7 +38,7 @@ func (g *engine) saturate(h pds.Head) *stopped {
 	if !a.Exhausted {
 		return nil
 	}
-	return &stopped{reason: fmt.Sprintf("steps, %s for one start", grouped(a.Budget)), steps: a.Budget, at: a.Worst}
+	return &stopped{reason: fmt.Sprintf("steps, %s for one start", grouped(a.Budget)), steps: a.Budget}
 }
 
 // grouped prints a number with commas.

@@ -200,14 +200,9 @@ func (j *judge) answer(si int, c *properties.Claim, q *properties.Question) answ
 	return j.causes(si, c, q, a, x.bound, x.notes, nil)
 }
 
-// undecided says what stopped a search, and where most of it went.
+// undecided says what stopped a search.
 func (j *judge) undecided(s *properties.Start, c *properties.Claim, stop *stopped) answered {
 	o := j.openFor(s, c, stop.reason, stop.steps)
-	if stop.at.Symbol != 0 {
-		if fn := j.m.Frame(stop.at).Func; fn.Place.Line > 0 {
-			o.StoppedBy += "; of all starts most went into " + fn.Name
-		}
-	}
 	o.SoFar = "nothing broken on what was seen; that is not an answer"
 	return answered{verdict: Undecided, open: o}
 }
@@ -431,7 +426,12 @@ func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.
 	}
 	what := seen.Text
 	f.Fingerprint = fingerprint(j.rule.Name, c.Name, q.Text, fn.Package, fn.Name, what, b.cause.Function, string(b.kind), b.cause.Text)
-	parts := []string{j.rule.Set, j.rule.Name, c.Name, fn.Package, fn.Name, what, placeKey(seen.Place), placeKey(b.cause.Place)}
+	// Behind one fork there may be several ways to the end: still one cause.
+	at := b.cause
+	if b.byFork && b.fork.Place.Line > 0 {
+		at = b.fork
+	}
+	parts := []string{j.rule.Set, j.rule.Name, c.Name, fn.Package, fn.Name, what, placeKey(seen.Place), placeKey(at.Place), at.Text}
 	if !b.byFork || s.Born {
 		parts = append(parts, placeKey(b.opened.Place))
 	}

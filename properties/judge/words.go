@@ -107,6 +107,9 @@ func message(who string, rule *properties.ResolvedRule, claim *properties.Claim,
 			return fmt.Sprintf("%s can %s with more %s than %s", who, verb, names[p], names[n])
 		}
 	}
+	if p, n, ok := pair(q.Weights); ok && by == byMoment && subj != "" && opens(q.Weights) {
+		return fmt.Sprintf("%s can have %s %s %d times and %s %d times at one moment", who, subj, names[p], counts[p], names[n], counts[n])
+	}
 	var parts []string
 	for i, w := range q.Weights {
 		if w != 0 {

@@ -81,12 +81,14 @@ func sample() *Run {
 		}
 		two.Path = append(two.Path, s)
 	}
+	three := one
+	three.Claim, three.Fingerprint, three.Point, three.Formula = "not-twice", "1234567890abcdef", "always", "taken - released <= 1"
 	return &Run{
 		Version: "0.1", Rulesets: []Ruleset{{"std", "1"}}, Module: "example/harbour", Builds: []string{"linux/amd64"},
 		Packages: 38, Functions: 2904, WithEvents: 611,
 		NotJudged: []Left{{"3 files", "build constraints"}, {"module tools/gen", "not named"}, {"C code behind 2 calls", "out of sight"}},
 		Result: &judge.Result{
-			Findings: []judge.Finding{one, two},
+			Findings: []judge.Finding{one, three, two},
 			Open: []judge.Open{{Rule: "permit", Claim: "back", Point: "at end", Formula: "taken == back",
 				Root: properties.Func{Name: "(*Pool).refill", Package: "example/harbour/depot"}, Instance: "p.permits",
 				Place:     properties.Place{File: "depot/refill.go", Line: 88, Column: 1},
@@ -137,6 +139,9 @@ func TestTextFitsItsWidth(t *testing.T) {
 			t.Fatal(err)
 		}
 		for _, l := range strings.Split(w.String(), "\n") {
+			if !strings.HasPrefix(l, " ") && strings.Contains(l, ".go:") {
+				continue // a headline is as long as it must be
+			}
 			// The fact behind the last row may stand out by 20 columns; a wrapped line reads worse.
 			if n := utf8.RuneCountInString(l); n > width+20 {
 				t.Errorf("width %d: a line of %d columns: %s", width, n, l)
@@ -186,7 +191,7 @@ func normal(s string) string {
 }
 
 func TestFoldKeepsWhatCounts(t *testing.T) {
-	f := &sample().Result.Findings[1]
+	f := &sample().Result.Findings[2]
 	rows := fold(f, false)
 	if len(rows) >= len(f.Path) {
 		t.Fatalf("%d rows for %d steps: nothing was folded", len(rows), len(f.Path))

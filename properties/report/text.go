@@ -20,9 +20,17 @@ const foldAfter = 14
 func Text(w io.Writer, run *Run, opt Options) error {
 	b := bufio.NewWriter(w)
 	t := &texter{w: b, opt: opt, run: run}
-	for i := range run.Result.Findings {
-		t.finding(&run.Result.Findings[i])
+	for i := 0; i < len(run.Result.Findings); {
+		f := &run.Result.Findings[i]
+		n := i + 1
+		if !opt.Verbose {
+			for n < len(run.Result.Findings) && sameMistake(f, &run.Result.Findings[n]) {
+				n++
+			}
+		}
+		t.finding(f, run.Result.Findings[i+1:n])
 		t.line("")
+		i = n
 	}
 	for _, g := range grouped(run.Result.Open) {
 		t.open(g)
@@ -97,7 +105,15 @@ func short(name string) string {
 	return name[strings.LastIndexByte(name, '.')+1:]
 }
 
-func (t *texter) finding(f *judge.Finding) {
+// sameMistake says that one change will mend both: two claims of a rule that
+// one function breaks at one place. They are printed as one block.
+func sameMistake(a, b *judge.Finding) bool {
+	return a.Rule == b.Rule && a.Set == b.Set && a.Claim != b.Claim && a.Advice == b.Advice && a.Cause.Place == b.Cause.Place &&
+		a.Blame.Package == b.Blame.Package && a.Blame.Name == b.Blame.Name && a.Opened.Place == b.Opened.Place
+}
+
+// finding prints f; also lists findings that are the same mistake.
+func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 	advice := ""
 	if f.Advice {
 		advice = "advice: "
@@ -132,6 +148,10 @@ func (t *texter) finding(f *judge.Finding) {
 	label("claim", f.Rule+"/"+f.Claim+", "+f.Point+": "+f.Formula)
 	if f.Reason != "" {
 		label("reason", f.Reason)
+	}
+	for i := range also {
+		o := &also[i]
+		label("breaks also", fmt.Sprintf("%s/%s:%s, %s: %s", o.Rule, o.Claim, o.ID(), o.Point, o.Formula))
 	}
 	if f.Root.Name != f.Blame.Name || f.Root.Package != f.Blame.Package {
 		from := f.Root.Name
