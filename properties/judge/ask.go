@@ -25,6 +25,8 @@ type ask struct {
 	// mend takes every doubt that lowers the weight of the path.
 	mend bool
 	off  []ruleAt // rules that no path may take
+	// offLabels switches off all rules with one of these labels.
+	offLabels []pds.LabelID
 }
 
 // A greatestWeight is the answer to an ask.

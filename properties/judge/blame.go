@@ -23,6 +23,12 @@ type blamed struct {
 	byFork  bool                // the cause stands behind a fork
 	fork    Spot                // that fork
 	mask    []ruleAt            // switched off before asking again
+	label   pds.LabelID         // switched off if that brings the same finding again; 0 if none
+}
+
+// maskMove makes move i what is switched off next.
+func (b *blamed) maskMove(t *trace, i int) {
+	b.mask, b.label = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}, t.moves[i].rule.Label
 }
 
 // event is the text of the event that breaks a claim about moments.
@@ -54,9 +60,10 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 			last = b.opening
 		}
 		if j.endsIn(a, t, b) != b.act {
-			if at, ok := j.anchor(t, b.act, last); ok {
+			if k := j.anchor(t, b.act, last); k >= 0 {
 				event := b.cause
-				b.passed, b.cause, b.kind = &event, at, properties.StepCall
+				b.passed, b.cause, b.kind = &event, j.spot(t, k), properties.StepCall
+				b.label = t.moves[k].rule.Label
 			}
 		}
 		return b, nil
@@ -68,6 +75,16 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 	for i := len(t.moves) - 1; i >= from; i-- {
 		mv := &t.moves[i]
 		rules := j.m.Rules(mv.head, nil)
+		if len(rules) < 2 {
+			continue
+		}
+		mine, stop := j.decides(s, a, bound, t, mv.act, b.act, b.opening, by)
+		if stop != nil {
+			return nil, stop
+		}
+		if !mine {
+			continue
+		}
 		for r := range rules {
 			if r == t.choices[i].Rule {
 				continue
@@ -89,12 +106,53 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 	}
 	switch {
 	case b.opening >= 0:
-		b.mask = []ruleAt{{t.moves[b.opening].head, t.choices[b.opening].Rule}}
+		b.maskMove(t, b.opening)
 	case len(t.moves) > 0:
 		last := len(t.moves) - 1
-		b.mask = []ruleAt{{t.moves[last].head, t.choices[last].Rule}}
+		b.maskMove(t, last)
 	}
 	return b, nil
+}
+
+// decides says whether a fork of activation act can be what loses the instance
+// for the blamed one: it stands in it or below it, and not in a call that
+// returned as usual and either opened the instance and is right on its own, or
+// leaves the counts as they are whatever it does.
+func (j *judge) decides(s *properties.Start, a ask, bound int64, t *trace, act, blamed, opening int, by leaving) (bool, *stopped) {
+	if !t.inside(act, blamed) {
+		return false, nil
+	}
+	for ; act != blamed; act = t.acts[act].parent {
+		if !j.returned(t, act) {
+			continue
+		}
+		if opening >= 0 && t.inside(t.moves[opening].act, act) {
+			right, _, stop := j.alone(s, a, bound, t, act, by)
+			if stop != nil || right {
+				return false, stop
+			}
+			continue
+		}
+		all, stop := j.span(t.acts[act].entry, a.weights, func(properties.Exit) bool { return true })
+		if stop != nil || all.is(0) {
+			return false, stop
+		}
+	}
+	return true, nil
+}
+
+// returned says that an activation was left by a normal return on the path.
+func (j *judge) returned(t *trace, act int) bool {
+	base := t.acts[act].base
+	entered := false
+	for i := range t.moves {
+		mv := &t.moves[i]
+		entered = entered || mv.act == act
+		if entered && mv.rule.Kind == pds.Pop && mv.height == base && t.inside(mv.act, act) {
+			return j.m.Exit(mv.rule.State).Kind == properties.ExitReturn
+		}
+	}
+	return false
 }
 
 // frame climbs from the function of the opening event (for a claim about
@@ -198,16 +256,18 @@ func (j *judge) alone(s *properties.Start, a ask, bound int64, t *trace, act int
 	return false, (own.uniform && own.always != 0) || (own.split && own.success != 0), nil
 }
 
-// anchor is the step of the blamed function that move i is, or that leads to
-// it through calls; ok is false if it shows none.
-func (j *judge) anchor(t *trace, act, i int) (at Spot, ok bool) {
+// anchor is the move of the blamed function that move i is, or that leads to
+// it through calls; -1 if it shows none.
+func (j *judge) anchor(t *trace, act, i int) int {
 	for k := min(i, len(t.moves)-1); k >= 0; k-- {
-		if t.moves[k].act == act && t.moves[k].rule.Label != 0 {
-			s := j.spot(t, k)
-			return s, s.Place.Line > 0
+		if l := t.moves[k].rule.Label; t.moves[k].act == act && l != 0 {
+			if j.m.Step(l).Place.Line == 0 {
+				return -1
+			}
+			return k
 		}
 	}
-	return Spot{}, false
+	return -1
 }
 
 // spot describes the step of a move.
@@ -235,6 +295,7 @@ func (j *judge) causeAtMoment(a ask, t *trace, b *blamed) {
 				continue
 			}
 			b.mask = append(b.mask, ruleAt{t.end, i})
+			b.label = r.Label
 			if b.cause.Place.Line == 0 && r.Label != 0 {
 				st := j.m.Step(r.Label)
 				b.cause = Spot{Place: st.Place, Function: st.Func.Name, Text: st.Text}
@@ -258,7 +319,7 @@ func (j *judge) causeAtMoment(a ask, t *trace, b *blamed) {
 		return
 	}
 	b.cause = j.spot(t, i)
-	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
+	b.maskMove(t, i)
 }
 
 // endsIn is the activation of the event that breaks a claim about moments.
@@ -291,7 +352,7 @@ func (j *judge) actAtEnd(t *trace) int {
 // panics) is itself that step.
 func (j *judge) causeAtFork(w []int64, t *trace, i, other int, b *blamed) {
 	b.byFork, b.fork = true, j.spot(t, i)
-	b.mask = []ruleAt{{t.moves[i].head, t.choices[i].Rule}}
+	b.maskMove(t, i)
 	at := i
 	kind := properties.StepKind("")
 	if l := t.moves[i].rule.Label; l != 0 {
@@ -304,7 +365,9 @@ func (j *judge) causeAtFork(w []int64, t *trace, i, other int, b *blamed) {
 				continue
 			}
 			// A step of a caller is no longer what this fork leads to.
-			if st := j.m.Step(l); st.Place.Line > 0 && (kind == "" || t.inside(t.moves[k].act, t.moves[i].act)) {
+			// Nor is the next fork: then this one is all there is to show.
+			st := j.m.Step(l)
+			if st.Place.Line > 0 && (kind == "" || t.inside(t.moves[k].act, t.moves[i].act) && st.Kind != properties.StepBranch) {
 				at, kind = k, st.Kind
 			}
 			break

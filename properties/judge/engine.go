@@ -3,6 +3,7 @@ package judge
 import (
 	"errors"
 	"fmt"
+	"slices"
 	"strconv"
 
 	"pathtally/pds"
@@ -20,10 +21,12 @@ type engine struct {
 	solved map[string]*summary.Solution
 	// spent lists heads whose saturation ran out, so that it is not tried again.
 	spent map[pds.Head]summary.Answer
+	// labels: per head, the labels of its rules; filled where labels are switched off.
+	labels map[pds.Head][]pds.LabelID
 }
 
 func newEngine(m properties.Model, budget int64) *engine {
-	return &engine{m: m, e: summary.New(m, budget), budget: budget, solved: map[string]*summary.Solution{}, spent: map[pds.Head]summary.Answer{}}
+	return &engine{m: m, e: summary.New(m, budget), budget: budget, solved: map[string]*summary.Solution{}, spent: map[pds.Head]summary.Answer{}, labels: map[pds.Head][]pds.LabelID{}}
 }
 
 // saturate spends the budget of a start, once.
@@ -52,12 +55,14 @@ func grouped(n int64) string {
 
 func (g *engine) solution(a ask) *summary.Solution {
 	q := summary.Question{Weights: a.weights, StopMarks: a.stops, AnyMoment: a.moment, TakeDoubts: a.mend}
-	if len(a.off) > 0 {
+	if len(a.off)+len(a.offLabels) > 0 {
 		off := make(map[ruleAt]bool, len(a.off))
 		for _, r := range a.off {
 			off[r] = true
 		}
-		q.Off = func(h pds.Head, rule int) bool { return off[ruleAt{h, rule}] }
+		q.Off = func(h pds.Head, rule int) bool {
+			return off[ruleAt{h, rule}] || len(a.offLabels) > 0 && slices.Contains(a.offLabels, g.labelsOf(h)[rule])
+		}
 		return g.e.Solve(q)
 	}
 	key := fmt.Sprint(a.weights, a.stops, a.moment, a.mend)
@@ -67,6 +72,18 @@ func (g *engine) solution(a ask) *summary.Solution {
 		g.solved[key] = s
 	}
 	return s
+}
+
+// labelsOf lists the labels of a head's rules.
+func (g *engine) labelsOf(h pds.Head) []pds.LabelID {
+	l, ok := g.labels[h]
+	if !ok {
+		for _, r := range g.m.Rules(h, nil) {
+			l = append(l, r.Label)
+		}
+		g.labels[h] = l
+	}
+	return l
 }
 
 // accepting is what a question calls an end; at any moment every end is one.
@@ -137,7 +154,7 @@ func (g *engine) beside(a ask, t *trace, step, rule int) (greatestWeight, *stopp
 	// Least weights are greatest weights under negated weights. Rules that are
 	// switched off for the search are still right ways for a reader.
 	b := a
-	b.weights, b.off, b.mend = negated(a.weights), nil, false
+	b.weights, b.off, b.offLabels, b.mend = negated(a.weights), nil, nil, false
 	s := g.solution(b)
 	under := t.levels()[step].below
 	r := g.m.Rules(t.moves[step].head, nil)[rule]

@@ -300,7 +300,7 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 	// The same cause may show in several contexts: those turns are bounded too.
 	for turn := 0; ; turn++ {
 		if len(found) >= limit || turn >= 4*limit {
-			j.res.cut = append(j.res.cut, fmt.Sprintf("%s: %d findings of %s/%s, more may exist", s.Root.Name, len(found), j.rule.Name, c.Name))
+			j.res.cut = append(j.res.cut, fmt.Sprintf("%s: after %d findings of %s/%s, more may exist", s.Root.Name, len(found), j.rule.Name, c.Name))
 			break
 		}
 		choices, stop := j.s.witness(a, bound)
@@ -318,7 +318,7 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 		if fits != nil && !fits(t.total()) {
 			break
 		}
-		f, key, mask, stop := j.finding(s, c, q, a, bound, t, by)
+		f, key, b, stop := j.finding(s, c, q, a, bound, t, by)
 		if stop != nil {
 			if turn == 0 {
 				return answered{verdict: Undecided, open: j.openFor(s, c, stop.reason, stop.steps)}
@@ -326,7 +326,10 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 			break
 		}
 		f.Assumptions = sortedNotes(append(f.Assumptions, notes...))
-		if !found[key] {
+		if again := found[key]; again && b.label != 0 && !slices.Contains(a.offLabels, b.label) {
+			// The same step in another context: switch it off in all of them.
+			a.offLabels = append(slices.Clone(a.offLabels), b.label)
+		} else if !again {
 			found[key] = true
 			blamed = append(blamed, f.Blame)
 			switch j.state(c.Name, f.Blame.Package) {
@@ -343,10 +346,10 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 				first = f.Message
 			}
 		}
-		if len(mask) == 0 {
+		if len(b.mask) == 0 {
 			break
 		}
-		a.off = append(slices.Clone(a.off), mask...)
+		a.off = append(slices.Clone(a.off), b.mask...)
 	}
 	if len(found) > 0 && !j.reported(found) {
 		return answered{ground: "switched off in " + off + ", where it is broken"}
@@ -385,7 +388,7 @@ func (j *judge) bug(stage string, s *properties.Start, text string) {
 }
 
 // finding words one broken path.
-func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.Question, a ask, bound int64, t *trace, by leaving) (Finding, string, []ruleAt, *stopped) {
+func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.Question, a ask, bound int64, t *trace, by leaving) (Finding, string, *blamed, *stopped) {
 	b, stop := j.blame(s, a, bound, t, by)
 	if stop != nil {
 		return Finding{}, "", nil, stop
@@ -420,9 +423,9 @@ func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.
 	f.Assumptions = j.assumed(t)
 	// The instance as the blamed function sees it: the step there that opens it.
 	// Starts that reach it under other names are one finding.
-	seen, ok := j.anchor(t, b.act, b.opening)
-	if b.opening < 0 || !ok {
-		seen = Spot{Text: s.Home}
+	seen := Spot{Text: s.Home}
+	if k := j.anchor(t, b.act, b.opening); k >= 0 {
+		seen = j.spot(t, k)
 	}
 	what := seen.Text
 	f.Fingerprint = fingerprint(j.rule.Name, c.Name, q.Text, fn.Package, fn.Name, what, b.cause.Function, string(b.kind), b.cause.Text)
@@ -435,7 +438,7 @@ func (j *judge) finding(s *properties.Start, c *properties.Claim, q *properties.
 	if !b.byFork || s.Born {
 		parts = append(parts, placeKey(b.opened.Place))
 	}
-	return f, strings.Join(parts, "\x00"), b.mask, nil
+	return f, strings.Join(parts, "\x00"), b, nil
 }
 
 func placeKey(p properties.Place) string { return fmt.Sprintf("%s:%d:%d", p.File, p.Line, p.Column) }

@@ -438,3 +438,29 @@ func TestCases(t *testing.T) {
 		t.Errorf("cause in line %d, %q", f.Cause.Place.Line, f.Fact)
 	}
 }
+
+// A callee that fails to open is right: what its caller forgets is no fork of
+// the callee's.
+func TestCauseIsNotInARightCallee(t *testing.T) {
+	file := &properties.ResolvedRule{Name: "file", Moves: true, Each: &properties.EachParam{Name: "f"}, Counts: []string{"opened", "closed"},
+		Claims: []properties.Claim{{Name: "closed", Point: properties.AtReturn, Text: "opened <= closed", Linear: true,
+			Questions: []properties.Question{{Weights: []int64{1, -1}, Text: "opened <= closed"}}}}}
+	b := pds.NewBuilder("opened", "closed")
+	s := start(b, "Load", "", "")
+	s.Born = true
+	b.Push("run", "Load", "run", "open", "Load:3", label("call", 2, "open(name)"))
+	b.Step("run", "open", "run", "open:2", counts("opened", 20, "os.Open(name)")...)
+	b.Step("run", "open:2", "run", "open:3", label("branch", 21, "bad is true"))
+	b.Step("run", "open:2", "run", "open:4", label("branch", 21, "bad is false"))
+	b.Pop("run", "open:3", "err", counts("closed", 22, "f.Close()")...)
+	b.Pop("run", "open:4", "ok+outside", label("return", 23, "return f, nil"))
+	b.Pop("err", "Load:3", "err", label("return", 4, "return err"))
+	b.Pop("ok+outside", "Load:3", "ok", label("return", 6, "return nil"))
+	r := judgeOne(t, file, newFake(t, b, s))
+	if len(r.Findings) != 1 {
+		t.Fatalf("%d findings", len(r.Findings))
+	}
+	if f := r.Findings[0]; f.Blame.Name != "Load" || f.Cause.Place.Line != 6 || f.CauseText != "this return leaves it opened" {
+		t.Errorf("blame %s, cause in line %d, %q", f.Blame.Name, f.Cause.Place.Line, f.CauseText)
+	}
+}

@@ -159,6 +159,9 @@ func (t *trace) steps(m properties.Model, last PathStep) []PathStep {
 			if name == "" {
 				name = t.acts[mv.act].fn.Name
 			}
+			if st.Text == "" && !changed {
+				continue // nothing to read
+			}
 			out = append(out, PathStep{Place: st.Place, Function: name, Kind: kind, Text: st.Text, Depth: t.acts[mv.act].depth, Counts: mv.after, Changed: changed})
 		} else if changed {
 			// A step that counts is never left out, labelled or not.
