@@ -559,7 +559,7 @@ func (m *Model) edge(fr *frame, from, to *ssa.BasicBlock) {
 		}
 		if f.wants(r) {
 			a := m.absOf(fr, v, from)
-			if m.t.abs[a].kind == aInt && m.backEdge(from, to) && !m.smallLoop(phi) {
+			if m.t.abs[a].kind == aInt && m.loopHead(to) && !m.smallLoop(phi) {
 				a = 0 // a running counter: unrolling it would never end
 			}
 			if a != 0 {
@@ -614,22 +614,47 @@ func (m *Model) prune(fr *frame) {
 	}
 }
 
-func (m *Model) backEdge(from, to *ssa.BasicBlock) bool { return to.Dominates(from) }
+// loopHead tells whether a back edge leads to b.
+func (m *Model) loopHead(b *ssa.BasicBlock) bool {
+	for _, p := range b.Preds {
+		if b.Dominates(p) {
+			return true
+		}
+	}
+	return false
+}
 
 // smallLoop: a counter that is compared with a small constant in its loop's
 // header is unrolled (three tries are three turns).
 func (m *Model) smallLoop(phi *ssa.Phi) bool {
-	for _, r := range *phi.Referrers() {
-		b, ok := r.(*ssa.BinOp)
-		if !ok || b.Block() != phi.Block() {
-			continue
-		}
-		for _, op := range []ssa.Value{b.X, b.Y} {
-			if c, ok := op.(*ssa.Const); ok && c.Value != nil && isInt(c.Type()) {
-				if n := c.Int64(); n >= -8 && n <= 16 {
-					return true
+	compared := func(v ssa.Value) bool {
+		for _, r := range *v.Referrers() {
+			b, ok := r.(*ssa.BinOp)
+			if !ok || b.Block() != phi.Block() {
+				continue
+			}
+			switch b.Op {
+			case token.LSS, token.LEQ, token.GTR, token.GEQ, token.NEQ, token.EQL:
+			default:
+				continue
+			}
+			for _, op := range []ssa.Value{b.X, b.Y} {
+				if c, ok := op.(*ssa.Const); ok && c.Value != nil && isInt(c.Type()) {
+					if n := c.Int64(); n >= -8 && n <= 16 {
+						return true
+					}
 				}
 			}
+		}
+		return false
+	}
+	if compared(phi) {
+		return true
+	}
+	for _, r := range *phi.Referrers() {
+		// for i := range 3: the header counts first and compares then.
+		if b, ok := r.(*ssa.BinOp); ok && b.Op == token.ADD && b.Block() == phi.Block() && compared(b) {
+			return true
 		}
 	}
 	return false
