@@ -399,6 +399,9 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 		}
 	}
 	led.withEvents = len(seen)
+	if len(seen) == 0 && !slices.ContainsFunc(met, func(f []properties.Func) bool { return f != nil }) {
+		led.withEvents = -1 // the models do not say
+	}
 	return judge.Merge(results), led, nil
 }
 

@@ -518,21 +518,25 @@ func holdsText(q *properties.Question, names []string, g greatestWeight) string 
 		return "no path comes to this checkpoint"
 	}
 	var b strings.Builder
-	for i, w := range q.Weights {
-		switch {
-		case w == 0:
-			continue
-		case b.Len() == 0 && w < 0:
-			b.WriteString("-")
-		case b.Len() > 0 && w < 0:
-			b.WriteString(" - ")
-		case b.Len() > 0:
-			b.WriteString(" + ")
+	// What is added first, so that it reads "released - taken".
+	for _, sign := range []int64{1, -1} {
+		for i, w := range q.Weights {
+			if w*sign <= 0 {
+				continue
+			}
+			switch {
+			case sign < 0 && b.Len() == 0:
+				b.WriteString("-")
+			case sign < 0:
+				b.WriteString(" - ")
+			case b.Len() > 0:
+				b.WriteString(" + ")
+			}
+			if w*sign != 1 {
+				fmt.Fprintf(&b, "%d ", w*sign)
+			}
+			b.WriteString(names[i])
 		}
-		if w != 1 && w != -1 {
-			fmt.Fprintf(&b, "%d ", max(w, -w))
-		}
-		b.WriteString(names[i])
 	}
 	if b.Len() == 0 {
 		return "it speaks of no count"

@@ -132,7 +132,7 @@ func JSON(w io.Writer, run *Run) error {
 		NotJudged:   orEmpty(run.NotJudged),
 		Stale:       []string{},
 		Cut:         orEmpty(r.Cut),
-		Summary: jsonSummary{run.Packages, run.Functions, run.WithEvents, r.Tally.Roots, r.Tally.Instances,
+		Summary: jsonSummary{run.Packages, run.Functions, max(run.WithEvents, 0), r.Tally.Roots, r.Tally.Instances,
 			r.Tally.Questions, r.Tally.Holds, r.Tally.Broken, r.Tally.Undecided, r.Tally.Advice},
 	}
 	index := make(map[properties.Note]int, len(r.Assumptions))

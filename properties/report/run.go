@@ -35,7 +35,7 @@ type Run struct {
 
 	Packages   int // packages judged
 	Functions  int // functions with bodies in them
-	WithEvents int // functions that meet an event of some rule
+	WithEvents int // functions that meet an event of some rule; below 0 if not known
 	NotJudged  []Left
 
 	Result *judge.Result

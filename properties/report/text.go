@@ -435,9 +435,13 @@ func (t *texter) summary() {
 	}
 	col := max(len(total)+3, 16)
 	t.line("%s%s", pad(total, col), parts)
+	functions := plural(run.Functions, "function", "functions")
+	if run.WithEvents >= 0 {
+		functions = thousands(int64(run.WithEvents)) + " of " + functions + " meet an event"
+	}
 	t.wrap(pad("judged", col), []string{
 		plural(run.Packages, "package", "packages"),
-		thousands(int64(run.WithEvents)) + " of " + plural(run.Functions, "function", "functions") + " meet an event",
+		functions,
 		plural(r.Tally.Roots, "starting point", "starting points"),
 		"build " + strings.Join(run.Builds, ", "),
 	})
