@@ -1,6 +1,9 @@
 package lia
 
-import "fmt"
+import (
+	"fmt"
+	"sort"
+)
 
 // simplex decides feasibility of bounds on variables and on linear rows over
 // the rationals, exactly: the general simplex of Dutertre and de Moura, A fast
@@ -322,7 +325,7 @@ func (s *simplex) check() (lpStatus, []reason) {
 			}
 			// x_b = ... - alpha_j x_j: to raise x_b, raise x_j where alpha_j < 0.
 			up := (side < 0) == (a < 0)
-			if up && s.hi[j].set && s.val[j].cmp(s.hi[j].v) >= 0 || !up && s.lo[j].set && s.val[j].cmp(s.lo[j].v) <= 0 {
+			if s.atEnd(j, up) {
 				continue
 			}
 			switch {
@@ -420,52 +423,65 @@ func (s *simplex) swap(p, j int32) {
 	}
 }
 
+// priced is the number of entering candidates kept from one pricing of all
+// columns. After a pivot a candidate's rate is read off its own column, so most
+// pivots need no pricing (multiple pricing: Orchard-Hays, Advanced Linear-
+// Programming Computing Techniques, 1968).
+const priced = 40
+
+// candidate is a nonbasic variable whose move up (or down) lowers the objective.
+type candidate struct {
+	j    int32
+	rate num // absolute change of the objective per unit
+}
+
 // minimise moves to a vertex with the least value of o, from a feasible point
 // (check returned lpOK). lpUnbounded means that a ray within all bounds lowers
 // o for ever.
 func (s *simplex) minimise(o int32) lpStatus {
-	still := 0
+	still := 0 // pivots in a row without progress
+	var list []candidate
 	for {
 		if s.stats.Pivots >= s.maxPivots {
 			return lpBudget
 		}
-		j, up := o, false
-		if s.pos[o] < 0 {
+		var j int32
+		var up bool
+		switch {
+		case s.pos[o] < 0:
 			if s.lo[o].set && s.val[o].cmp(s.lo[o].v) <= 0 {
 				return lpOK
 			}
-		} else {
-			s.rowOf(s.pos[o])
-			j = -1
-			var rate num
-			for _, k := range s.alpha.idx {
-				a := s.alpha.val[k]
-				if a.isZero() {
-					continue
-				}
-				// o = ... - alpha_k x_k
-				u := a.sign() > 0
-				if u && s.hi[k].set && s.val[k].cmp(s.hi[k].v) >= 0 || !u && s.lo[k].set && s.val[k].cmp(s.lo[k].v) <= 0 {
-					continue
-				}
-				better := j < 0
-				if !better {
-					if still > repeatLimit {
-						better = k < j
-					} else {
-						c := a.abs().cmp(rate)
-						better = c > 0 || c == 0 && k < j
-					}
-				}
-				if better {
-					j, up, rate = k, u, a.abs()
-				}
+			j, up = o, false
+			s.column(j)
+		case len(list) > 0 && still <= repeatLimit:
+			j = list[0].j
+			list = list[1:]
+			if s.pos[j] >= 0 {
+				continue
 			}
-			if j < 0 {
+			s.column(j)
+			rate := s.w.val[s.pos[o]] // o = ... - rate·x_j
+			if rate.isZero() {
+				continue
+			}
+			up = rate.sign() > 0
+			if s.atEnd(j, up) {
+				continue
+			}
+		default:
+			list = s.price(o, still > repeatLimit, list[:0])
+			if len(list) == 0 {
 				return lpOK
 			}
+			if still <= repeatLimit {
+				continue
+			}
+			j = list[0].j // Bland: the least index
+			list = list[:0]
+			s.column(j)
+			up = s.w.val[s.pos[o]].sign() > 0
 		}
-		s.column(j)
 		// Moving j by t·dir moves the basic variable at p by -t·dir·w_p.
 		var step num
 		block, found := int32(-1), false
@@ -520,6 +536,43 @@ func (s *simplex) minimise(o int32) lpStatus {
 			s.stats.Pivots++
 		}
 	}
+}
+
+// atEnd reports whether v cannot move in the given direction.
+func (s *simplex) atEnd(v int32, up bool) bool {
+	if up {
+		return s.hi[v].set && s.val[v].cmp(s.hi[v].v) >= 0
+	}
+	return s.lo[v].set && s.val[v].cmp(s.lo[v].v) <= 0
+}
+
+// price lists the variables with the best rates for lowering the basic variable
+// o, best first; under Bland's rule only the one of least index.
+func (s *simplex) price(o int32, bland bool, list []candidate) []candidate {
+	s.rowOf(s.pos[o])
+	for _, k := range s.alpha.idx {
+		a := s.alpha.val[k]
+		if a.isZero() || s.atEnd(k, a.sign() > 0) {
+			continue
+		}
+		if bland {
+			if len(list) == 0 || k < list[0].j {
+				list = append(list[:0], candidate{k, a.abs()})
+			}
+			continue
+		}
+		list = append(list, candidate{k, a.abs()})
+	}
+	sort.Slice(list, func(x, y int) bool {
+		if c := list[x].rate.cmp(list[y].rate); c != 0 {
+			return c > 0
+		}
+		return list[x].j < list[y].j
+	})
+	if len(list) > priced {
+		list = list[:priced]
+	}
+	return list
 }
 
 // sanity checks the invariants of the type; cost: one pass over the matrix.

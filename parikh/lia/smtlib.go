@@ -146,7 +146,7 @@ func (p *smtPrinter) formula(n *node) string {
 		text = strings.Join(parts, " ") + ")"
 	}
 	if p.uses[n] > 1 {
-		d := fmt.Sprintf(".d%d", len(p.defs)+1)
+		d := fmt.Sprintf("def!%d", len(p.defs)+1)
 		fmt.Fprintf(p.w, "(define-fun %s () Bool %s)\n", d, text)
 		p.defs[n] = d
 		return d
@@ -186,8 +186,12 @@ func smtInt(v *big.Int) string {
 }
 
 // smtSymbol quotes a name that is not a simple symbol; the two characters that
-// even a quoted symbol cannot hold become '_'.
+// even a quoted symbol cannot hold become '_', and names in the style of our own
+// definitions get a '_' in front.
 func smtSymbol(name string) string {
+	if strings.HasPrefix(name, "def!") {
+		name = "_" + name
+	}
 	simple := name != "" && !(name[0] >= '0' && name[0] <= '9')
 	for i := 0; i < len(name) && simple; i++ {
 		c := name[i]
