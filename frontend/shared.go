@@ -73,11 +73,13 @@ func (c caller) free(callee *ssa.Function, i int) ssa.Value {
 	return nil
 }
 
-// Analyze prepares a loaded program for lowering: call graph, effects.
-func Analyze(prog *load.Program) *Shared {
+// Analyze prepares a loaded program for lowering: call graph, effects. With
+// paths only the functions of these packages are seen, as if nothing else had
+// been loaded with bodies.
+func Analyze(prog *load.Program, paths ...string) *Shared {
 	sh := &Shared{
 		prog:    prog,
-		fns:     prog.Functions(),
+		fns:     functionsOf(prog, paths),
 		index:   map[*ssa.Function]int{},
 		callers: map[*ssa.Function][]caller{},
 		targets: map[ssa.CallInstruction][]*ssa.Function{},
@@ -85,7 +87,7 @@ func Analyze(prog *load.Program) *Shared {
 		taken:   map[*ssa.Function]bool{},
 		spawned: map[*ssa.Function]bool{},
 	}
-	sh.fns = slices.Clone(sh.fns)
+
 	for i, fn := range sh.fns {
 		sh.index[fn] = i
 	}
@@ -305,4 +307,17 @@ func (sh *Shared) resultPath(c *ssa.Call, res int) (arg ssa.Value, path []*types
 		arg = cl.free(fn, i-len(fn.Params))
 	}
 	return arg, path, arg != nil
+}
+
+func functionsOf(prog *load.Program, paths []string) []*ssa.Function {
+	if len(paths) == 0 {
+		return slices.Clone(prog.Functions())
+	}
+	var out []*ssa.Function
+	for _, fn := range prog.Functions() {
+		if p := prog.PackageOfFunction(fn); p != nil && slices.Contains(paths, p.Path) {
+			out = append(out, fn)
+		}
+	}
+	return out
 }
