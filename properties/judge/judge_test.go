@@ -464,3 +464,29 @@ func TestCauseIsNotInARightCallee(t *testing.T) {
 		t.Errorf("blame %s, cause in line %d, %q", f.Blame.Name, f.Cause.Place.Line, f.CauseText)
 	}
 }
+
+// A second Lock that is one too many only because an earlier call has kept the
+// lock follows from that call's finding.
+func TestSecondLockFollowsFromTheLeak(t *testing.T) {
+	b := pds.NewBuilder("taken", "released")
+	s := start(b, "Gate", "d.mu", "berth.Desk.mu")
+	b.Push("run", "Gate", "run", "Apply", "Gate:3", label("call", 2, "d.Apply()"))
+	b.Step("run", "Apply", "run", "Apply:2", taken(20)...)
+	b.Step("run", "Apply:2", "run", "Apply:3", label("branch", 21, "bad is true"))
+	b.Step("run", "Apply:2", "run", "Apply:4", label("branch", 21, "bad is false"))
+	b.Pop("run", "Apply:3", "ok", label("return", 22, "return"))
+	b.Pop("run", "Apply:4", "ok", released(24)...)
+	b.Push("ok", "Gate:3", "run", "State", "Gate:4", label("call", 3, "d.State()"))
+	b.Step("run", "State", "run", "State:2", taken(30)...)
+	b.Pop("run", "State:2", "ok", released(31)...)
+	b.Pop("ok", "Gate:4", "ok", label("return", 4, "return"))
+	r := judgeOne(t, mutex(), newFake(t, b, s))
+	want(t, r, "Gate balanced broken", "Gate not-twice broken", "Gate not-early holds")
+	if len(r.Findings) != 2 {
+		t.Fatalf("%d findings", len(r.Findings))
+	}
+	twice, leak := &r.Findings[0], &r.Findings[1]
+	if twice.Claim != "not-twice" || twice.Follows != leak.Fingerprint || leak.Follows != "" {
+		t.Errorf("%s follows %q, %s follows %q", twice.Claim, twice.Follows, leak.Claim, leak.Follows)
+	}
+}

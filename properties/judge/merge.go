@@ -96,7 +96,37 @@ func Merge(results []*RuleResult) *Result {
 		}
 	}
 	unique(out.Findings)
+	follow(out.Findings)
 	return out
+}
+
+// follow finds breaks of moments (a second Lock) on paths that have lost the
+// instance before, in a way that is a finding of its own.
+func follow(fs []Finding) {
+	for i := range fs {
+		f := &fs[i]
+		if strings.HasPrefix(f.Point, "at ") {
+			continue
+		}
+		for k := range fs {
+			if g := &fs[k]; g.Set == f.Set && g.Rule == f.Rule && strings.HasPrefix(g.Point, "at ") && g.Cause.Place != f.Cause.Place && comesThrough(f.Path, g) {
+				f.Follows = g.Fingerprint
+				break
+			}
+		}
+	}
+}
+
+// comesThrough says that a path opens and loses the instance where g does.
+func comesThrough(path []PathStep, g *Finding) bool {
+	opened := false
+	for i := range path[:max(len(path)-1, 0)] {
+		opened = opened || (g.Opened.Place.Line > 0 && path[i].Place == g.Opened.Place && path[i].Changed)
+		if opened && path[i].Place == g.Cause.Place && path[i].Kind != properties.StepEvent {
+			return true
+		}
+	}
+	return false
 }
 
 // unique makes equal fingerprints differ by their order of appearance, so that

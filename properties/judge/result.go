@@ -74,6 +74,9 @@ type Finding struct {
 	Assumptions []properties.Note // what this path and its verdict rest on
 	Fingerprint string            // 16 hexadecimal digits; free of line numbers
 	Starts      int               // how many starts have a path that is lost in this way
+	// Follows is the fingerprint of a finding that this path comes through: what
+	// was lost there is missed here, so that mending it may mend both. "" if none.
+	Follows string
 }
 
 // ID is the short form of the fingerprint that commands accept.

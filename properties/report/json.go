@@ -55,6 +55,7 @@ type jsonFinding struct {
 	Accepted    *string          `json:"accepted"`
 	Fingerprint string           `json:"fingerprint"`
 	Starts      int              `json:"starts"`
+	Follows     string           `json:"follows"` // fingerprint of the finding that this one follows from
 	Builds      []int            `json:"builds"`
 	Assumptions []int            `json:"assumptions"`
 	Path        []jsonStep       `json:"path"`
@@ -157,7 +158,7 @@ func jsonOf(f *judge.Finding, run *Run, index map[properties.Note]int) jsonFindi
 		Package: f.Root.Package, Function: f.Root.Name, Instance: f.Instance, Checkpoint: checkpoint(f.Point), Formula: f.Formula, Reason: f.Reason,
 		File: f.Cause.Place.File, Line: f.Cause.Place.Line, Column: f.Cause.Place.Column,
 		Cause: spot(f.Cause), Blame: f.Blame.Name,
-		Counts: named(f.CountNames, f.Counts), Fingerprint: f.Fingerprint, Starts: f.Starts,
+		Counts: named(f.CountNames, f.Counts), Fingerprint: f.Fingerprint, Starts: f.Starts, Follows: f.Follows,
 		Builds: []int{}, Assumptions: []int{}, Path: []jsonStep{},
 	}
 	for i := range run.Builds {

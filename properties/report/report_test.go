@@ -247,3 +247,26 @@ func TestJSONHasNoNullList(t *testing.T) {
 		t.Errorf("null in an empty run:\n%s", w.String())
 	}
 }
+
+// A finding that follows from another is one line below it, and a block of its
+// own where the other is not shown.
+func TestFollowingFinding(t *testing.T) {
+	run := sample()
+	fs := run.Result.Findings
+	fs[2].Follows = fs[0].Fingerprint
+	var w bytes.Buffer
+	if err := Text(&w, run, Options{}); err != nil {
+		t.Fatal(err)
+	}
+	if out := w.String(); !strings.Contains(out, "leads to    berth/desk.go:57:3") || strings.Contains(out, "desk.go:57:3: advice") {
+		t.Errorf("not folded:\n%s", out)
+	}
+	run.Result.Findings = fs[2:]
+	w.Reset()
+	if err := Text(&w, run, Options{}); err != nil {
+		t.Fatal(err)
+	}
+	if out := w.String(); !strings.Contains(out, "desk.go:57:3: advice") {
+		t.Errorf("lost:\n%s", out)
+	}
+}

@@ -22,6 +22,10 @@ func Text(w io.Writer, run *Run, opt Options) error {
 	t := &texter{w: b, opt: opt, run: run}
 	for i := 0; i < len(run.Result.Findings); {
 		f := &run.Result.Findings[i]
+		if !opt.Verbose && slices.ContainsFunc(run.Result.Findings, func(g judge.Finding) bool { return g.Fingerprint == f.Follows }) {
+			i++ // one line below the finding that it follows from
+			continue
+		}
 		n := i + 1
 		if !opt.Verbose {
 			for n < len(run.Result.Findings) && sameMistake(f, &run.Result.Findings[n]) {
@@ -152,6 +156,11 @@ func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 	for i := range also {
 		o := &also[i]
 		label("breaks also", fmt.Sprintf("%s/%s:%s, %s: %s", o.Rule, o.Claim, o.ID(), o.Point, o.Formula))
+	}
+	for i := range t.run.Result.Findings {
+		if o := &t.run.Result.Findings[i]; o.Follows == f.Fingerprint {
+			label("leads to", fmt.Sprintf("%s    %s  (%s/%s:%s)", place(o.Cause.Place), o.Message, o.Rule, o.Claim, o.ID()))
+		}
 	}
 	if f.Root.Name != f.Blame.Name || f.Root.Package != f.Blame.Package {
 		from := f.Root.Name
