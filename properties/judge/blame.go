@@ -253,7 +253,7 @@ func (j *judge) alone(s *properties.Start, a ask, bound int64, t *trace, act int
 	if stop != nil {
 		return false, false, stop
 	}
-	return false, (own.uniform && own.always != 0) || (own.split && own.success != 0), nil
+	return false, own.lends() > 0 || (own.uniform && own.always < 0) || (own.split && own.success < 0), nil
 }
 
 // anchor is the move of the blamed function that move i is, or that leads to

@@ -14,13 +14,16 @@ type surplus struct {
 	uniform bool
 	success int64 // on exactly the returns that say success, none on the others; meaningful if split
 	split   bool
+	// onFailure: a return whose error is known not to be nil leaves it too.
+	onFailure bool
 }
 
 // lends is the positive surplus that the contract of a lender leaves, 0 if
-// the function keeps no such contract.
+// the function keeps no such contract. What is kept on an error return is none:
+// whoever is told of an error has nothing to give back.
 func (s surplus) lends() int64 {
 	switch {
-	case s.uniform && s.always > 0:
+	case s.uniform && s.always > 0 && !s.onFailure:
 		return s.always
 	case s.split && s.success > 0:
 		return s.success
@@ -83,6 +86,11 @@ func (j *judge) surplusOf(head pds.Head, born bool, u []int64) (surplus, *stoppe
 	case all.none || !all.ok:
 	case all.lo == all.hi:
 		s.uniform, s.always = true, all.lo
+		bad, stop := j.span(head, u, func(e properties.Exit) bool { return normal(e) && e.Outcome == properties.Failure })
+		if stop != nil {
+			return s, stop
+		}
+		s.onFailure = !bad.none
 	default:
 		yes, stop := j.span(head, u, func(e properties.Exit) bool { y, _ := says(e); return normal(e) && y })
 		if stop != nil {

@@ -107,6 +107,20 @@ func TestTryLenderLendsOnSuccessOnly(t *testing.T) {
 	want(t, build(nil, taken(10)), "Try balanced broken", "Unlock balanced broken")
 }
 
+func TestLenderKeepsNothingOnError(t *testing.T) {
+	build := func(exit string) *Result {
+		b := pds.NewBuilder("taken", "released")
+		take, leave := start(b, "Take", "d.mu", "berth.Desk.mu"), start(b, "Leave", "d.mu", "berth.Desk.mu")
+		b.Step("run", "Take", "run", "Take:2", taken(10)...)
+		b.Pop("run", "Take:2", exit, label("return", 11, "return errFull"))
+		b.Pop("run", "Take:2", "ok", label("return", 12, "return nil"))
+		b.Pop("run", "Leave", "err", released(14)...)
+		return judgeOne(t, mutex(), newFake(t, b, take, leave))
+	}
+	want(t, build("ok"), "Take balanced holds", "Leave balanced holds")
+	want(t, build("err"), "Take balanced broken", "Leave balanced broken")
+}
+
 func TestSettlerThatTakesIsNone(t *testing.T) {
 	b := pds.NewBuilder("taken", "released")
 	lock, swap := start(b, "Lock", "d.mu", "berth.Desk.mu"), start(b, "Swap", "d.mu", "berth.Desk.mu")
