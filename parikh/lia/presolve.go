@@ -46,7 +46,8 @@ func (s *Solver) handOver() {
 	for ; s.done < len(s.asserts); s.done++ {
 		hard, soft = s.splitHard(s.asserts[s.done].f.node(), hard, soft)
 	}
-	if !s.prepared {
+	first := !s.prepared
+	if first {
 		s.prepared = true
 		uses := make(map[Var]int)
 		seen := map[*node]bool{}
@@ -72,6 +73,9 @@ func (s *Solver) handOver() {
 		s.roots = append(s.roots, n)
 	}
 	s.flushSide()
+	if first && !s.opt.NoPresolve && !s.dead {
+		s.sx.crash()
+	}
 }
 
 // flushSide hands over the definitions of remainders that encode came across.
@@ -106,7 +110,13 @@ func (s *Solver) countUses(n *node, seen map[*node]bool, uses map[Var]int) {
 }
 
 // commit makes the bounds set so far permanent.
-func (s *simplex) commit() { s.trail = s.trail[:0] }
+func (s *simplex) commit() {
+	for _, u := range s.trail {
+		lo, hi := s.lo[u.v], s.hi[u.v]
+		s.fixed[u.v] = lo.set && hi.set && lo.v.eq(hi.v)
+	}
+	s.trail = s.trail[:0]
+}
 
 // addFact sets the permanent bound that r states.
 func (s *Solver) addFact(r hardRow) {

@@ -161,6 +161,7 @@ var variants = []struct {
 	{"no lattice", Options{NoLattice: true}, false},
 	{"no minimise", Options{NoMinimise: true}, false},
 	{"plain", Options{NoPresolve: true, NoCuts: true, NoLattice: true, NoMinimise: true}, false},
+	{"large-system pivoting", Options{smallDrive: true}, false},
 	{"big only", Options{}, true},
 }
 

@@ -33,9 +33,11 @@ type simplex struct {
 	inInfeas []bool
 	moved    []int32 // nonbasic variables to be put back within their bounds
 	left     []int32 // per variable: leaving count in the running check
+	fixed    []bool  // per variable: has one value for good, so it never enters
 
 	w, y, alpha spvec
 	stats       *Stats
+	driveRows   int   // see the constant; tests lower it
 	maxPivots   int64 // check gives up when stats.Pivots reaches it
 }
 
@@ -56,7 +58,9 @@ type undo struct {
 	old   bound
 }
 
-func newSimplex(st *Stats) *simplex { return &simplex{stats: st, maxPivots: 1 << 62} }
+func newSimplex(st *Stats) *simplex {
+	return &simplex{stats: st, maxPivots: 1 << 62, driveRows: driveRows}
+}
 
 // addVar makes a free structural variable of value 0.
 func (s *simplex) addVar() int32 {
@@ -68,6 +72,7 @@ func (s *simplex) addVar() int32 {
 	s.pos = append(s.pos, -1)
 	s.inInfeas = append(s.inInfeas, false)
 	s.left = append(s.left, 0)
+	s.fixed = append(s.fixed, false)
 	s.alpha.grow(len(s.cols))
 	return v
 }
@@ -218,7 +223,8 @@ func (s *simplex) settle() {
 }
 
 // rowOf fills s.alpha with the nonbasic part of the row of the basic variable
-// at position p: x_p + Σ alpha_j x_j = 0.
+// at position p: x_p + Σ alpha_j x_j is constant. Variables that are fixed for
+// good are left out: they can neither enter nor give a reason.
 func (s *simplex) rowOf(p int32) {
 	s.y.clear()
 	s.y.add(p, one)
@@ -230,7 +236,7 @@ func (s *simplex) rowOf(p int32) {
 			continue
 		}
 		for _, e := range s.rows[i] {
-			if s.pos[e.i] < 0 {
+			if s.pos[e.i] < 0 && !s.fixed[e.i] {
 				s.alpha.add(e.i, e.c.mul(c))
 			}
 		}
@@ -295,6 +301,14 @@ func (s *simplex) pickLeaving(bland bool) int32 {
 // ends every cycle; an honest run over a sparse flow hardly repeats any.
 const repeatLimit = 50
 
+// With few violated variables in a large system check drives them home one by one,
+// keeping all else within bounds: dense rows, such as claims over all counts, are
+// then priced once for many pivots.
+const (
+	driveCount = 3
+	driveRows  = 300
+)
+
 // check looks for values within all bounds. On lpConflict it returns the
 // reasons of the bounds in an infeasible row (a Farkas combination whose
 // multipliers are the row's coefficients).
@@ -315,8 +329,21 @@ func (s *simplex) check() (lpStatus, []reason) {
 		if s.stats.Pivots >= s.maxPivots {
 			return lpBudget, nil
 		}
-		s.rowOf(s.pos[b])
 		side := s.side(b)
+		if len(s.infeas) <= driveCount && len(s.rows) >= s.driveRows {
+			target := s.lo[b].v
+			if side > 0 {
+				target = s.hi[b].v
+			}
+			if st := s.drive(b, side < 0, &target); st != lpOK {
+				return st, nil
+			}
+			if s.side(b) != 0 {
+				return lpConflict, s.rowConflict(b, side)
+			}
+			continue
+		}
+		s.rowOf(s.pos[b])
 		enter := int32(-1)
 		for _, j := range s.alpha.idx {
 			a := s.alpha.val[j].sign()
@@ -429,30 +456,40 @@ func (s *simplex) swap(p, j int32) {
 // Programming Computing Techniques, 1968).
 const priced = 40
 
-// candidate is a nonbasic variable whose move up (or down) lowers the objective.
+// candidate is a nonbasic variable whose move helps the driven variable.
 type candidate struct {
 	j    int32
-	rate num // absolute change of the objective per unit
+	rate num // absolute change of the driven variable per unit
 }
 
 // minimise moves to a vertex with the least value of o, from a feasible point
 // (check returned lpOK). lpUnbounded means that a ray within all bounds lowers
 // o for ever.
-func (s *simplex) minimise(o int32) lpStatus {
+func (s *simplex) minimise(o int32) lpStatus { return s.drive(o, false, nil) }
+
+// drive is the primal simplex with o as objective: it moves o upwards or
+// downwards without letting any variable leave its bounds that is within them
+// now. With a target, the bound that o violates, it stops as soon as o is within its
+// bounds. lpOK: the target or the optimum is reached; if o is still outside its bounds then, s.alpha is the row of
+// o, which is a conflict. lpUnbounded occurs only without a target.
+func (s *simplex) drive(o int32, upwards bool, target *num) lpStatus {
 	still := 0 // pivots in a row without progress
 	var list []candidate
 	for {
 		if s.stats.Pivots >= s.maxPivots {
 			return lpBudget
 		}
+		if target != nil && s.side(o) == 0 {
+			return lpOK
+		}
 		var j int32
 		var up bool
 		switch {
 		case s.pos[o] < 0:
-			if s.lo[o].set && s.val[o].cmp(s.lo[o].v) <= 0 {
+			if s.atEnd(o, upwards) {
 				return lpOK
 			}
-			j, up = o, false
+			j, up = o, upwards
 			s.column(j)
 		case len(list) > 0 && still <= repeatLimit:
 			j = list[0].j
@@ -465,12 +502,12 @@ func (s *simplex) minimise(o int32) lpStatus {
 			if rate.isZero() {
 				continue
 			}
-			up = rate.sign() > 0
+			up = (rate.sign() < 0) == upwards
 			if s.atEnd(j, up) {
 				continue
 			}
 		default:
-			list = s.price(o, still > repeatLimit, list[:0])
+			list = s.price(o, upwards, still > repeatLimit, list[:0])
 			if len(list) == 0 {
 				return lpOK
 			}
@@ -480,7 +517,7 @@ func (s *simplex) minimise(o int32) lpStatus {
 			j = list[0].j // Bland: the least index
 			list = list[:0]
 			s.column(j)
-			up = s.w.val[s.pos[o]].sign() > 0
+			up = (s.w.val[s.pos[o]].sign() < 0) == upwards
 		}
 		// Moving j by t·dir moves the basic variable at p by -t·dir·w_p.
 		var step num
@@ -498,13 +535,25 @@ func (s *simplex) minimise(o int32) lpStatus {
 			v := s.basic[p]
 			grows := (c.sign() < 0) == up
 			var room num
-			if grows {
-				if !s.hi[v].set {
+			switch {
+			case v == o && target != nil:
+				// Not to the near bound but on to the next vertex, if the far bound
+				// allows: on a flow that is an integral point.
+				far := s.lo[o]
+				if upwards {
+					far = s.hi[o]
+				}
+				if !far.set {
+					continue
+				}
+				room = far.v.sub(s.val[o]).abs()
+			case grows:
+				if !s.hi[v].set || s.val[v].cmp(s.hi[v].v) > 0 {
 					continue
 				}
 				room = s.hi[v].v.sub(s.val[v])
-			} else {
-				if !s.lo[v].set {
+			default:
+				if !s.lo[v].set || s.val[v].cmp(s.lo[v].v) < 0 {
 					continue
 				}
 				room = s.val[v].sub(s.lo[v].v)
@@ -519,7 +568,11 @@ func (s *simplex) minimise(o int32) lpStatus {
 			}
 		}
 		if !found {
-			return lpUnbounded
+			if target == nil {
+				return lpUnbounded
+			}
+			block = s.pos[o]
+			step = target.sub(s.val[o]).div(s.w.val[block]).abs()
 		}
 		if step.isZero() {
 			still++
@@ -546,13 +599,13 @@ func (s *simplex) atEnd(v int32, up bool) bool {
 	return s.lo[v].set && s.val[v].cmp(s.lo[v].v) <= 0
 }
 
-// price lists the variables with the best rates for lowering the basic variable
-// o, best first; under Bland's rule only the one of least index.
-func (s *simplex) price(o int32, bland bool, list []candidate) []candidate {
+// price lists the variables with the best rates for moving the basic variable o
+// upwards (or down), best first; under Bland's rule only the one of least index.
+func (s *simplex) price(o int32, upwards, bland bool, list []candidate) []candidate {
 	s.rowOf(s.pos[o])
 	for _, k := range s.alpha.idx {
 		a := s.alpha.val[k]
-		if a.isZero() || s.atEnd(k, a.sign() > 0) {
+		if a.isZero() || s.atEnd(k, (a.sign() < 0) == upwards) {
 			continue
 		}
 		if bland {

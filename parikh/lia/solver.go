@@ -30,6 +30,7 @@ type Options struct {
 	NoCuts     bool
 	NoLattice  bool // no divisibility test of whole systems of equations
 	NoMinimise bool // conflicts are learnt as found
+	smallDrive bool // use the large-system pivoting on small ones; for tests
 	Sanity     bool // check internal invariants after each step; slow
 }
 
@@ -177,6 +178,9 @@ func New(opt Options) *Solver {
 		boolLit:   []z.Lit{z.LitNull},
 	}
 	s.sx = newSimplex(&s.stats)
+	if opt.smallDrive {
+		s.sx.driveRows = 0
+	}
 	s.guard = s.sat.Lit()
 	s.truth = s.sat.Lit()
 	s.addClause(s.truth)
