@@ -296,8 +296,12 @@ func (p *parser) file() {
 		}) && d != nil {
 			p.f.Decls = append(p.f.Decls, d)
 		}
-		if p.i == before { // a closing brace too many
+		if p.i == before { // a closing brace too many, and what goes on behind it in its line
+			line, _ := p.f.Position(p.tok().From)
 			p.i++
+			if next, _ := p.f.Position(p.tok().From); next == line {
+				p.skip()
+			}
 		}
 	}
 }
