@@ -394,7 +394,7 @@ func (m *Model) enters(fr *frame, l *link) bool {
 	case anyInst:
 		return g.cone
 	case unborn:
-		return g.bearing || m.callsBack(fr, l)
+		return m.exportsBirth(g) || m.callsBack(fr, l)
 	}
 	if len(fr.ns.names) == 0 {
 		return false
@@ -829,7 +829,7 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 	if len(fr.fs) == 0 && (fr.ns.phase != born || len(fr.ns.names) == 0) {
 		return
 	}
-	sum := m.sh.eff.OfCall(site)
+	sum := m.sh.effectsAt(site)
 	if !sum.Writes() && !sum.WritesUnknown() {
 		return
 	}
@@ -846,7 +846,7 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 // silent executes a call that does nothing to the instance itself: it may
 // overwrite places, hand the instance on, panic, or not come back.
 func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pds.Rule) ([]pds.Rule, bool) {
-	sum := m.sh.eff.OfCall(c)
+	sum := m.sh.effectsAt(c)
 	ex := sum.Exits()
 	n := len(dst)
 	if ex&effects.Panics != 0 && (m.panicMatters[fr.fi.fn] || ex&effects.Returns == 0) {
@@ -1151,7 +1151,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	if entered > 0 && entered == len(targets) {
 		return dst
 	}
-	sum := m.sh.eff.OfCall(d)
+	sum := m.sh.effectsAt(d)
 	ex := sum.Exits()
 	m.pass(fr, d, sum)
 	m.kill(fr, d)
@@ -1225,7 +1225,7 @@ func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
 		}
 	}
 	var heads []pds.Head
-	sum := m.sh.eff.OfCall(g)
+	sum := m.sh.effectsAt(g)
 	for _, t := range targets {
 		l := m.linkOf(g, t, closure)
 		if t.Blocks == nil || m.isEventFunc(t) || !m.bears(fr, l) {

@@ -18,6 +18,9 @@ type fnInfo struct {
 	cone     bool // it reaches an event (over the call graph and its closures)
 	births   map[ssa.Value][]birth
 	bearing  bool          // an instance can be born in its cone
+	direct   bool          // an instance can be born in its own body
+	exports  exporting     // whether callers have to follow the births in it
+	own      []Expr        // subjects of the events in its own body
 	subjects map[Expr]bool // what the events of its cone are about, over its parameters, captures and globals
 	subjList []Expr        // the same, in order of discovery
 
@@ -75,13 +78,16 @@ func (m *Model) buildCone() {
 			fi := m.info(fn)
 			fi.events, fi.cone = true, true
 			if mt.birth >= 0 {
-				fi.bearing = true
+				fi.bearing, fi.direct = true, true
 			}
 			if mt.subject != 0 {
 				v := m.subjectValue(&mt, site)
 				if v != nil {
 					for _, o := range m.origins(fi, v) {
 						m.addSubject(fi, o)
+						if o.b == nil && o.s != 0 && !slices.Contains(fi.own, o.s) {
+							fi.own = append(fi.own, o.s)
+						}
 					}
 				}
 			}
@@ -159,7 +165,7 @@ func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 		}
 	}
 	fi.births[o.b] = append(fi.births[o.b], birth{name: o.n, static: o.s})
-	fi.bearing = true
+	fi.bearing, fi.direct = true, true
 	return true
 }
 

@@ -247,7 +247,7 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 	if len(m.matchEvents(s)) > 0 {
 		return false
 	}
-	sum := m.sh.eff.OfCall(c)
+	sum := m.sh.effectsAt(c)
 	ex := sum.Exits()
 	if ex&effects.Returns == 0 || ex&(effects.Goexits|effects.ExitsAll) != 0 && ex&effects.Returns == 0 {
 		return false

@@ -47,6 +47,7 @@ type Model struct {
 	doubtID map[doubtKey]pds.DoubtID
 	notes   noteSet
 
+	units   unitQueue
 	visited map[*ssa.Function]bool // functions whose code the exploration entered
 	funcIDs map[*ssa.Function]int
 }
@@ -232,6 +233,7 @@ func (m *Model) Exit(q pds.StateID) properties.Exit {
 		True:   s.last > 0, False: s.last < 0,
 	}
 	e.Outside = ns.outside
+	e.Named = len(ns.names) > 0
 	for _, n := range ns.names {
 		switch m.x.rootKind(n) {
 		case kResult:

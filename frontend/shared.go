@@ -21,6 +21,7 @@ type Shared struct {
 	index    map[*ssa.Function]int // position in fns: a fixed order
 	resolver *effects.TypeResolver
 	eff      *effects.Table
+	analysed int // functions before this position have summaries of their own
 
 	callers    map[*ssa.Function][]caller
 	targets    map[ssa.CallInstruction][]*ssa.Function
@@ -92,6 +93,7 @@ func Analyze(prog *load.Program, paths ...string) *Shared {
 		sh.index[fn] = i
 	}
 	sh.resolver = effects.NewTypeResolver(prog.SSA, sh.fns)
+	sh.analysed = len(sh.fns)
 	sh.eff = effects.Compute(prog.SSA, sh.fns, effects.Options{Callees: sh.resolver.Callees})
 	for i := 0; i < len(sh.fns); i++ { // grows by wrappers that calls name
 		sh.scan(sh.fns[i])
@@ -309,15 +311,40 @@ func (sh *Shared) resultPath(c *ssa.Call, res int) (arg ssa.Value, path []*types
 	return arg, path, arg != nil
 }
 
+// functionsOf lists the functions to lower. Generic functions that nothing
+// instantiates are left out: the effects of their calls are not known.
 func functionsOf(prog *load.Program, paths []string) []*ssa.Function {
-	if len(paths) == 0 {
-		return slices.Clone(prog.Functions())
-	}
 	var out []*ssa.Function
-	for _, fn := range prog.Functions() {
-		if p := prog.PackageOfFunction(fn); p != nil && slices.Contains(paths, p.Path) {
+	add := func(fns []*ssa.Function) {
+		for _, fn := range fns {
+			if prog.Uninstantiated(fn) {
+				continue
+			}
+			if len(paths) > 0 {
+				if p := prog.PackageOfFunction(fn); p == nil || !slices.Contains(paths, p.Path) {
+					continue
+				}
+			}
 			out = append(out, fn)
 		}
 	}
+	add(prog.Functions())
+	add(prog.Wrappers())
 	return out
+}
+
+// effectsAt is what a call may do. A wrapper that was made after the analysis
+// (a promoted method that only a known dynamic type calls) has no summary of
+// its own sites: there the summary of the callee has to do.
+func (sh *Shared) effectsAt(site ssa.CallInstruction) *effects.Summary {
+	if i, ok := sh.index[site.Parent()]; ok && i < sh.analysed {
+		return sh.eff.OfCall(site)
+	}
+	if fn := site.Common().StaticCallee(); fn != nil {
+		return sh.eff.Of(fn)
+	}
+	if ts := sh.targets[site]; len(ts) > 0 {
+		return sh.eff.Of(ts[0])
+	}
+	return sh.eff.Of(site.Parent())
 }

@@ -7,23 +7,8 @@ import (
 	"golang.org/x/tools/go/ssa"
 
 	"pathtally/frontend/load"
-	"pathtally/pds"
 	"pathtally/properties"
 )
-
-// findStarts lists the starting points that are known before anything is
-// explored; Cover adds those that no path reached.
-func (m *Model) findStarts() {
-	for _, fn := range m.sh.fns {
-		fi, ok := m.fnOf[fn]
-		if !ok || !fi.cone || m.isEventFunc(fn) || fn.Blocks == nil {
-			continue
-		}
-		if kind := m.rootKind(fn); kind != "" {
-			m.addStarts(fi, kind)
-		}
-	}
-}
 
 // rootKind says why paths start at fn; "" if they do not.
 func (m *Model) rootKind(fn *ssa.Function) string {
@@ -80,41 +65,6 @@ func isTest(fn *ssa.Function, pos posFunc) bool {
 	return false
 }
 
-// addStarts adds the starting points of one root: one for each instance that
-// exists before it, and one for all that are born on its paths.
-func (m *Model) addStarts(fi *fnInfo, kind string) []properties.Start {
-	n := len(m.starts)
-	obj := funcObject(fi.fn)
-	base := properties.Start{
-		Root: m.funcOf(fi.fn), Kind: kind,
-		Recovered: isHandler(fi.fn),
-		Exported:  obj != nil && obj.Exported() && fi.fn.Parent() == nil,
-	}
-	if m.rule.Each == nil {
-		base.Head = pds.Head{State: runState, Symbol: m.entry(fi, nset{phase: anyInst}, nil, recNo)}
-		m.starts = append(m.starts, base)
-		return m.starts[n:]
-	}
-	if m.existingMatters() {
-		for _, u := range fi.subjList {
-			ns := nset{phase: born}
-			ns.add(u)
-			s := base
-			s.Head = pds.Head{State: runState, Symbol: m.entry(fi, ns, nil, recNo)}
-			s.Instance = m.sourceName(fi.fn, u)
-			s.Home = m.home(fi.fn, u)
-			m.starts = append(m.starts, s)
-		}
-	}
-	if fi.bearing {
-		s := base
-		s.Born = true
-		s.Head = pds.Head{State: runState, Symbol: m.entry(fi, nset{phase: unborn}, nil, recNo)}
-		m.starts = append(m.starts, s)
-	}
-	return m.starts[n:]
-}
-
 // existingMatters: can an instance that exists before the root break a claim
 // at all? Not if every count that could tip a claim over comes from births.
 func (m *Model) existingMatters() bool {
@@ -156,57 +106,6 @@ func givesInstance(e *properties.EventMatch) bool {
 		}
 	}
 	return false
-}
-
-// Cover adds starting points for functions with events that no path from the
-// starting points so far has entered, uppermost callers first, and returns
-// them; none when every function with an event was entered.
-func (m *Model) Cover() []properties.Start {
-	var open []*fnInfo
-	for _, fn := range m.sh.fns {
-		if fi, ok := m.fnOf[fn]; ok && fi.events && !m.visited[fn] && !m.isEventFunc(fn) {
-			open = append(open, fi)
-		}
-	}
-	if len(open) == 0 {
-		return nil
-	}
-	isOpen := map[*ssa.Function]bool{}
-	for _, fi := range open {
-		isOpen[fi.fn] = true
-	}
-	n := len(m.starts)
-	add := func(fi *fnInfo) {
-		m.visited[fi.fn] = true
-		before := len(m.starts)
-		m.addStarts(fi, "cover")
-		_ = before
-	}
-	for _, fi := range open {
-		upper := true
-		for _, c := range m.sh.callers[fi.fn] {
-			if c.fn != fi.fn && isOpen[c.fn] {
-				upper = false
-				break
-			}
-		}
-		if upper {
-			add(fi)
-		}
-	}
-	if len(m.starts) == n {
-		// Recursion, or functions about which there is nothing to ask.
-		for _, fi := range open {
-			add(fi)
-			if len(m.starts) > n {
-				break
-			}
-		}
-	}
-	if len(m.starts) == n {
-		return m.Cover()
-	}
-	return m.starts[n:]
 }
 
 // Coverage counts the functions that have an event, and those of them that

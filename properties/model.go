@@ -31,6 +31,17 @@ type Ledger interface {
 	WithEvents() []Func
 }
 
+// BottomUp is a Model that finds its starting points from the events upwards:
+// a function that keeps all claims by itself, leaves every count even and gives
+// no live instance to its caller is closed, and its callers need not follow it.
+// Starts is final when Next has answered false.
+type BottomUp interface {
+	// Next gives the next start to look at, callees before callers.
+	Next() (Start, bool)
+	// Settle says whether the start that Next gave last is closed.
+	Settle(closed bool)
+}
+
 // Place is a position in the source. File is as the user should see it
 // (relative to the module root with forward slashes where it is inside).
 type Place struct {
@@ -51,8 +62,14 @@ type Start struct {
 	Born     bool
 	// Recovered: whoever runs this root recovers its panics (`at end` includes panics).
 	Recovered bool
-	// HasCallers: the root is called from inside the module as well.
+	// Exported: whoever can import the package can call the root.
 	Exported bool
+	// Inner: no path starts here; the start is looked at to learn whether callers
+	// have to follow the function, and as a possible partner in a contract.
+	Inner bool
+	// Even: every function below the root that does something to the instance
+	// keeps all claims by itself and leaves nothing behind: there is nothing to ask.
+	Even bool
 }
 
 // Func names a function.
@@ -102,6 +119,8 @@ type Exit struct {
 	Outside bool
 	// Unborn: no instance was born on this path.
 	Unborn bool
+	// Named: the instance has a name that whoever is returned to may know it by.
+	Named bool
 	// True is set if the last result is a bool known to be true, False if known
 	// to be false (for contracts like TryTake).
 	True, False bool

@@ -76,7 +76,13 @@ func (o Options) causes() int {
 }
 
 func newJudge(rule *properties.ResolvedRule, m properties.Model, s searcher, opt Options) *judge {
-	j := &judge{rule: rule, m: m, s: s, opt: opt, starts: m.Starts(), homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
+	j := &judge{rule: rule, m: m, s: s, opt: opt, homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
+	if b, ok := m.(properties.BottomUp); ok {
+		for s, more := b.Next(); more; s, more = b.Next() {
+			b.Settle(j.closed(&s))
+		}
+	}
+	j.starts = m.Starts()
 	for i := range j.starts {
 		if h := j.starts[i].Home; h != "" && !j.starts[i].Born {
 			j.homes[h] = append(j.homes[h], i)
@@ -89,6 +95,9 @@ func (j *judge) run() *RuleResult {
 	seenRoot := map[string]bool{}
 	for si := range j.starts {
 		s := &j.starts[si]
+		if s.Inner {
+			continue
+		}
 		root := s.Root.Package + "." + s.Root.Name + fmt.Sprint(s.Root.Place)
 		if !seenRoot[root] {
 			seenRoot[root] = true
@@ -139,7 +148,9 @@ func (j *judge) question(si int, c *properties.Claim) {
 		}
 		return true
 	}
-	if c.Linear {
+	if s.Even {
+		grounds = []string{"every function below it that touches the instance is even by itself"}
+	} else if c.Linear {
 		for qi := range c.Questions {
 			if !take(j.answer(si, c, &c.Questions[qi])) {
 				break
@@ -176,6 +187,45 @@ type answered struct {
 	open    *Open
 	soft    bool // all that is broken stands in packages where the claim is softened
 	blame   []properties.Func
+}
+
+// closed says whether callers of a function need not follow it: see
+// properties.BottomUp. It asks every claim, advice too, on or off.
+func (j *judge) closed(s *properties.Start) bool {
+	for ci := range j.rule.Claims {
+		c := &j.rule.Claims[ci]
+		if !c.Linear {
+			return false
+		}
+		for qi := range c.Questions {
+			w := c.Questions[qi].Weights
+			a := j.asks(s, c, w)
+			if isEnd(c.Point) {
+				// Whatever way the function is left, and whoever recovers.
+				a.stops = pds.MarkLoss
+				a.accept = func(q pds.StateID) bool {
+					e := j.m.Exit(q)
+					return !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
+				}
+			}
+			most, stop := j.s.greatest(a)
+			if stop != nil || most.over(c.Questions[qi].Bound) {
+				return false
+			}
+			if s.Born {
+				continue
+			}
+			all, stop := j.span(s.Head, w, func(properties.Exit) bool { return true })
+			if stop != nil || !all.none && !all.is(0) {
+				return false
+			}
+		}
+	}
+	if s.Born {
+		live, stop := j.span(s.Head, make([]int64, len(j.rule.Counts)), func(e properties.Exit) bool { return !e.Unborn && e.Named })
+		return stop == nil && live.none
+	}
+	return true
 }
 
 // answer decides one inequality of a claim at one start.

@@ -1,0 +1,339 @@
+package frontend
+
+import (
+	"container/heap"
+	"slices"
+
+	"golang.org/x/tools/go/ssa"
+
+	"pathtally/pds"
+	"pathtally/properties"
+)
+
+// Starting points are found from the events upwards. A unit is a function
+// together with an instance that exists before it, or with all instances born
+// below it. Units start at the functions in which an event or a birth stands.
+// One that is closed (see properties.BottomUp) ends there; of one that is not,
+// the callers become units too, up to the roots. So the cost of a lock that
+// hundreds of functions reach, through one function that takes and releases it,
+// is the cost of that function.
+//
+// Exact: what a closed function does to the instance adds nothing to any count
+// difference that a claim asks about, so a caller all of whose callees are
+// closed has only even paths; a caller with one that is not is explored with
+// all of them.
+
+// exporting says whether a caller that follows no instance yet has to enter a function.
+type exporting uint8
+
+const (
+	exportsUnknown exporting = iota
+	exportsYes               // a live or badly settled instance comes out of it
+	exportsNo
+)
+
+// exportsBirth is asked when a path without instance comes to a call of g. An
+// answer that is given once stays.
+func (m *Model) exportsBirth(g *fnInfo) bool {
+	if !g.bearing {
+		return false
+	}
+	if g.exports == exportsUnknown {
+		g.exports = exportsYes
+	}
+	return g.exports == exportsYes
+}
+
+type unitKey struct {
+	fn *fnInfo
+	u  Expr // the instance over the function's frame; 0: those born below
+}
+
+type unit struct {
+	unitKey
+	pos     int // of the function in the bottom-up order
+	seq     int // of the unit's making
+	start   properties.Start
+	settled bool
+	closed  bool
+	parents []unitKey // callers that follow it
+}
+
+type unitQueue struct {
+	byKey map[unitKey]*unit
+	order map[*fnInfo]int
+	heap  unitHeap
+	all   []*unit
+	now   *unit
+	done  bool
+}
+
+type unitHeap []*unit
+
+func (h unitHeap) Len() int { return len(h) }
+func (h unitHeap) Less(i, j int) bool {
+	if h[i].pos != h[j].pos {
+		return h[i].pos < h[j].pos
+	}
+	return h[i].seq < h[j].seq
+}
+func (h unitHeap) Swap(i, j int) { h[i], h[j] = h[j], h[i] }
+func (h *unitHeap) Push(x any)   { *h = append(*h, x.(*unit)) }
+func (h *unitHeap) Pop() any {
+	old := *h
+	x := old[len(old)-1]
+	*h = old[:len(old)-1]
+	return x
+}
+
+// findStarts makes the first units: where events and births stand.
+func (m *Model) findStarts() {
+	q := &m.units
+	q.byKey = map[unitKey]*unit{}
+	q.order = m.bottomUp()
+	if m.rule.Each == nil {
+		for _, fn := range m.sh.fns {
+			if fi, ok := m.fnOf[fn]; ok && fi.cone && !m.isEventFunc(fn) && fn.Blocks != nil {
+				if kind := m.rootKind(fn); kind != "" {
+					m.starts = append(m.starts, m.startOf(unitKey{fi, 0}, kind))
+				}
+			}
+		}
+		q.done = true
+		return
+	}
+	existing := m.existingMatters()
+	for _, fn := range m.sh.fns {
+		fi, ok := m.fnOf[fn]
+		if !ok || !fi.cone || m.isEventFunc(fn) || fn.Blocks == nil {
+			continue
+		}
+		if existing {
+			for _, u := range fi.own {
+				m.addUnit(unitKey{fi, u})
+			}
+		}
+		if fi.direct {
+			m.addUnit(unitKey{fi, 0})
+		}
+	}
+}
+
+// bottomUp numbers the functions of the cone, callees (and closures) before
+// callers as far as recursion allows.
+func (m *Model) bottomUp() map[*fnInfo]int {
+	order := map[*fnInfo]int{}
+	type frame struct {
+		fi   *fnInfo
+		next []*fnInfo
+	}
+	callees := func(fi *fnInfo) []*fnInfo {
+		var out []*fnInfo
+		for _, b := range fi.fn.Blocks {
+			for _, i := range b.Instrs {
+				switch i := i.(type) {
+				case *ssa.MakeClosure:
+					if g, ok := m.fnOf[i.Fn.(*ssa.Function)]; ok && g.cone {
+						out = append(out, g)
+					}
+				case ssa.CallInstruction:
+					for _, t := range m.sh.targets[i] {
+						if g, ok := m.fnOf[t]; ok && g.cone {
+							out = append(out, g)
+						}
+					}
+				}
+			}
+		}
+		return out
+	}
+	seen := map[*fnInfo]bool{}
+	for _, fn := range m.sh.fns {
+		fi, ok := m.fnOf[fn]
+		if !ok || !fi.cone || seen[fi] {
+			continue
+		}
+		seen[fi] = true
+		stack := []frame{{fi, callees(fi)}}
+		for len(stack) > 0 {
+			top := &stack[len(stack)-1]
+			if len(top.next) == 0 {
+				order[top.fi] = len(order)
+				stack = stack[:len(stack)-1]
+				continue
+			}
+			g := top.next[0]
+			top.next = top.next[1:]
+			if !seen[g] {
+				seen[g] = true
+				stack = append(stack, frame{g, callees(g)})
+			}
+		}
+	}
+	return order
+}
+
+func (m *Model) addUnit(k unitKey) *unit {
+	q := &m.units
+	if u, ok := q.byKey[k]; ok {
+		return u
+	}
+	kind := m.rootKind(k.fn.fn)
+	u := &unit{unitKey: k, pos: q.order[k.fn], seq: len(q.all), start: m.startOf(k, kind)}
+	u.start.Inner = kind == ""
+	q.byKey[k] = u
+	q.all = append(q.all, u)
+	heap.Push(&q.heap, u)
+	return u
+}
+
+// startOf is the starting point of a unit.
+func (m *Model) startOf(k unitKey, kind string) properties.Start {
+	obj := funcObject(k.fn.fn)
+	s := properties.Start{
+		Root: m.funcOf(k.fn.fn), Kind: kind,
+		Recovered: isHandler(k.fn.fn),
+		Exported:  obj != nil && obj.Exported() && k.fn.fn.Parent() == nil,
+	}
+	ns := nset{phase: unborn}
+	switch {
+	case m.rule.Each == nil:
+		ns.phase = anyInst
+	case k.u == 0:
+		s.Born = true
+	default:
+		ns.phase = born
+		ns.add(k.u)
+		s.Instance = m.sourceName(k.fn.fn, k.u)
+		s.Home = m.home(k.fn.fn, k.u)
+	}
+	s.Head = pds.Head{State: runState, Symbol: m.entry(k.fn, ns, nil, recNo)}
+	return s
+}
+
+// Next implements properties.BottomUp.
+func (m *Model) Next() (properties.Start, bool) {
+	q := &m.units
+	if q.done {
+		return properties.Start{}, false
+	}
+	if q.heap.Len() == 0 {
+		m.finishStarts()
+		return properties.Start{}, false
+	}
+	u := heap.Pop(&q.heap).(*unit)
+	q.now = u
+	return u.start, true
+}
+
+// Settle implements properties.BottomUp.
+func (m *Model) Settle(closed bool) {
+	u := m.units.now
+	u.settled, u.closed = true, closed
+	if closed {
+		if u.u == 0 && u.fn.exports == exportsUnknown {
+			u.fn.exports = exportsNo
+		}
+		return
+	}
+	if u.u == 0 {
+		u.fn.exports = exportsYes
+	}
+	for _, c := range m.sh.callers[u.fn.fn] {
+		g, ok := m.fnOf[c.fn]
+		if !ok || !g.cone || m.isEventFunc(c.fn) || c.fn.Blocks == nil {
+			continue
+		}
+		if u.u == 0 {
+			u.parents = append(u.parents, unitKey{g, 0})
+			m.addUnit(unitKey{g, 0})
+			continue
+		}
+		for _, o := range m.translate(g, u.u, c, u.fn.fn) {
+			switch {
+			case o.s == 0:
+			case o.b == nil:
+				if g.subjects[o.s] {
+					k := unitKey{g, o.s}
+					u.parents = append(u.parents, k)
+					m.addUnit(k)
+				}
+			case len(g.births[o.b]) > 0:
+				u.parents = append(u.parents, unitKey{g, 0})
+				m.addUnit(unitKey{g, 0})
+			}
+		}
+	}
+}
+
+// finishStarts makes roots of the units that are not closed and that no root
+// follows (the covering rule), adds what needs no question, and fixes the order.
+func (m *Model) finishStarts() {
+	q := &m.units
+	q.done = true
+	answered := map[*unit]bool{}
+	children := map[unitKey][]*unit{}
+	for _, u := range q.all {
+		for _, p := range u.parents {
+			children[p] = append(children[p], u)
+		}
+	}
+	var mark func(u *unit)
+	mark = func(u *unit) {
+		if answered[u] {
+			return
+		}
+		answered[u] = true
+		for _, c := range children[u.unitKey] {
+			mark(c)
+		}
+	}
+	for _, u := range q.all {
+		if !u.start.Inner {
+			mark(u)
+		}
+	}
+	// Uppermost first: a unit without followers, then whatever is left of recursion.
+	for _, strict := range []bool{true, false} {
+		for i := len(q.all) - 1; i >= 0; i-- {
+			u := q.all[i]
+			if u.closed || answered[u] || strict && m.followed(u) {
+				continue
+			}
+			u.start.Inner, u.start.Kind = false, "cover"
+			mark(u)
+		}
+	}
+	var starts []properties.Start
+	existing := m.existingMatters()
+	for _, fn := range m.sh.fns {
+		fi, ok := m.fnOf[fn]
+		if !ok || !fi.cone || m.isEventFunc(fn) || fn.Blocks == nil {
+			continue
+		}
+		kind := m.rootKind(fn)
+		add := func(k unitKey) {
+			if u, ok := q.byKey[k]; ok {
+				starts = append(starts, u.start)
+			} else if kind != "" {
+				s := m.startOf(k, kind)
+				s.Even = true
+				starts = append(starts, s)
+			}
+		}
+		if existing {
+			for _, u := range fi.subjList {
+				add(unitKey{fi, u})
+			}
+		}
+		if fi.bearing {
+			add(unitKey{fi, 0})
+		}
+	}
+	m.starts = starts
+}
+
+// followed tells whether another function follows the unit.
+func (m *Model) followed(u *unit) bool {
+	return slices.ContainsFunc(u.parents, func(p unitKey) bool { return p.fn != u.fn })
+}
