@@ -113,6 +113,9 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 	if err := f.validate(); err != nil {
 		return err
 	}
+	if slices.Contains(patterns, "") {
+		return usage("a package pattern is empty: write ./... for all packages from here on down")
+	}
 	only, err := parseOnly(f.only)
 	if err != nil {
 		return err
