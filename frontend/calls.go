@@ -54,7 +54,7 @@ func (m *Model) linkOf(site ssa.CallInstruction, g *ssa.Function, closure Expr) 
 // callbackLink is the link of a function value that the callee of site calls.
 func (m *Model) callbackLink(site ssa.CallInstruction, arg ssa.Value, g *ssa.Function) *link {
 	l := &link{fi: m.info(g), site: site, callback: true}
-	if mc, ok := arg.(*ssa.MakeClosure); ok {
+	if mc := closureOf(arg); mc != nil {
 		l.made = mc
 	} else {
 		l.closure = m.x.name(arg)
@@ -82,16 +82,13 @@ func (m *Model) toCallee(ns nset, l *link) nset {
 		if m.x.rootKind(e) == kGlobal {
 			out.add(e)
 		}
-		for i, a := range l.args {
-			out.add(m.x.rebase(e, a, m.x.param(i)))
-			if mc, ok := l.vals[i].(*ssa.MakeClosure); ok {
-				for k, b := range mc.Bindings {
-					out.add(m.x.rebase(e, m.x.name(b), m.x.capt(m.x.param(i), k)))
-				}
-			}
+		for i := range l.args {
+			m.carryOver(&out, e, l.vals[i], m.x.param(i))
 		}
 		for i := range l.fi.fn.FreeVars {
-			if f := m.linkFree(l, i); f != 0 {
+			if l.made != nil && i < len(l.made.Bindings) {
+				m.carryOver(&out, e, l.made.Bindings[i], m.x.free(i))
+			} else if f := m.linkFree(l, i); f != 0 {
 				out.add(m.x.rebase(e, f, m.x.free(i)))
 			}
 		}
@@ -285,7 +282,7 @@ func (m *Model) call(fr *frame, c *ssa.Call, dst []pds.Rule) ([]pds.Rule, bool) 
 	before := fr.clone()
 	for _, l := range enter {
 		fr := before.clone()
-		ns := m.toCallee(fr.ns, l)
+		ns := m.lend(m.toCallee(fr.ns, l))
 		fs := m.factsToCallee(fr, l, fr.b)
 		m.kill(fr, c)
 		m.define(fr, c)
@@ -305,6 +302,15 @@ func (m *Model) call(fr *frame, c *ssa.Call, dst []pds.Rule) ([]pds.Rule, bool) 
 		return append(dst, m.goTo(fr, 0)), true
 	}
 	return dst, true
+}
+
+// lend marks what a callee is handed as known to its caller too: the callee
+// cannot lose it.
+func (m *Model) lend(ns nset) nset {
+	if ns.phase == born {
+		ns.add(m.x.kept())
+	}
+	return ns
 }
 
 func (m *Model) entry(fi *fnInfo, ns nset, fs factset, rec int8) pds.SymbolID {
@@ -468,10 +474,10 @@ func (m *Model) callsBack(fr *frame, l *link) bool {
 
 // funcValue is the function that v is known to be.
 func (m *Model) funcValue(fr *frame, v ssa.Value) (*ssa.Function, *ssa.MakeClosure) {
-	switch x := v.(type) {
-	case *ssa.MakeClosure:
-		return x.Fn.(*ssa.Function), x
-	case *ssa.ChangeType:
+	if mc := closureOf(v); mc != nil {
+		return mc.Fn.(*ssa.Function), mc
+	}
+	if x, ok := v.(*ssa.ChangeType); ok {
 		return m.funcValue(fr, x.X)
 	}
 	if a := m.t.abs[m.absOf(fr, v, fr.b)]; a.kind == aFunc {
@@ -546,7 +552,7 @@ func (m *Model) callbackRules(fr *frame, c *ssa.Call, v ssa.Value, l *link, how 
 		dst = append(dst, m.goTo(skip, 0))
 	}
 	in := fr.clone()
-	ns := m.toCallee(in.ns, l)
+	ns := m.lend(m.toCallee(in.ns, l))
 	fs := m.factsToCallee(in, l, in.b)
 	m.kill(in, c)
 	return append(dst, pds.Rule{Kind: pds.Push, State: runState,
@@ -892,14 +898,7 @@ func (m *Model) pass(fr *frame, site ssa.CallInstruction, sum *effects.Summary) 
 		a := m.x.name(v)
 		holds := false
 		for _, e := range old {
-			if m.x.within(a, e) {
-				holds = true
-			}
-			if mc, ok := v.(*ssa.MakeClosure); ok {
-				for _, b := range mc.Bindings {
-					holds = holds || m.x.within(m.x.name(b), e)
-				}
-			}
+			holds = holds || m.reaches(e, v)
 		}
 		if !holds {
 			// A variadic slice holds what was stored into its array.
@@ -1050,6 +1049,9 @@ func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
 	}
 	after := fr.clone()
 	after.i++
+	if len(pushed.names) > 0 {
+		after.ns.add(m.x.kept())
+	}
 	if m.outerDefer(d) {
 		m.note(d, "range-over-func", "a deferred call pushed inside the body of a range over a function is not followed")
 		return m.goTo(after, 0)
@@ -1138,7 +1140,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 		if st.exit == properties.ExitPanic {
 			rec = recCan
 		}
-		ns := m.toCallee(in.ns, l)
+		ns := m.lend(m.toCallee(in.ns, l))
 		fs := m.factsToCallee(in, l, nil)
 		keep := fr.clone()
 		m.kill(keep, d)

@@ -134,6 +134,9 @@ func (m *Model) funcOf(fn *ssa.Function) properties.Func {
 	} else {
 		f.Name = named.Name()
 	}
+	if base, n, ok := strings.Cut(f.Name, "#"); ok && base == "init" && n != "" {
+		f.Name = base // several functions init are told apart by their places
+	}
 	f.Place = m.at(fn.Pos())
 	if s := fn.Syntax(); s != nil {
 		f.Place = m.at(s.Pos())

@@ -110,6 +110,10 @@ func (t *exprs) res(v ssa.Value, i int) Expr {
 	return t.intern(exprNode{kind: kRes, n: int32(i), ref: v})
 }
 func (t *exprs) constant(s string) Expr { return t.intern(exprNode{kind: kConst, ref: s}) }
+// kept stands for a name that another frame or a pending deferred call has: with
+// it the instance is not lost, whatever happens to the names of this frame.
+func (t *exprs) kept() Expr { return t.constant("(kept)") }
+
 func (t *exprs) held(x Expr) Expr {
 	if k := t.nodes[x].kind; k == kHeld {
 		return x

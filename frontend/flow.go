@@ -161,7 +161,9 @@ func (m *Model) joinOf(fi *fnInfo, b *ssa.BasicBlock, inert []bool, pdom []int) 
 		return nil
 	}
 	j := fi.fn.Blocks[ji]
-	region := map[*ssa.BasicBlock]bool{b: true}
+	// b itself is in the region only if a side leads back to it: then what stands
+	// in it runs again.
+	region := map[*ssa.BasicBlock]bool{}
 	work := []*ssa.BasicBlock{b.Succs[0], b.Succs[1]}
 	for len(work) > 0 {
 		c := work[len(work)-1]
@@ -175,6 +177,7 @@ func (m *Model) joinOf(fi *fnInfo, b *ssa.BasicBlock, inert []bool, pdom []int) 
 		region[c] = true
 		work = append(work, c.Succs...)
 	}
+	region[b] = true
 	for _, i := range j.Instrs {
 		phi, ok := i.(*ssa.Phi)
 		if !ok {

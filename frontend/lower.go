@@ -396,7 +396,6 @@ func (m *Model) heldUnder(fr *frame, o origin) {
 func (m *Model) store(fr *frame, st *ssa.Store) {
 	a := m.x.name(st.Addr)
 	s := m.placeKey(st.Addr, fr.b, 0)
-	val := m.x.name(st.Val)
 	f := m.flowOf(fr.fi)
 	var known Abs
 	if len(f.keys) > 0 {
@@ -412,19 +411,11 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 		fr.ns.filter(func(e Expr) bool { return !m.x.readsPlace(e, hit) })
 		if !isConst {
 			for _, e := range old {
-				if n := m.x.rebase(e, val, m.x.load(a)); n != 0 {
-					fr.ns.add(n)
-					if m.x.rootKind(a) == kReg || m.x.rootKind(a) == kRes {
-						m.alsoUnder(fr, st.Addr, e, val)
-					}
-				} else if mc, ok := st.Val.(*ssa.MakeClosure); ok {
-					for k, b := range mc.Bindings {
-						if n := m.x.rebase(e, m.x.name(b), m.x.capt(m.x.load(a), k)); n != 0 {
-							fr.ns.add(n)
-							m.alsoClosure(fr, st.Addr, e, m.x.name(b), k)
-						}
-					}
+				if !m.reaches(e, st.Val) {
+					continue
 				}
+				m.carryOver(&fr.ns, e, st.Val, m.x.load(a))
+				m.alsoUnder(fr, st.Addr, e, st.Val)
 			}
 		}
 	}
@@ -443,27 +434,17 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 // alsoUnder names what was stored under the other ways to write its address: a
 // store through a loaded pointer shows under the place the pointer came from,
 // and in an object from elsewhere it is out of the function's hands.
-func (m *Model) alsoUnder(fr *frame, addr ssa.Value, e, val Expr) {
+func (m *Model) alsoUnder(fr *frame, addr ssa.Value, e Expr, val ssa.Value) {
+	if k := m.x.rootKind(m.x.name(addr)); k != kReg && k != kRes {
+		return
+	}
 	for _, o := range m.origins(fr.fi, addr) {
 		switch m.x.rootKind(o.s) {
 		case kParam, kFree, kGlobal:
 			if m.x.frameFree(o.s) {
-				fr.ns.add(m.x.rebase(e, val, m.x.load(o.s)))
+				m.carryOver(&fr.ns, e, val, m.x.load(o.s))
 			} else {
 				m.heldUnder(fr, o)
-			}
-		default:
-			m.heldUnder(fr, o)
-		}
-	}
-}
-
-func (m *Model) alsoClosure(fr *frame, addr ssa.Value, e, binding Expr, k int) {
-	for _, o := range m.origins(fr.fi, addr) {
-		switch m.x.rootKind(o.s) {
-		case kParam, kFree, kGlobal:
-			if m.x.frameFree(o.s) {
-				fr.ns.add(m.x.rebase(e, binding, m.x.capt(m.x.load(o.s), k)))
 			}
 		default:
 			m.heldUnder(fr, o)
@@ -547,14 +528,8 @@ func (m *Model) edge(fr *frame, from, to *ssa.BasicBlock) {
 		}
 		r, v := m.x.reg(phi), phi.Edges[pred]
 		if fr.ns.phase == born && m.carries(phi.Type()) {
-			val := m.x.name(v)
 			for _, e := range fr.ns.names {
-				ns.add(m.x.rebase(e, val, r))
-				if mc, ok := v.(*ssa.MakeClosure); ok {
-					for k, b := range mc.Bindings {
-						ns.add(m.x.rebase(e, m.x.name(b), m.x.capt(r, k)))
-					}
-				}
+				m.carryOver(&ns, e, v, r)
 			}
 		}
 		if f.wants(r) {
@@ -677,6 +652,12 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 		return nil, false
 	}
 	for side := range 2 {
+		if impossible(b.Succs[side]) {
+			m.edge(fr, b, b.Succs[1-side]) // the last case of a blocking select
+			return nil, false
+		}
+	}
+	for side := range 2 {
 		c := fr.clone()
 		if !m.assume(c, i.Cond, side == 0, b) {
 			continue
@@ -745,12 +726,7 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 			}
 		}
 		for i, r := range results {
-			ns.add(m.x.rebase(e, m.x.name(r), m.x.result(i)))
-			if mc, ok := r.(*ssa.MakeClosure); ok {
-				for k, b := range mc.Bindings {
-					ns.add(m.x.rebase(e, m.x.name(b), m.x.capt(m.x.result(i), k)))
-				}
-			}
+			m.carryOver(&ns, e, r, m.x.result(i))
 		}
 	}
 	if fr.rec == recDone {
@@ -885,6 +861,16 @@ func (m *Model) panics(fr *frame, p *ssa.Panic, dst []pds.Rule) []pds.Rule {
 		return dst // the end of a blocking select, or select{}
 	}
 	return append(dst, m.leaveBy(fr, properties.ExitPanic, m.label(label{kind: lblPanic, instr: p})))
+}
+
+// impossible tells whether b stands where control never comes: behind the last
+// case of a blocking select, or where an iterator breaks its contract.
+func impossible(b *ssa.BasicBlock) bool {
+	if len(b.Succs) > 0 || len(b.Instrs) == 0 {
+		return false
+	}
+	p, ok := b.Instrs[len(b.Instrs)-1].(*ssa.Panic)
+	return ok && effects.KindOf(p) == effects.UnreachedPanic
 }
 
 // leaveBy: the frame is left by a panic or Goexit: through its deferred calls,
