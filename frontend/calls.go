@@ -2,6 +2,7 @@ package frontend
 
 import (
 	"go/types"
+	"slices"
 
 	"golang.org/x/tools/go/ssa"
 
@@ -151,13 +152,16 @@ func (m *Model) upKey(k Expr, l *link, form func(ssa.Value) Expr) Expr {
 			return form(l.made.Bindings[n.n])
 		}
 		return m.linkFree(l, int(n.n))
-	case kBin:
+	case kBin, kArgs:
 		x, y := m.upKey(n.x, l, form), m.upKey(n.y, l, form)
-		if x == 0 || y == 0 {
+		if x == 0 && n.x != 0 || y == 0 {
 			return 0
 		}
-		return m.x.intern(exprNode{kind: kBin, op: n.op, x: x, y: y})
-	case kUn:
+		return m.x.intern(exprNode{kind: n.kind, op: n.op, x: x, y: y})
+	case kUn, kGet:
+		if n.x == 0 {
+			return k
+		}
 		x := m.upKey(n.x, l, form)
 		if x == 0 {
 			return 0
@@ -631,26 +635,33 @@ func (m *Model) event(fr *frame, c *ssa.Call, s *shape, ms []match, dst []pds.Ru
 	}
 	for _, o := range outcomes(live, doubtful) {
 		sure, unsure, mark := m.tally(live, o), m.tally(doubtful, o), m.marks(live, o)
-		var birth *match
+		var births []*match // a call may give several instances: os.Pipe
 		for i := range live {
 			if live[i].birth >= 0 && o.has(&live[i]) && fr.ns.phase == unborn {
-				birth = &live[i]
+				births = append(births, &live[i])
 			}
 		}
 		base := fr.clone()
 		m.define(base, c)
 		m.applyOutcome(base, c, o)
 		base.i++
-		if birth != nil {
-			other := base.clone()
-			dst = append(dst, m.goTo(other, 0))
-			this := base.clone()
-			this.ns = nset{phase: born}
-			this.ns.add(m.birthName(m.resultName(c, birth.birth), birth.path))
-			m.setFact(this, m.resultName(c, birth.birth), m.nonNil())
-			r := m.goTo(this, m.label(label{kind: lblEvent, instr: c}))
-			r.Effect, r.Mark = m.effect(sure), mark
-			dst = append(dst, r)
+		if len(births) > 0 {
+			dst = append(dst, m.goTo(base.clone(), 0))
+			for _, b := range births {
+				this := base.clone()
+				this.ns = nset{phase: born}
+				this.ns.add(m.birthName(m.resultName(c, b.birth), b.path))
+				for _, b := range births {
+					m.setFact(this, m.resultName(c, b.birth), m.nonNil())
+				}
+				// Each is an instance of its own: its lines alone count for it.
+				own := slices.DeleteFunc(slices.Clone(live), func(mt match) bool {
+					return mt.birth >= 0 && mt.birth != b.birth
+				})
+				r := m.goTo(this, m.label(label{kind: lblEvent, instr: c}))
+				r.Effect, r.Mark = m.effect(m.tally(own, o)), mark
+				dst = append(dst, r)
+			}
 			continue
 		}
 		r := m.goTo(base, m.label(label{kind: lblEvent, instr: c}))
@@ -840,7 +851,9 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 		return
 	}
 	hit := func(addr Expr) bool { return m.overwrites(sum, addr, site) }
-	fr.fs = fr.fs.filter(func(e Expr) bool { return !m.x.readsPlace(e, hit) })
+	fr.fs = fr.fs.filter(func(e Expr) bool {
+		return !m.x.readsPlace(e, hit) && !m.x.callsGetter(e, func(g *ssa.Function) bool { return m.sh.eff.Of(g).ReadsOverwritten(sum) })
+	})
 	if fr.ns.phase == born && !sum.WritesUnknown() {
 		fr.ns.filter(func(e Expr) bool {
 			k := m.x.nodes[e].kind

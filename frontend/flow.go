@@ -541,7 +541,7 @@ func (m *Model) callKeys(site ssa.CallInstruction, b *ssa.BasicBlock, ask func(E
 
 func (m *Model) carriesOrCone(site ssa.CallInstruction) bool {
 	for _, g := range m.sh.targets[site] {
-		if gi, ok := m.fnOf[g]; ok && gi.cone {
+		if gi, ok := m.fnOf[g]; ok && gi.cone || m.isEventFunc(g) {
 			return true
 		}
 	}
@@ -583,13 +583,23 @@ func (m *Model) toCaller(k Expr, site ssa.CallInstruction, callee *ssa.Function,
 			return one(m.x.capt(m.x.name(site.Common().Value), int(n.n)))
 		}
 		return nil
-	case kBin:
-		x, y := m.toCaller(n.x, site, callee, b), m.toCaller(n.y, site, callee, b)
-		if len(x) == 1 && len(y) == 1 {
-			return one(m.x.intern(exprNode{kind: kBin, op: n.op, x: x[0], y: y[0]}))
+	case kBin, kArgs:
+		if n.x != 0 {
+			x := m.toCaller(n.x, site, callee, b)
+			if len(x) != 1 {
+				return nil
+			}
+			n.x = x[0]
+		}
+		if y := m.toCaller(n.y, site, callee, b); len(y) == 1 {
+			n.y = y[0]
+			return one(m.x.intern(n))
 		}
 		return nil
-	case kUn:
+	case kUn, kGet:
+		if n.x == 0 {
+			return one(k)
+		}
 		if x := m.toCaller(n.x, site, callee, b); len(x) == 1 {
 			n.x = x[0]
 			return one(m.x.intern(n))

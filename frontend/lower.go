@@ -298,8 +298,8 @@ func (m *Model) load(fr *frame, v *ssa.UnOp) {
 		p := m.x.load(m.placeKey(v.X, fr.b, 0))
 		val := fr.fs.get(p)
 		if val == 0 {
-			if g, ok := v.X.(*ssa.Global); ok && m.sh.eff.GlobalNonNil(g) {
-				val = m.nonNil()
+			if g, ok := v.X.(*ssa.Global); ok {
+				val = m.globalAbs(g)
 			}
 		}
 		m.setFact(fr, r, val)
@@ -421,7 +421,8 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 	}
 	if len(fr.fs) > 0 {
 		fr.fs = fr.fs.filter(func(e Expr) bool {
-			return !m.x.readsPlace(e, func(addr Expr) bool { return m.sameShape(addr, a) || s != 0 && m.sameShape(addr, s) })
+			return !m.x.readsPlace(e, func(addr Expr) bool { return m.sameShape(addr, a) || s != 0 && m.sameShape(addr, s) }) &&
+				!m.x.callsGetter(e, func(g *ssa.Function) bool { return m.mayChange(m.sh.eff.Of(g), st.Addr) })
 		})
 	}
 	for _, p := range [2]Expr{m.x.load(s), m.x.load(a)} {
@@ -534,8 +535,8 @@ func (m *Model) edge(fr *frame, from, to *ssa.BasicBlock) {
 		}
 		if f.wants(r) {
 			a := m.absOf(fr, v, from)
-			if m.t.abs[a].kind == aInt && m.loopHead(to) && !m.smallLoop(phi) {
-				a = 0 // a running counter: unrolling it would never end
+			if m.t.abs[a].kind == aInt && to.Dominates(from) && !m.smallLoop(phi) {
+				a = m.widen(fr.fs.get(r), a)
 			}
 			if a != 0 {
 				fs = fs.with(r, a)
@@ -589,14 +590,26 @@ func (m *Model) prune(fr *frame) {
 	}
 }
 
-// loopHead tells whether a back edge leads to b.
-func (m *Model) loopHead(b *ssa.BasicBlock) bool {
-	for _, p := range b.Preds {
-		if b.Dominates(p) {
-			return true
-		}
+// widen is what a loop header keeps of a number that was `old` in this turn and
+// is `next` in the following one: the first turn is told from the others, the
+// others are one interval, or a running counter would never end.
+func (m *Model) widen(old, next Abs) Abs {
+	o, n := m.t.abs[old], m.t.abs[next]
+	switch {
+	case old == next:
+		return old
+	case o.kind != aInt:
+		return 0
+	case o.lo <= n.lo && n.hi <= o.hi && o.lo != o.hi:
+		return old
+	case o.lo != o.hi:
+		return 0
+	case n.lo > o.hi:
+		return m.intAbs(n.lo, maxInt)
+	case n.hi < o.lo:
+		return m.intAbs(minInt, n.hi)
 	}
-	return false
+	return 0
 }
 
 // smallLoop: a counter that is compared with a small constant in its loop's
@@ -745,7 +758,7 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 	// What the function itself stored, where callers ask.
 	sum := m.sh.eff.Of(fr.fi.fn)
 	for _, f := range fr.fs {
-		if !m.x.frameFree(f.key) || !m.x.hasLoad(f.key) || m.x.nodes[f.key].kind == kBin {
+		if k := m.x.nodes[f.key].kind; !m.x.frameFree(f.key) || !m.x.hasLoad(f.key) || k == kBin || k == kGet {
 			continue
 		}
 		if m.x.readsPlace(f.key, func(addr Expr) bool { return m.overwrites(sum, addr, nil) }) {
