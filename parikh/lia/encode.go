@@ -46,7 +46,8 @@ func (s *Solver) flat(l Lin) ([]term, num) {
 		if !ok {
 			q = s.newVar("", nil, nil)
 			s.modVars[key] = q
-			s.quotients = append(s.quotients, quotient{q, t, tk, m.m})
+			s.quotients = append(s.quotients, quotient{q, t, tk, m.m, -1})
+			s.remainders = append(s.remainders, quotient{q, t, tk, m.m, -1})
 			up := rem()
 			down := make([]term, len(up))
 			for i, x := range up {
@@ -66,10 +67,11 @@ func (s *Solver) flat(l Lin) ([]term, num) {
 
 // quotient is q = floor((Σ of + k) / m).
 type quotient struct {
-	q  Var
-	of []term
-	k  num
-	m  num
+	q   Var
+	of  []term
+	k   num
+	m   num
+	row int32 // simplex variable of the form of - m·q, -1 until asked for
 }
 
 // boundQuotients gives those quotients bounds whose dividend is bounded, which

@@ -149,10 +149,21 @@ func union(a, b []int32) []int32 {
 }
 
 // latticeConflict tests the equations that hold under the present bounds and
-// returns the reasons of a system of them without integer solution.
+// returns the reasons of a system of them without integer solution. It first
+// leaves variables open that only literals fix: what is refuted so needs fewer
+// literals.
 func (s *Solver) latticeConflict() []reason {
+	if why := s.latticeAt(false); why != nil {
+		return why
+	}
+	return s.latticeAt(true)
+}
+
+// latticeAt is latticeConflict, with or without the values of the variables that
+// literals fix.
+func (s *Solver) latticeAt(assumed bool) []reason {
 	sx := s.sx
-	fixed := func(v int32) bool {
+	isFixed := func(v int32) bool {
 		return sx.lo[v].set && sx.hi[v].set && sx.lo[v].v.eq(sx.hi[v].v)
 	}
 	var eqs []equation
@@ -160,13 +171,13 @@ func (s *Solver) latticeConflict() []reason {
 	for i := range sx.rows {
 		row := sx.rows[i]
 		slack := row[len(row)-1].i
-		if !fixed(slack) {
+		if !isFixed(slack) {
 			continue
 		}
 		e := equation{k: sx.lo[slack].v}
 		why := []reason{sx.lo[slack].why, sx.hi[slack].why}
 		for _, t := range row[:len(row)-1] {
-			if fixed(t.i) {
+			if sx.fixed[t.i] || assumed && isFixed(t.i) {
 				e.k = e.k.add(t.c.mul(sx.lo[t.i].v))
 				why = append(why, sx.lo[t.i].why, sx.hi[t.i].why)
 			} else {

@@ -209,6 +209,20 @@ func (s *Solver) theory(ctx context.Context, assumptions []Formula) (m Model, co
 				return m, s.literals(why), ""
 			}
 		}
+		if !s.opt.NoLattice {
+			if l, ok := s.branchRemainder(); ok {
+				if s.stats.Nodes >= s.nodeEnd {
+					return m, nil, "nodes"
+				}
+				s.stats.Nodes++
+				asserted = append(asserted, l)
+				if why := s.assertLit(l); why != nil {
+					return m, s.literals(why), ""
+				}
+				latticeDone = false
+				continue
+			}
+		}
 		if !s.opt.NoCuts && cutRounds < 4 && len(s.cuts) < s.opt.MaxCuts && len(asserted) == len(given) {
 			cutRounds++
 			if n, why := s.addCuts(asserted); why != nil {
@@ -365,21 +379,71 @@ func (s *Solver) fractional() int32 {
 func (s *Solver) branch(v int32) z.Lit {
 	x := s.sx.val[v]
 	c := x.floor()
+	return s.split(v, c, x.sub(c).cmp(numInt(1).div(numInt(2))) <= 0)
+}
+
+// split returns the literal of v <= c or its negation: as the Boolean assignment
+// has it if it knows the atom, else by preference.
+func (s *Solver) split(v int32, c num, below bool) z.Lit {
 	n := len(s.atoms)
 	l := s.atomLit(v, c)
 	if l == s.truth || l == s.truth.Not() {
-		s.fail("branch: value %v of variable %d is outside its own bounds", x, v)
+		s.fail("split: %v is not between the bounds of variable %d", c, v)
 	}
 	if len(s.atoms) == n && s.known(l) {
-		if s.value(l) {
-			return l
-		}
-		return l.Not()
+		below = s.value(l)
 	}
-	if x.sub(c).cmp(numInt(1).div(numInt(2))) <= 0 {
+	if below {
 		return l
 	}
 	return l.Not()
+}
+
+// remainderRange is the greatest number of values of a remainder that are
+// branched on before its quotient.
+const remainderRange = 64
+
+// quotientRange is the number of values up to which a quotient is branched on
+// like any variable; that ends by itself and learns better.
+const quotientRange = 1024
+
+// branchRemainder splits the range of a remainder whose quotient is fractional.
+// Once a remainder has one value its definition is an equation for the lattice
+// test, whereas branching on an unbounded quotient need not end.
+func (s *Solver) branchRemainder() (z.Lit, bool) {
+	sx := s.sx
+	for i := range s.remainders {
+		d := &s.remainders[i]
+		if s.substOn[d.q] || s.svarOf[d.q] < 0 || sx.val[s.svarOf[d.q]].isInt() {
+			continue
+		}
+		q := s.svarOf[d.q]
+		if sx.lo[q].set && sx.hi[q].set && sx.hi[q].v.sub(sx.lo[q].v).cmp(numInt(quotientRange)) <= 0 {
+			continue
+		}
+		if d.row < 0 {
+			ts, _ := s.resolve(mergeTerms(append(append([]term(nil), d.of...), term{d.q, d.m.neg()})), num{})
+			if len(ts) < 2 {
+				continue // branching on the variable itself does it
+			}
+			f, _, _ := canon(ts)
+			row, ok := s.forms[formKey(f)]
+			if !ok {
+				continue // not defined yet
+			}
+			d.row = row
+		}
+		lo, hi := sx.lo[d.row], sx.hi[d.row]
+		if !lo.set || !hi.set || lo.v.eq(hi.v) || hi.v.sub(lo.v).cmp(numInt(remainderRange)) > 0 {
+			continue
+		}
+		c := sx.val[d.row].floor()
+		if c.cmp(hi.v) < 0 {
+			return s.split(d.row, c, true), true
+		}
+		return s.split(d.row, c.sub(one), false), true
+	}
+	return z.LitNull, false
 }
 
 // enlargeBox makes the next search box.

@@ -622,8 +622,8 @@ func (s *simplex) price(o int32, upwards, bland bool, list []candidate) []candid
 		}
 		return list[x].j < list[y].j
 	})
-	if len(list) > priced {
-		list = list[:priced]
+	if keep := priced + len(s.alpha.idx)/8; len(list) > keep {
+		list = list[:keep]
 	}
 	return list
 }

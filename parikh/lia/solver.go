@@ -104,14 +104,15 @@ type Solver struct {
 	onModel func(Model) ([]Formula, error)
 
 	// Presolve.
-	prepared  bool
-	dead      bool           // the assertions have no model
-	subst     [][]term       // by Var: the form that replaces it
-	substK    []num          // by Var: its constant
-	substOn   []bool         // by Var
-	modVars   map[string]Var // quotients of remainders, by form and modulus
-	quotients []quotient     // those not yet bounded on both sides
-	side      []hardRow      // definitions of remainders not yet handed over
+	prepared   bool
+	dead       bool           // the assertions have no model
+	subst      [][]term       // by Var: the form that replaces it
+	substK     []num          // by Var: its constant
+	substOn    []bool         // by Var
+	modVars    map[string]Var // quotients of remainders, by form and modulus
+	remainders []quotient     // all
+	quotients  []quotient     // those not yet bounded on both sides
+	side       []hardRow      // definitions of remainders not yet handed over
 
 	// Arithmetic.
 	sx         *simplex
