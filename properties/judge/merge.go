@@ -95,6 +95,9 @@ func Merge(results []*RuleResult) *Result {
 			out.Tally.Holds++
 		}
 	}
+	for i := range out.Findings {
+		identify(&out.Findings[i])
+	}
 	unique(out.Findings)
 	follow(out.Findings)
 	return out
