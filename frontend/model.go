@@ -280,7 +280,22 @@ func (m *Model) findAskedFields() {
 			fields(v.X, depth+1)
 		case *ssa.ChangeInterface:
 			fields(v.X, depth+1)
+		case *ssa.Call:
+			// What a pure getter reads.
+			if fn := v.Call.StaticCallee(); fn != nil && fn.Blocks != nil && m.sh.eff.Of(fn).PureGetter() {
+				for _, b := range fn.Blocks {
+					for _, i := range b.Instrs {
+						switch i := i.(type) {
+						case *ssa.FieldAddr:
+							add(structField(i.X.Type(), i.Field))
+						case *ssa.Call:
+							fields(i, depth+1)
+						}
+					}
+				}
+			}
 		case *ssa.Extract:
+			fields(v.Tuple, depth+1)
 			if ta, ok := v.Tuple.(*ssa.TypeAssert); ok {
 				fields(ta.X, depth+1)
 			}
@@ -311,8 +326,10 @@ func (m *Model) findAskedFields() {
 }
 
 // findPanicMatters marks the functions whose panics somebody on the way out
-// may recover: those under a call of a function that defers something that
-// recovers, and those that defer anything themselves.
+// recovers: those that defer something that recovers, handlers of net/http, and
+// what these call by name in their own package. Further away a panic is taken
+// to end the process: an assumption, without which every panic inside fmt's or
+// a server's callees would be a path.
 func (m *Model) findPanicMatters() {
 	m.panicMatters = map[*ssa.Function]bool{}
 	var work []*ssa.Function
@@ -333,13 +350,19 @@ func (m *Model) findPanicMatters() {
 	for len(work) > 0 {
 		fn := work[len(work)-1]
 		work = work[:len(work)-1]
+		pkg := m.sh.prog.PackageOfFunction(fn)
 		for _, b := range fn.Blocks {
 			for _, i := range b.Instrs {
-				if c, ok := i.(ssa.CallInstruction); ok {
-					for _, g := range m.sh.targets[c] {
-						if gi, ok := m.fnOf[g]; ok && gi.cone {
-							mark(g)
-						}
+				c, ok := i.(ssa.CallInstruction)
+				if !ok || c.Common().IsInvoke() {
+					continue
+				}
+				if _, ok := i.(*ssa.Go); ok {
+					continue
+				}
+				for _, g := range m.sh.targets[c] {
+					if gi, ok := m.fnOf[g]; ok && gi.cone && m.sh.prog.PackageOfFunction(g) == pkg {
+						mark(g)
 					}
 				}
 			}

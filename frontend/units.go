@@ -193,6 +193,7 @@ func (m *Model) startOf(k unitKey, kind string) properties.Start {
 	s := properties.Start{
 		Root: m.funcOf(k.fn.fn), Kind: kind,
 		Recovered: isHandler(k.fn.fn),
+		Caught:    m.panicMatters[k.fn.fn],
 		Exported:  obj != nil && obj.Exported() && k.fn.fn.Parent() == nil,
 	}
 	ns := nset{phase: unborn}

@@ -62,6 +62,8 @@ type Start struct {
 	Born     bool
 	// Recovered: whoever runs this root recovers its panics (`at end` includes panics).
 	Recovered bool
+	// Caught: a panic that leaves the root may be recovered by who calls it.
+	Caught bool
 	// Exported: whoever can import the package can call the root.
 	Exported bool
 	// Inner: no path starts here; the start is looked at to learn whether callers

@@ -205,7 +205,7 @@ func (j *judge) closed(s *properties.Start) bool {
 				a.stops = pds.MarkLoss
 				a.accept = func(q pds.StateID) bool {
 					e := j.m.Exit(q)
-					return !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
+					return (e.Kind != properties.ExitPanic || s.Caught) && !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
 				}
 			}
 			most, stop := j.s.greatest(a)
@@ -215,14 +215,16 @@ func (j *judge) closed(s *properties.Start) bool {
 			if s.Born {
 				continue
 			}
-			all, stop := j.span(s.Head, w, func(properties.Exit) bool { return true })
+			all, stop := j.span(s.Head, w, func(e properties.Exit) bool { return e.Kind != properties.ExitPanic || s.Caught })
 			if stop != nil || !all.none && !all.is(0) {
 				return false
 			}
 		}
 	}
 	if s.Born {
-		live, stop := j.span(s.Head, make([]int64, len(j.rule.Counts)), func(e properties.Exit) bool { return !e.Unborn && e.Named })
+		live, stop := j.span(s.Head, make([]int64, len(j.rule.Counts)), func(e properties.Exit) bool {
+			return !e.Unborn && e.Named && (e.Kind != properties.ExitPanic || s.Caught)
+		})
 		return stop == nil && live.none
 	}
 	return true
