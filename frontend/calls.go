@@ -106,6 +106,12 @@ func (m *Model) factsToCallee(fr *frame, l *link, at *ssa.BasicBlock) factset {
 		case kParam:
 			if int(n.n) < len(l.vals) {
 				a = m.absOf(fr, l.vals[n.n], at)
+				if v := m.t.abs[a]; v.kind == aInt && !v.small() {
+					// A recursion that counts would never end.
+					if _, ok := l.vals[n.n].(*ssa.Const); !ok {
+						a = 0
+					}
+				}
 			}
 		default:
 			for _, t := range m.upKeys(k, l, at) {

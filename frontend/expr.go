@@ -41,6 +41,8 @@ const (
 	kMaybe             // x, of which the model cannot tell whether it is the instance
 	kBin               // x op y
 	kUn                // op x
+	kGet               // result n of the pure getter ref called with the arguments x
+	kArgs              // list of arguments: those of x, then y
 )
 
 type exprNode struct {
@@ -88,7 +90,7 @@ func (t *exprs) intern(n exprNode) Expr {
 		if n.kind == kLoad || n.kind == kIndex || n.kind == kHeld {
 			loads++
 		}
-	case kBin, kUn:
+	case kBin, kUn, kGet, kArgs:
 		root = 0
 		depth = t.depth[n.x] + 1
 		if n.y != 0 && t.depth[n.y] >= depth {
@@ -110,6 +112,7 @@ func (t *exprs) res(v ssa.Value, i int) Expr {
 	return t.intern(exprNode{kind: kRes, n: int32(i), ref: v})
 }
 func (t *exprs) constant(s string) Expr { return t.intern(exprNode{kind: kConst, ref: s}) }
+
 // kept stands for a name that another frame or a pending deferred call has: with
 // it the instance is not lost, whatever happens to the names of this frame.
 func (t *exprs) kept() Expr { return t.constant("(kept)") }
@@ -291,7 +294,7 @@ func (t *exprs) readsPlace(e Expr, hit func(addr Expr) bool) bool {
 			e = n.x
 		case kField, kFieldVal, kCap, kHeld, kMaybe:
 			e = n.x
-		case kBin, kUn:
+		case kBin, kUn, kGet, kArgs:
 			if t.readsPlace(n.y, hit) {
 				return true
 			}
@@ -308,11 +311,31 @@ func (t *exprs) hasLoad(e Expr) bool {
 	if e == 0 {
 		return false
 	}
-	n := t.nodes[e]
-	if n.kind == kBin || n.kind == kUn {
+	switch n := t.nodes[e]; n.kind {
+	case kBin, kUn, kArgs:
 		return t.hasLoad(n.x) || t.hasLoad(n.y)
+	case kGet:
+		return true
 	}
 	return t.loads[e] > 0
+}
+
+// callsGetter tells whether e calls a pure getter of which `hit` says that it
+// may answer differently now.
+func (t *exprs) callsGetter(e Expr, hit func(fn *ssa.Function) bool) bool {
+	if e == 0 {
+		return false
+	}
+	n := t.nodes[e]
+	switch n.kind {
+	case kGet:
+		if hit(n.ref.(*ssa.Function)) {
+			return true
+		}
+	case kParam, kFree, kGlobal, kReg, kRes, kResult, kConst:
+		return false
+	}
+	return t.callsGetter(n.x, hit) || t.callsGetter(n.y, hit)
 }
 
 // rootKind is the kind of e's innermost subject.
@@ -464,6 +487,16 @@ func (t *exprs) print(b *strings.Builder, e Expr) {
 	case kUn:
 		b.WriteString(n.op.String())
 		t.print(b, n.x)
+	case kGet:
+		b.WriteString(n.ref.(*ssa.Function).Name() + "(")
+		t.print(b, n.x)
+		b.WriteString(")")
+	case kArgs:
+		if n.x != 0 {
+			t.print(b, n.x)
+			b.WriteString(", ")
+		}
+		t.print(b, n.y)
 	}
 }
 

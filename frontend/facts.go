@@ -6,6 +6,8 @@ import (
 	"go/types"
 
 	"golang.org/x/tools/go/ssa"
+
+	"pathtally/frontend/effects"
 )
 
 // key is the expression under which facts about v are kept when it is used in
@@ -54,6 +56,11 @@ func (m *Model) keyDepth(v ssa.Value, at *ssa.BasicBlock, depth int) Expr {
 	case *ssa.MakeInterface:
 		return x.reg(v)
 	case *ssa.Extract:
+		if c, ok := v.Tuple.(*ssa.Call); ok {
+			if e := m.getterKey(c, v.Index, at, depth); e != 0 {
+				return e
+			}
+		}
 		return x.res(v.Tuple, v.Index)
 	case *ssa.Parameter, *ssa.FreeVar, *ssa.Const, *ssa.Global:
 		return x.name(v)
@@ -68,9 +75,90 @@ func (m *Model) keyDepth(v ssa.Value, at *ssa.BasicBlock, depth int) Expr {
 					return e
 				}
 			}
+			break
+		}
+		if e := m.getterKey(v, 0, at, depth); e != 0 {
+			return e
 		}
 	}
 	return x.reg(v)
+}
+
+// getterKey writes result res of a call of a pure getter by what it is called
+// with: two calls with equal arguments and no store to what the getter reads
+// between them give one value. A getter that hands out a place is written as a
+// load of that place. 0 if the call is no such getter, or may have become stale
+// at the end of block at.
+func (m *Model) getterKey(c *ssa.Call, res int, at *ssa.BasicBlock, depth int) Expr {
+	if c.Block() != at || m.rule == nil {
+		return 0
+	}
+	fn := c.Call.StaticCallee()
+	if fn == nil || fn.Blocks == nil || len(fn.FreeVars) > 0 {
+		return 0
+	}
+	sum := m.sh.eff.Of(fn)
+	if !sum.PureGetter() || !m.quietSince(c, at, sum) {
+		return 0
+	}
+	if arg, path, ok := m.sh.resultPath(c, res); ok && len(path) > 0 {
+		e := m.keyDepth(arg, at, depth+1)
+		for _, f := range path {
+			if f == nil {
+				e = m.x.load(e)
+			} else {
+				e = m.x.field(e, f)
+			}
+		}
+		if e != 0 {
+			return e
+		}
+	}
+	var args Expr
+	for _, a := range c.Call.Args {
+		args = m.x.intern(exprNode{kind: kArgs, x: args, y: m.keyDepth(a, at, depth+1)})
+	}
+	return m.x.intern(exprNode{kind: kGet, n: int32(res), x: args, ref: fn})
+}
+
+// quietSince tells whether nothing between the getter's call and the end of its
+// block can change what it read.
+func (m *Model) quietSince(c *ssa.Call, at *ssa.BasicBlock, sum *effects.Summary) bool {
+	after := false
+	for _, i := range at.Instrs {
+		if i == c {
+			after = true
+			continue
+		}
+		if !after {
+			continue
+		}
+		switch i := i.(type) {
+		case *ssa.Store:
+			if m.mayChange(sum, i.Addr) {
+				return false
+			}
+		case *ssa.MapUpdate, *ssa.RunDefers:
+			return false
+		case *ssa.Defer:
+		case ssa.CallInstruction:
+			if _, ok := i.Common().Value.(*ssa.Builtin); !ok && sum.ReadsOverwritten(m.sh.effectsAt(i)) {
+				return false
+			}
+		}
+	}
+	return after
+}
+
+// mayChange tells whether a store to addr may change what a pure getter reads.
+func (m *Model) mayChange(getter *effects.Summary, addr ssa.Value) bool {
+	switch a := addr.(type) {
+	case *ssa.FieldAddr:
+		return getter.ReadsField(structField(a.X.Type(), a.Field))
+	case *ssa.Alloc:
+		return escapes(a)
+	}
+	return true
 }
 
 // mapOrChan: the length of a map or channel may change though its value does not.
@@ -263,8 +351,8 @@ func (m *Model) absDepth(fr *frame, v ssa.Value, at *ssa.BasicBlock, depth int) 
 				return m.intAbs(-a.lo, -a.lo)
 			}
 		case token.MUL:
-			if g, ok := v.X.(*ssa.Global); ok && m.sh.eff.GlobalNonNil(g) {
-				return m.nonNil()
+			if g, ok := v.X.(*ssa.Global); ok {
+				return m.globalAbs(g)
 			}
 		}
 	case *ssa.BinOp:
@@ -285,6 +373,18 @@ func (m *Model) absDepth(fr *frame, v ssa.Value, at *ssa.BasicBlock, depth int) 
 				}
 			}
 		}
+	}
+	return 0
+}
+
+// globalAbs is what is known of a package variable that only its package's
+// initialisation stores to.
+func (m *Model) globalAbs(g *ssa.Global) Abs {
+	if c := m.sh.eff.GlobalConst(g); c != nil {
+		return m.valueAbs(c)
+	}
+	if m.sh.eff.GlobalNonNil(g) {
+		return m.nonNil()
 	}
 	return 0
 }

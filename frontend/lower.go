@@ -419,6 +419,10 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 			}
 		}
 	}
+	// A number that is counted up in memory is widened as one in a register is.
+	old := fr.fs
+	_, isConst := st.Val.(*ssa.Const)
+	running := m.t.abs[known].kind == aInt && !isConst && f.inLoop[fr.b.Index]
 	if len(fr.fs) > 0 {
 		fr.fs = fr.fs.filter(func(e Expr) bool {
 			return !m.x.readsPlace(e, func(addr Expr) bool { return m.sameShape(addr, a) || s != 0 && m.sameShape(addr, s) }) &&
@@ -427,6 +431,11 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 	}
 	for _, p := range [2]Expr{m.x.load(s), m.x.load(a)} {
 		if p != 0 {
+			if running && old.get(p) != 0 {
+				known = m.widen(old.get(p), known)
+			} else if running {
+				known = 0
+			}
 			m.setFact(fr, p, known)
 		}
 	}
@@ -535,7 +544,7 @@ func (m *Model) edge(fr *frame, from, to *ssa.BasicBlock) {
 		}
 		if f.wants(r) {
 			a := m.absOf(fr, v, from)
-			if m.t.abs[a].kind == aInt && to.Dominates(from) && !m.smallLoop(phi) {
+			if n := m.t.abs[a]; n.kind == aInt && to.Dominates(from) && (!n.small() || !m.smallLoop(phi)) {
 				a = m.widen(fr.fs.get(r), a)
 			}
 			if a != 0 {
@@ -612,13 +621,18 @@ func (m *Model) widen(old, next Abs) Abs {
 	return 0
 }
 
-// smallLoop: a counter that is compared with a small constant in its loop's
-// header is unrolled (three tries are three turns).
+// maxUnroll bounds the numbers that are followed one by one: turns of a loop,
+// depths of a recursion.
+const maxUnroll = 16
+
+// smallLoop: a counter whose comparison with a small constant ends the loop is
+// unrolled (three tries are three turns).
 func (m *Model) smallLoop(phi *ssa.Phi) bool {
-	compared := func(v ssa.Value) bool {
+	head := phi.Block()
+	ends := func(v ssa.Value) bool {
 		for _, r := range *v.Referrers() {
 			b, ok := r.(*ssa.BinOp)
-			if !ok || b.Block() != phi.Block() {
+			if !ok || b.Block() != head && !head.Dominates(b.Block()) {
 				continue
 			}
 			switch b.Op {
@@ -626,9 +640,12 @@ func (m *Model) smallLoop(phi *ssa.Phi) bool {
 			default:
 				continue
 			}
+			if !leavesLoop(b, head) {
+				continue
+			}
 			for _, op := range []ssa.Value{b.X, b.Y} {
 				if c, ok := op.(*ssa.Const); ok && c.Value != nil && isInt(c.Type()) {
-					if n := c.Int64(); n >= -8 && n <= 16 {
+					if n := c.Int64(); n >= -maxUnroll/2 && n <= maxUnroll {
 						return true
 					}
 				}
@@ -636,16 +653,56 @@ func (m *Model) smallLoop(phi *ssa.Phi) bool {
 		}
 		return false
 	}
-	if compared(phi) {
+	if ends(phi) {
 		return true
 	}
 	for _, r := range *phi.Referrers() {
-		// for i := range 3: the header counts first and compares then.
-		if b, ok := r.(*ssa.BinOp); ok && b.Op == token.ADD && b.Block() == phi.Block() && compared(b) {
+		// for i := range 3: counted first and compared then.
+		if b, ok := r.(*ssa.BinOp); ok && (b.Op == token.ADD || b.Op == token.SUB) && ends(b) {
 			return true
 		}
 	}
 	return false
+}
+
+// leavesLoop tells whether a branch on cond has a side that does not come back to head.
+func leavesLoop(cond *ssa.BinOp, head *ssa.BasicBlock) bool {
+	b := cond.Block()
+	iff, ok := b.Instrs[len(b.Instrs)-1].(*ssa.If)
+	if !ok || iff.Cond != cond {
+		return false
+	}
+	for _, s := range b.Succs {
+		if s != head && !reaches(s, head) {
+			return true
+		}
+	}
+	return false
+}
+
+// reaches tells whether a path inside the part that `to` dominates leads to `to`.
+func reaches(from, to *ssa.BasicBlock) bool {
+	seen := map[*ssa.BasicBlock]bool{}
+	work := []*ssa.BasicBlock{from}
+	for len(work) > 0 {
+		c := work[len(work)-1]
+		work = work[:len(work)-1]
+		if c == to {
+			return true
+		}
+		if seen[c] || !to.Dominates(c) {
+			continue
+		}
+		seen[c] = true
+		work = append(work, c.Succs...)
+	}
+	return false
+}
+
+// small tells whether an interval's finite bounds are small enough to follow.
+func (v absVal) small() bool {
+	in := func(n int64) bool { return n == minInt || n == maxInt || n >= -2*maxUnroll && n <= 2*maxUnroll }
+	return in(v.lo) && in(v.hi)
 }
 
 // branch decides an If by what is known, skips it if it bears on nothing, and
