@@ -856,7 +856,7 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 	if !sum.Writes() && !sum.WritesUnknown() {
 		return
 	}
-	hit := func(addr Expr) bool { return m.overwrites(sum, addr, site) }
+	hit := func(addr Expr) bool { return m.overwrites(sum, addr, site.Parent()) }
 	fr.fs = fr.fs.filter(func(e Expr) bool {
 		return !m.x.readsPlace(e, hit) && !m.x.callsGetter(e, func(g *ssa.Function) bool { return m.sh.eff.Of(g).ReadsOverwritten(sum) })
 	})
@@ -1253,6 +1253,13 @@ func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
 			continue
 		}
 		ns := m.toCallee(fr.ns, l)
+		own := false
+		for _, e := range ns.names {
+			own = own || l.fi.subjects[e] && !m.foldable(l.fi, e)
+		}
+		if own {
+			continue // the body is a starting point of its own for it
+		}
 		heads = append(heads, pds.Head{State: runState, Symbol: m.entry(l.fi, ns, m.factsToCallee(fr, l, fr.b), recNo)})
 	}
 	m.pass(fr, g, sum)

@@ -818,7 +818,7 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 		if k := m.x.nodes[f.key].kind; !m.x.frameFree(f.key) || !m.x.hasLoad(f.key) || k == kBin || k == kGet {
 			continue
 		}
-		if m.x.readsPlace(f.key, func(addr Expr) bool { return m.overwrites(sum, addr, nil) }) {
+		if m.x.readsPlace(f.key, func(addr Expr) bool { return m.overwrites(sum, addr, fr.fi.fn) }) {
 			fs = fs.with(f.key, f.val)
 		}
 	}
@@ -862,7 +862,8 @@ func (m *Model) outcome(st *state, fr *frame, results []ssa.Value) {
 }
 
 // overwrites tells whether a call summarised by sum may store to the place.
-func (m *Model) overwrites(sum *effects.Summary, addr Expr, site ssa.CallInstruction) bool {
+// addr is written over the frame of fn.
+func (m *Model) overwrites(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
 	n := m.x.nodes[addr]
 	switch n.kind {
 	case kField:
@@ -874,13 +875,23 @@ func (m *Model) overwrites(sum *effects.Summary, addr Expr, site ssa.CallInstruc
 	case kReg:
 		a, ok := n.ref.(*ssa.Alloc)
 		if !ok {
-			return sum.Writes()
+			return m.cellWritten(sum, addr, fn)
 		}
 		return escapes(a) && sum.MayOverwriteCell(a.Type().Underlying().(*types.Pointer).Elem())
 	case kFree, kParam, kLoad, kCap, kFieldVal, kRes, kResult:
-		return sum.Writes()
+		return m.cellWritten(sum, addr, fn)
 	}
 	return false
+}
+
+// cellWritten: a place that only its type tells from others.
+func (m *Model) cellWritten(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
+	if t := m.typeOf(fn, addr); t != nil {
+		if p, ok := t.Underlying().(*types.Pointer); ok {
+			return sum.MayOverwriteCell(p.Elem())
+		}
+	}
+	return sum.Writes()
 }
 
 // elemWritten: a container of unknown element type is taken as written if any

@@ -1,6 +1,8 @@
 package frontend
 
-import "golang.org/x/tools/go/ssa"
+import (
+	"golang.org/x/tools/go/ssa"
+)
 
 // closureOf is the closure that v is, seen through conversions; nil if its
 // making is not in sight.
@@ -46,4 +48,76 @@ func (m *Model) reaches(e Expr, val ssa.Value) bool {
 		}
 	}
 	return false
+}
+
+// foldable tells whether what a spawned body does to its subject u completes
+// what its spawner does: for every claim it only takes, or only gives back. A
+// body that does both is a matter of its own.
+func (m *Model) foldable(fi *fnInfo, u Expr) bool {
+	touched := m.countsOn(fi, u, map[*fnInfo]bool{})
+	for i := range m.rule.Claims {
+		for _, q := range m.rule.Claims[i].Questions {
+			pos, neg := false, false
+			for k, w := range q.Weights {
+				if k < 64 && touched>>uint(k)&1 != 0 {
+					pos, neg = pos || w > 0, neg || w < 0
+				}
+			}
+			if pos && neg {
+				return false
+			}
+		}
+	}
+	return true
+}
+
+// countsOn is the set of counts (bit k is count k) that running fi may add to
+// for its subject u.
+func (m *Model) countsOn(fi *fnInfo, u Expr, seen map[*fnInfo]bool) uint64 {
+	if seen[fi] {
+		return 0
+	}
+	seen[fi] = true
+	var out uint64
+	for _, b := range fi.fn.Blocks {
+		for _, instr := range b.Instrs {
+			site, ok := instr.(ssa.CallInstruction)
+			if !ok {
+				continue
+			}
+			if _, ok := site.Common().Value.(*ssa.Builtin); ok {
+				continue
+			}
+			for _, mt := range m.matchEvents(m.siteShape(site)) {
+				if mt.ev.Count < 0 || mt.ev.Count >= 64 || mt.subject == 0 {
+					continue
+				}
+				if v := m.subjectValue(&mt, site); v != nil {
+					for _, o := range m.origins(fi, v) {
+						if o.s == u {
+							out |= 1 << uint(mt.ev.Count)
+						}
+					}
+				}
+			}
+			c := caller{fn: fi.fn, site: site}
+			if mc := closureOf(site.Common().Value); mc != nil {
+				c.made = mc
+			}
+			for _, g := range m.sh.targets[site] {
+				gi, ok := m.fnOf[g]
+				if !ok || !gi.cone || m.isEventFunc(g) {
+					continue
+				}
+				for _, cu := range gi.subjList {
+					for _, o := range m.translate(fi, cu, c, g) {
+						if o.s == u && o.b == nil {
+							out |= m.countsOn(gi, cu, seen)
+						}
+					}
+				}
+			}
+		}
+	}
+	return out
 }

@@ -180,7 +180,7 @@ func (m *Model) addUnit(k unitKey) *unit {
 	}
 	kind := m.rootKind(k.fn.fn)
 	u := &unit{unitKey: k, pos: q.order[k.fn], seq: len(q.all), start: m.startOf(k, kind)}
-	u.start.Inner = kind == ""
+	u.start.Inner = kind == "" || kind == "goroutine" && k.u != 0 && m.foldable(k.fn, k.u)
 	q.byKey[k] = u
 	q.all = append(q.all, u)
 	heap.Push(&q.heap, u)
