@@ -37,6 +37,8 @@ const (
 	lblGoexit
 	lblSpawn
 	lblLost
+	lblTurn
+	lblTurnLost
 )
 
 // label is a step as the path view shows it; its text is made when asked for.
@@ -44,6 +46,7 @@ type label struct {
 	kind  lblKind
 	instr ssa.Instruction
 	fn    *ssa.Function // callee
+	side  int8          // lblTurn, lblTurnLost: which successor of instr's block
 }
 
 func (m *Model) label(l label) pds.LabelID {
@@ -242,6 +245,8 @@ func (m *Model) Step(id pds.LabelID) properties.Step {
 		st.Kind, st.Text = properties.StepEnd, m.calleeText(l.instr.(ssa.CallInstruction))+" ends the goroutine"
 	case lblSpawn:
 		st.Kind, st.Text = properties.StepSpawn, "go "+m.callText(l.instr.(ssa.CallInstruction))
+	case lblTurn, lblTurnLost:
+		m.turnStep(&st, l)
 	case lblLost:
 		st.Kind, st.Text = properties.StepEnd, "nothing refers to it any more"
 	}
@@ -439,6 +444,100 @@ func (m *Model) verdict(n ast.Node, truth bool) string {
 		return t + " is true"
 	}
 	return t + " is false"
+}
+
+// turnStep shows the end of a turn of a loop: its continue statement, or the
+// closing brace of its body.
+func (m *Model) turnStep(st *properties.Step, l label) {
+	st.Kind, st.Text = properties.StepEnd, "the turn of the loop ends"
+	if n := m.turnNode(l); n != nil {
+		switch n := n.(type) {
+		case *ast.BranchStmt:
+			st.Place, st.Text = m.at(n.Pos()), m.nodeText(n)
+		case *ast.BlockStmt:
+			st.Place = m.at(n.Rbrace)
+		}
+	}
+	if l.kind == lblTurnLost {
+		st.Text += ", and nothing refers to it any more"
+	}
+}
+
+// turnNode is the continue (or goto) statement that ends the turn, or the body
+// of the loop whose end does; nil if the source does not tell.
+func (m *Model) turnNode(l label) ast.Node {
+	b := l.instr.Block()
+	pos := token.NoPos
+	for k := len(b.Instrs) - 1; k >= 0 && !pos.IsValid(); k-- {
+		pos = bodyPos(b.Instrs[k])
+	}
+	if iff, ok := l.instr.(*ssa.If); ok {
+		if c, ok := iff.Cond.(ssa.Instruction); ok && bodyPos(c).IsValid() {
+			pos = bodyPos(c)
+		}
+	}
+	for c := b; !pos.IsValid() && len(c.Preds) > 0 && c != c.Preds[0]; {
+		c = c.Preds[0]
+		if !c.Dominates(b) {
+			break
+		}
+		for k := len(c.Instrs) - 1; k >= 0 && !pos.IsValid(); k-- {
+			pos = bodyPos(c.Instrs[k])
+		}
+	}
+	if !pos.IsValid() {
+		return nil
+	}
+	jump := func(list []ast.Stmt) ast.Node {
+		if len(list) > 0 {
+			if s, ok := list[len(list)-1].(*ast.BranchStmt); ok && (s.Tok == token.CONTINUE || s.Tok == token.GOTO) {
+				return s
+			}
+		}
+		return nil
+	}
+	_, branches := l.instr.(*ssa.If)
+	for _, n := range m.enclosing(pos) {
+		switch n := n.(type) {
+		case *ast.IfStmt:
+			// The branch goes round without a block of its own.
+			if branches && pos >= n.Cond.Pos() && pos < n.Cond.End() {
+				if l.side == 0 && len(n.Body.List) == 1 {
+					if s := jump(n.Body.List); s != nil {
+						return s
+					}
+				}
+				if e, ok := n.Else.(*ast.BlockStmt); ok && l.side == 1 && len(e.List) == 1 {
+					if s := jump(e.List); s != nil {
+						return s
+					}
+				}
+			}
+		case *ast.BlockStmt:
+			if s := jump(n.List); s != nil && !branches {
+				return s
+			}
+		case *ast.CaseClause:
+			if s := jump(n.Body); s != nil && !branches {
+				return s
+			}
+		case *ast.CommClause:
+			if s := jump(n.Body); s != nil && !branches {
+				return s
+			}
+		case *ast.ForStmt:
+			if pos >= n.Body.Pos() && pos < n.Body.End() {
+				return n.Body
+			}
+		case *ast.RangeStmt:
+			if pos >= n.Body.Pos() && pos < n.Body.End() {
+				return n.Body
+			}
+		case *ast.FuncLit, *ast.FuncDecl:
+			return nil
+		}
+	}
+	return nil
 }
 
 // loopOf finds the range statement of a loop header.

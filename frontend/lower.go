@@ -60,9 +60,17 @@ func (m *Model) Rules(h pds.Head, dst []pds.Rule) []pds.Rule {
 			return m.walk(fr, dst)
 		case symPoint:
 			return m.walk(fr, dst)
+		case symSpawned:
+			return append(dst, pds.Rule{Kind: pds.Push, State: runState, Top: m.entry(fr.fi, fr.ns, fr.fs, recNo),
+				Below: h.Symbol})
 		}
 	case stExit:
 		switch sym.kind {
+		case symSpawned:
+			if !m.handedOn(m.t.nsets[st.ns], fr.ns) {
+				dst = append(dst, pds.Rule{Kind: pds.Pop, State: h.State})
+			}
+			return dst
 		case symCont:
 			return m.resume(st, sym, fr, dst)
 		case symDeferRet:
@@ -83,6 +91,11 @@ func (m *Model) Rules(h pds.Head, dst []pds.Rule) []pds.Rule {
 func (m *Model) walk(fr *frame, dst []pds.Rule) []pds.Rule {
 	if r, gone := m.lost(fr); gone {
 		return append(dst, r)
+	}
+	if side := fr.i - len(fr.b.Instrs); side >= 0 && side < len(fr.b.Succs) {
+		if out, done := m.follow(fr, side, dst); done {
+			return out
+		}
 	}
 	blocks := 0
 	limit := 4*len(fr.fi.fn.Blocks) + 16
@@ -145,8 +158,7 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 	case *ssa.Phi, *ssa.DebugRef:
 		return nil, false
 	case *ssa.Jump:
-		m.edge(fr, fr.b, fr.b.Succs[0])
-		return nil, false
+		return m.follow(fr, 0, dst)
 	case *ssa.If:
 		return m.branch(fr, i, dst)
 	case *ssa.Return:
@@ -714,8 +726,7 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 		if a.lo == 1 {
 			side = 0
 		}
-		m.edge(fr, b, b.Succs[side])
-		return nil, false
+		return m.follow(fr, side, dst)
 	}
 	if j := m.flowOf(fr.fi).jump[b.Index]; j != nil {
 		m.skip(fr, b, j)
@@ -732,7 +743,11 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 		if !m.assume(c, i.Cond, side == 0, b) {
 			continue
 		}
-		m.edge(c, b, b.Succs[side])
+		if fr.ns.phase == born && turns(b, b.Succs[side]) {
+			c.i = len(b.Instrs) + side // the next step shows the turn
+		} else {
+			m.edge(c, b, b.Succs[side])
+		}
 		kind := lblTrue
 		if side == 1 {
 			kind = lblFalse
@@ -740,6 +755,53 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 		dst = append(dst, m.goTo(c, m.label(label{kind: kind, instr: i})))
 	}
 	return dst, true
+}
+
+// turns tells whether the edge ends a turn of a loop.
+func turns(from, to *ssa.BasicBlock) bool {
+	return to.Dominates(from) || to.Comment == "for.post"
+}
+
+// follow takes the edge to successor side of fr.b. While there is an instance,
+// the end of a turn of a loop is a step of its own: that is where a reader sees
+// the loop lose what the turn has made.
+func (m *Model) follow(fr *frame, side int, dst []pds.Rule) ([]pds.Rule, bool) {
+	from, to := fr.b, fr.b.Succs[side]
+	m.edge(fr, from, to)
+	if fr.ns.phase != born || !turns(from, to) {
+		return nil, false
+	}
+	l := label{kind: lblTurn, instr: from.Instrs[len(from.Instrs)-1], side: int8(side)}
+	if m.allDead(fr) {
+		fr.ns.names = nil
+		r, _ := m.lost(fr)
+		if r.Label != 0 {
+			l.kind = lblTurnLost
+			r.Label = m.label(l)
+		}
+		return append(dst, r), true
+	}
+	if from.Comment == "for.post" {
+		return nil, false // shown where the body ended
+	}
+	return append(dst, m.goTo(fr, m.label(l))), true
+}
+
+// allDead tells whether every name of the instance is rooted in a register that
+// is not used from the start of fr.b on.
+func (m *Model) allDead(fr *frame) bool {
+	f := m.flowOf(fr.fi)
+	for _, e := range fr.ns.names {
+		switch n := m.x.nodes[m.x.root[e]]; n.kind {
+		case kReg, kRes:
+			if v, ok := n.ref.(ssa.Value); !ok || f.liveAt(v, fr.b) {
+				return false
+			}
+		default:
+			return false
+		}
+	}
+	return true
 }
 
 // skip goes from a branch that bears on nothing to where its sides meet.
