@@ -403,7 +403,7 @@ func (m *Model) isEventObj(s *shape) bool {
 // hands it on in a way that is worth following.
 func (m *Model) enters(fr *frame, l *link) bool {
 	g := l.fi
-	if g.fn.Blocks == nil || m.isEventFunc(g.fn) {
+	if g.fn.Blocks == nil || m.isEventFunc(g.fn) || m.sh.boundary(g.fn) {
 		return false
 	}
 	switch fr.ns.phase {
@@ -1260,9 +1260,12 @@ func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
 		if own {
 			continue // the body is a starting point of its own for it
 		}
-		heads = append(heads, pds.Head{State: runState, Symbol: m.entry(l.fi, ns, m.factsToCallee(fr, l, fr.b), recNo)})
+		heads = append(heads, pds.Head{State: runState, Symbol: m.symbol(symbol{kind: symSpawned, fn: int32(l.fi.id),
+			ns: m.t.nset(ns), fs: m.t.factset(m.factsToCallee(fr, l, fr.b))})})
 	}
-	m.pass(fr, g, sum)
+	if len(heads) == 0 {
+		m.pass(fr, g, sum)
+	}
 	m.kill(fr, g)
 	if len(heads) == 0 {
 		return nil, false

@@ -89,8 +89,8 @@ func (m *Model) Rules(h pds.Head, dst []pds.Rule) []pds.Rule {
 
 // walk runs the frame until a step that matters.
 func (m *Model) walk(fr *frame, dst []pds.Rule) []pds.Rule {
-	if r, gone := m.lost(fr); gone {
-		return append(dst, r)
+	if fr.ns.gone() {
+		return append(dst, m.lost(fr))
 	}
 	if side := fr.i - len(fr.b.Instrs); side >= 0 && side < len(fr.b.Succs) {
 		if out, done := m.follow(fr, side, dst); done {
@@ -106,8 +106,9 @@ func (m *Model) walk(fr *frame, dst []pds.Rule) []pds.Rule {
 			if done {
 				return out
 			}
-			if r, gone := m.lost(fr); gone {
-				return append(dst, r)
+			if fr.ns.gone() {
+				// The step that loses it is shown; behind it everything stops.
+				return append(dst, m.goTo(fr, m.label(label{kind: lblLost, instr: instr})))
 			}
 			if fr.i < len(fr.b.Instrs) && fr.b.Instrs[fr.i] == instr {
 				fr.i++
@@ -125,17 +126,14 @@ func (m *Model) walk(fr *frame, dst []pds.Rule) []pds.Rule {
 	}
 }
 
-// lost: the instance exists and nothing can name it any more.
-func (m *Model) lost(fr *frame) (pds.Rule, bool) {
-	if !fr.ns.gone() {
-		return pds.Rule{}, false
-	}
+// lost ends a path whose instance exists, though nothing can name it any more.
+func (m *Model) lost(fr *frame) pds.Rule {
 	r := pds.Rule{Kind: pds.Stop}
 	if !fr.ns.outside {
 		r.Mark = pds.MarkLoss
 		r.Label = m.label(label{kind: lblLost, instr: m.instrAt(fr)})
 	}
-	return r, true
+	return r
 }
 
 func (m *Model) instrAt(fr *frame) ssa.Instruction {
@@ -774,14 +772,8 @@ func (m *Model) follow(fr *frame, side int, dst []pds.Rule) ([]pds.Rule, bool) {
 	l := label{kind: lblTurn, instr: from.Instrs[len(from.Instrs)-1], side: int8(side)}
 	if m.allDead(fr) {
 		fr.ns.names = nil
-		r, _ := m.lost(fr)
-		if r.Label != 0 {
-			l.kind = lblTurnLost
-			r.Label = m.label(l)
-		}
-		return append(dst, r), true
-	}
-	if from.Comment == "for.post" {
+		l.kind = lblTurnLost
+	} else if from.Comment == "for.post" {
 		return nil, false // shown where the body ended
 	}
 	return append(dst, m.goTo(fr, m.label(l))), true

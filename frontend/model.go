@@ -62,6 +62,7 @@ const (
 	symLeave            // bottom of a function that defers
 	symDeferred         // a pending deferred call
 	symDeferRet         // waiting for a deferred call to come back
+	symSpawned          // bottom of a goroutine whose counts belong to its spawner
 )
 
 // symbol is a stack symbol: a point of a function with what the frame knows.

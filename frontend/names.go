@@ -121,3 +121,21 @@ func (m *Model) countsOn(fi *fnInfo, u Expr, seen map[*fnInfo]bool) uint64 {
 	}
 	return out
 }
+
+// handedOn tells whether a goroutine that was started with the instance under
+// the names `in` has given it to somebody else when it ends with `out`. Such an
+// end settles nothing and owes nothing: it is no run that the spawner counts.
+func (m *Model) handedOn(out, in nset) bool {
+	if out.outside && !in.outside {
+		return true
+	}
+	for _, e := range out.names {
+		switch m.x.rootKind(e) {
+		case kParam, kFree, kGlobal:
+			if m.x.loads[e] > 0 && !in.has(e) && !in.has(m.x.root[e]) {
+				return true
+			}
+		}
+	}
+	return false
+}

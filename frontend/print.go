@@ -8,7 +8,7 @@ import (
 	"pathtally/properties"
 )
 
-var symNames = [...]string{"none", "entry", "at", "back", "leave", "deferred", "deferback"}
+var symNames = [...]string{"none", "entry", "at", "back", "leave", "deferred", "deferback", "spawned"}
 
 // SymbolString prints a stack symbol: kind, function, block.instruction, names, facts.
 func (m *Model) SymbolString(g pds.SymbolID) string {
