@@ -29,6 +29,7 @@ type Shared struct {
 	dynamic    []ssa.CallInstruction            // calls of function values
 	taken      map[*ssa.Function]bool           // its value is used other than by being called
 	spawned    map[*ssa.Function]bool           // started by a go statement that names it
+	events     map[*types.Func]bool             // functions that are events of the rules judged together
 	syntaxOnce sync.Once
 	syntax     map[string]*ast.File // by absolute file name
 }
@@ -347,4 +348,29 @@ func (sh *Shared) effectsAt(site ssa.CallInstruction) *effects.Summary {
 		return sh.eff.Of(ts[0])
 	}
 	return sh.eff.Of(site.Parent())
+}
+
+// Judge tells which rules are judged together. A function that is an event of
+// one of them by name is a boundary for the others: RWMutex.Lock takes an inner
+// Mutex, but what its callers do is counted by the rule for read-write locks.
+// It is called before Lower, from one goroutine.
+func (sh *Shared) Judge(rules []*properties.ResolvedRule) {
+	sh.events = map[*types.Func]bool{}
+	for _, r := range rules {
+		for i := range r.Events {
+			for _, c := range r.Events[i].Callees {
+				if !c.Interface {
+					sh.events[c.Obj] = true
+				}
+			}
+		}
+	}
+}
+
+func (sh *Shared) boundary(fn *ssa.Function) bool {
+	if fn.Parent() != nil {
+		return false
+	}
+	obj := funcObject(fn)
+	return obj != nil && sh.events[obj]
 }

@@ -13,7 +13,7 @@ import (
 // rootKind says why paths start at fn; "" if they do not.
 func (m *Model) rootKind(fn *ssa.Function) string {
 	pkg := m.sh.prog.PackageOfFunction(fn)
-	if pkg == nil || fn.Synthetic != "" && fn.Name() != "init" && fn.Origin() == nil {
+	if pkg == nil || !pkg.Named || fn.Synthetic != "" && fn.Name() != "init" && fn.Origin() == nil {
 		return ""
 	}
 	name := fn.Name()

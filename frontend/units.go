@@ -240,6 +240,9 @@ func (m *Model) Settle(closed bool) {
 	if u.u == 0 {
 		u.fn.exports = exportsYes
 	}
+	if m.sh.boundary(u.fn.fn) {
+		return // an event of another rule, which counts for it
+	}
 	for _, c := range m.sh.callers[u.fn.fn] {
 		g, ok := m.fnOf[c.fn]
 		if !ok || !g.cone || m.isEventFunc(c.fn) || c.fn.Blocks == nil {
@@ -298,7 +301,7 @@ func (m *Model) finishStarts() {
 	for _, strict := range []bool{true, false} {
 		for i := len(q.all) - 1; i >= 0; i-- {
 			u := q.all[i]
-			if u.closed || answered[u] || strict && m.followed(u) {
+			if u.closed || answered[u] || strict && m.followed(u) || !m.named(u.fn.fn) {
 				continue
 			}
 			u.start.Inner, u.start.Kind = false, "cover"
@@ -337,4 +340,10 @@ func (m *Model) finishStarts() {
 // followed tells whether another function follows the unit.
 func (m *Model) followed(u *unit) bool {
 	return slices.ContainsFunc(u.parents, func(p unitKey) bool { return p.fn != u.fn })
+}
+
+// named tells whether the function's package is one that is to be judged.
+func (m *Model) named(fn *ssa.Function) bool {
+	p := m.sh.prog.PackageOfFunction(fn)
+	return p != nil && p.Named
 }

@@ -16,6 +16,7 @@ import (
 	"time"
 
 	"github.com/spf13/cobra"
+	"github.com/spf13/pflag"
 
 	"pathtally/frontend/load"
 	"pathtally/properties"
@@ -26,13 +27,19 @@ import (
 
 const checkHelp = `pathtally check [packages]      judge every rule on every call path
 
-  what      --tests  --deps  --tags LIST  -C DIR
-  which     --only RULE[/CLAIM[:ID]]  --about FUNCTION  --rules FILE
-  answers   --format text|lines|json  --assumptions
-  limits    --steps N  --jobs N  --undecided stop|note
+  what      --tests  --deps  --build OS/ARCH[,tags=a,b]  --tags LIST  -C DIR
+  which     --only RULE[/CLAIM[:ID]]  --about FUNCTION  --base REV  --rules FILE
+  answers   --format text|lines|json  --output FORMAT=FILE  --assumptions
+  limits    --steps N  --jobs N  --undecided stop|note  --partial
   comfort   --quiet  --verbose  --timings FILE
 
-exit  0 nothing is broken or undecided   1 broken   2 could not run   3 undecided only
+  pathtally check ./...                          the module
+  pathtally check ./... --base origin/main       only what a revision does not have yet
+  pathtally check ./berth --only mutex           one package, one rule
+  pathtally check ./... --about '(*Desk).Book'   every verdict on a function
+
+What pathtally.accepted and //pathtally:accept comments accept does not stop a run.
+exit  0 nothing new is broken or undecided   1 broken   2 could not run   3 undecided only
 `
 
 // checkFlags are the flags of check.
@@ -40,18 +47,35 @@ type checkFlags struct {
 	dir         string
 	tests, deps bool
 	tags        string
+	builds      []string
 	only        []string
 	about       string
+	base        string
 	rules       []string
 	format      string
+	outputs     []string
 	assumptions bool
 	steps       int64
 	jobs        int
 	undecided   string
+	partial     bool
 	quiet       bool
 	verbose     bool
 	timings     string
 	cpuProfile  string
+}
+
+// whatFlags says what to read and judge; check and accept share them.
+func (f *checkFlags) whatFlags(fl *pflag.FlagSet) {
+	fl.StringVarP(&f.dir, "dir", "C", "", "run in this folder")
+	fl.BoolVar(&f.tests, "tests", false, "judge test files too")
+	fl.BoolVar(&f.deps, "deps", false, "bring in the bodies of dependencies")
+	fl.StringVar(&f.tags, "tags", "", "build tags")
+	fl.StringArrayVar(&f.builds, "build", nil, "judge this build, OS/ARCH or OS/ARCH,tags=a,b")
+	fl.StringArrayVar(&f.only, "only", nil, "judge only this rule, claim or finding")
+	fl.StringArrayVar(&f.rules, "rules", nil, "a further rule file")
+	fl.Int64Var(&f.steps, "steps", 0, "budget of one start")
+	fl.IntVar(&f.jobs, "jobs", 0, "rules judged at a time")
 }
 
 func checkCommand(ctx context.Context, s streams) *cobra.Command {
@@ -61,20 +85,16 @@ func checkCommand(ctx context.Context, s streams) *cobra.Command {
 		RunE: func(_ *cobra.Command, args []string) error { return check(ctx, s, &f, args) },
 	}
 	fl := c.Flags()
-	fl.StringVarP(&f.dir, "dir", "C", "", "run in this folder")
-	fl.BoolVar(&f.tests, "tests", false, "judge test files too")
-	fl.BoolVar(&f.deps, "deps", false, "bring in the bodies of dependencies")
-	fl.StringVar(&f.tags, "tags", "", "build tags")
-	fl.StringArrayVar(&f.only, "only", nil, "judge only this rule, claim or finding")
+	f.whatFlags(fl)
 	fl.StringVar(&f.about, "about", "", "list every verdict on a function")
-	fl.StringArrayVar(&f.rules, "rules", nil, "a further rule file")
-	fl.StringVar(&f.format, "format", "text", "text, lines or json")
+	fl.StringVar(&f.base, "base", "", "report only what this git revision does not have")
+	fl.StringVar(&f.format, "format", "text", "what to print: "+syntax.Enumerate(printed, "or"))
+	fl.StringArrayVar(&f.outputs, "output", nil, "write FORMAT=FILE as well")
 	fl.BoolVar(&f.assumptions, "assumptions", false, "list every assumption")
-	fl.Int64Var(&f.steps, "steps", 0, "budget of one start")
-	fl.IntVar(&f.jobs, "jobs", 0, "rules judged at a time")
 	fl.StringVar(&f.undecided, "undecided", "stop", "stop or note")
+	fl.BoolVar(&f.partial, "partial", false, "judge the rest when packages have errors")
 	fl.BoolVar(&f.quiet, "quiet", false, "findings only")
-	fl.BoolVar(&f.verbose, "verbose", false, "whole paths")
+	fl.BoolVar(&f.verbose, "verbose", false, "whole paths, accepted findings too")
 	fl.StringVar(&f.timings, "timings", "", "write times and memory to a file")
 	fl.StringVar(&f.cpuProfile, "cpuprofile", "", "write a CPU profile")
 	if err := fl.MarkHidden("cpuprofile"); err != nil {
@@ -90,22 +110,33 @@ func usage(format string, args ...any) error {
 }
 
 func (f *checkFlags) validate() error {
-	if !slices.Contains([]string{"text", "lines", "json"}, f.format) {
-		return usage("--format %s: there are text, lines and json", f.format)
+	if !slices.Contains(printed, f.format) {
+		return usage("--format %s: there are %s", f.format, syntax.Enumerate(printed, "and"))
 	}
 	if f.undecided != "stop" && f.undecided != "note" {
 		return usage("--undecided %s: there are stop and note", f.undecided)
 	}
+	if f.about != "" && f.format != "text" {
+		return usage("--about prints text: leave --format %s out", f.format)
+	}
+	if _, err := parseOutputs(f.outputs); err != nil {
+		return err
+	}
+	return f.validateWhat()
+}
+
+func (f *checkFlags) validateWhat() error {
 	if f.steps < 0 {
 		return usage("--steps %d: at least 1", f.steps)
 	}
 	if f.jobs < 0 {
 		return usage("--jobs %d: at least 1", f.jobs)
 	}
-	if f.about != "" && f.format != "text" {
-		return usage("--about prints text: leave --format %s out", f.format)
+	if f.tags != "" && len(f.builds) > 0 {
+		return usage("--tags with --build: write the tags behind the build, --build linux/amd64,tags=%s", f.tags)
 	}
-	return nil
+	_, err := parseBuilds(f)
+	return err
 }
 
 // check runs the command.
@@ -120,6 +151,10 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 	if err != nil {
 		return err
 	}
+	outputs, err := parseOutputs(f.outputs)
+	if err != nil {
+		return err
+	}
 	if f.cpuProfile != "" {
 		stop, err := profile(f.cpuProfile)
 		if err != nil {
@@ -131,62 +166,66 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 	bar := newProgress(s.err, s.errTerminal, f.quiet)
 	defer bar.clear()
 
-	prog, book, err := loadAll(ctx, f, patterns, bar, times)
+	whole, err := judgeBuilds(ctx, f, patterns, only, bar, times)
 	if err != nil {
 		return err
 	}
-	if err := only.known(book); err != nil {
-		return err
-	}
-	result, ledger, err := judgeAll(prog, book, only, f, bar, times)
+	run := whole.reportRun(patterns)
+	g, err := openGate(whole, f, only)
 	if err != nil {
 		return err
+	}
+	if f.base != "" {
+		from := time.Now()
+		if err := g.compare(ctx, f, patterns, only, bar, whole, run); err != nil {
+			return err
+		}
+		times.done("base", from)
 	}
 	bar.clear()
+	g.mark(run)
 	if f.timings != "" {
 		if err := times.write(f.timings); err != nil {
 			return &failure{stage: "usage", message: err.Error()}
 		}
 	}
-	run := reportRun(prog, book, result, ledger, patterns)
-	missing := only.keep(result)
+	missing := only.keep(run.Result)
 	opt := report.Options{Colour: s.outTerminal && !s.noColour, Width: s.width, Assumptions: f.assumptions, Quiet: f.quiet, Verbose: f.verbose}
-	switch {
-	case f.about != "":
+	if f.about != "" {
 		err = report.About(s.out, run, func(q judge.Question) bool {
 			return sameFunction(f.about, q.Root) || slices.ContainsFunc(q.Blame, func(fn properties.Func) bool { return sameFunction(f.about, fn) })
 		}, opt)
-	case f.format == "json":
-		err = report.JSON(s.out, run)
-	case f.format == "lines":
-		err = report.Lines(s.out, run, opt)
-	default:
-		err = report.Text(s.out, run, opt)
+	} else {
+		err = writers[f.format](s.out, run, opt)
 	}
 	if err != nil {
 		return &failure{stage: "internal", message: "writing the result: " + err.Error()}
 	}
+	if err := writeOutputs(outputs, run, opt); err != nil {
+		return err
+	}
 	if missing != "" {
 		fmt.Fprintf(s.err, "pathtally: finding %s is not among the findings of this run\n", missing)
 	}
-	return statusOf(result, only, f.undecided == "note")
+	if left := whole.leftOut(); left != "" {
+		fmt.Fprint(s.err, left)
+		return status(exitFailed)
+	}
+	return statusOf(run, f.undecided == "note")
 }
 
-// statusOf gives the exit status: findings of claims stop, advice never does.
-func statusOf(r *judge.Result, only onlyList, note bool) error {
-	if only.byID() {
-		for i := range r.Findings {
-			if !r.Findings[i].Advice {
-				return status(exitBroken)
-			}
+// statusOf gives the exit status: a new finding of a claim stops, and so does a
+// new undecided question; advice and what is accepted never do.
+func statusOf(run *report.Run, note bool) error {
+	for i := range run.Result.Findings {
+		if x := &run.Result.Findings[i]; !x.Advice && !run.IsAccepted(x.Fingerprint) {
+			return status(exitBroken)
 		}
-		return nil
 	}
-	switch {
-	case r.Tally.Broken > r.Tally.Advice:
-		return status(exitBroken)
-	case r.Tally.Undecided > r.Tally.UndecidedAdvice && !note:
-		return status(exitUndecided)
+	for i := range run.Result.Open {
+		if x := &run.Result.Open[i]; !x.Advice && !run.IsAccepted(x.Fingerprint()) && !note {
+			return status(exitUndecided)
+		}
 	}
 	return nil
 }
@@ -203,27 +242,29 @@ func profile(file string) (stop func(), err error) {
 	return func() { pprof.StopCPUProfile(); w.Close() }, nil
 }
 
-// loadAll reads the packages and the rules that apply to them.
-func loadAll(ctx context.Context, f *checkFlags, patterns []string, bar *progress, times *timings) (*load.Program, *properties.RuleBook, error) {
+// loadAll reads the packages and the rules that apply to them. With rules, those
+// are judged and not the ones on disk.
+func loadAll(f *checkFlags, cfg load.Config, rules []*properties.RuleFile, bar *progress, times *timings) (*load.Program, *properties.RuleBook, []*properties.RuleFile, error) {
 	from := time.Now()
-	cfg := load.Config{Dir: f.dir, Patterns: patterns, Deps: f.deps, Tests: f.tests, Tags: f.tags, Workers: f.jobs, Progress: bar.stage, Context: ctx}
 	prog, err := load.Load(cfg)
 	if err != nil {
-		return nil, nil, loadFailure(err)
+		return nil, nil, nil, loadFailure(err)
 	}
-	files, err := ruleFiles(prog, f.rules)
-	if err != nil {
-		return nil, nil, err
+	files := rules
+	if files == nil {
+		if files, err = ruleFiles(prog, f.rules); err != nil {
+			return nil, nil, nil, err
+		}
 	}
 	// A rule is right or wrong whatever packages are asked for: what its file
 	// imports must be in the build. That is nearly always so already.
 	if missing := missingImports(prog, files); len(missing) > 0 {
-		cfg.Patterns = append(slices.Clone(patterns), missing...)
-		if len(patterns) == 0 {
-			cfg.Patterns = append([]string{"."}, missing...)
+		if len(cfg.Patterns) == 0 {
+			cfg.Patterns = []string{"."}
 		}
+		cfg.Patterns = append(slices.Clone(cfg.Patterns), missing...)
 		if prog, err = load.Load(cfg); err != nil {
-			return nil, nil, loadFailure(err)
+			return nil, nil, nil, loadFailure(err)
 		}
 	}
 	times.done("load", from)
@@ -232,9 +273,9 @@ func loadAll(ctx context.Context, f *checkFlags, patterns []string, bar *progres
 	book, err := properties.Resolve(files, prog.Universe(), properties.Options{})
 	times.done("rules", from)
 	if err != nil {
-		return nil, nil, ruleFailure(err)
+		return nil, nil, nil, ruleFailure(err)
 	}
-	return prog, book, nil
+	return prog, book, files, nil
 }
 
 // missingImports lists what the rule files of the module import and the build
@@ -316,13 +357,15 @@ func ruleFailure(err error) error {
 // ledger counts what was looked at.
 type ledger struct {
 	withEvents int
+	functions  []string // the functions that meet an event, sorted
 	idle       []string // rules of the module whose events are met nowhere
 }
 
 // judgeAll makes the model of each rule and judges it, several at a time.
-func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *checkFlags, bar *progress, times *timings) (*judge.Result, ledger, error) {
+func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *checkFlags, bar *progress, times *timings) ([]*judge.RuleResult, ledger, error) {
 	from := time.Now()
 	low := analyze(prog)
+	low.Judge(book.Rules)
 	times.done("analyze", from)
 	from = time.Now()
 	refs := map[string]properties.PackageRef{}
@@ -402,10 +445,14 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 		}
 	}
 	led.withEvents = len(seen)
+	for fn := range seen {
+		led.functions = append(led.functions, fn)
+	}
+	slices.Sort(led.functions)
 	if len(seen) == 0 && !slices.ContainsFunc(met, func(f []properties.Func) bool { return f != nil }) {
 		led.withEvents = -1 // the models do not say
 	}
-	return judge.Merge(results), led, nil
+	return results, led, nil
 }
 
 // internal describes a bug: the stage, the rule, and a stack for who mends it.
@@ -418,60 +465,6 @@ func internal(rule *properties.ResolvedRule, p any) error {
 	m := fmt.Sprintf("a bug of pathtally: judging rule %s: %v", rule.Name, p)
 	return &failure{stage: "internal", message: m, places: []string{rule.Pos},
 		text: fmt.Sprintf("pathtally: this is a bug of pathtally, not of your code\n    while       judging rule %s\n    found       %v\n\n%s", rule.Name, p, debug.Stack())}
-}
-
-// reportRun puts the numbers around the result.
-func reportRun(prog *load.Program, book *properties.RuleBook, r *judge.Result, led ledger, patterns []string) *report.Run {
-	run := &report.Run{Version: version, Module: prog.ModulePath, Builds: []string{prog.GOOS + "/" + prog.GOARCH}, Result: r,
-		Functions: len(prog.Functions()), WithEvents: led.withEvents}
-	sets := map[string]bool{}
-	for _, rule := range book.Rules {
-		if rule.Set != "" && !sets[rule.Set] {
-			sets[rule.Set] = true
-			run.Rulesets = append(run.Rulesets, report.Ruleset{Name: rule.Set, Version: version})
-		}
-	}
-	slices.SortFunc(run.Rulesets, func(a, b report.Ruleset) int { return strings.Compare(a.Name, b.Name) })
-	why := map[string]int{}
-	calls, cut := 0, 0
-	for _, p := range prog.Packages {
-		if !p.Bodies {
-			continue
-		}
-		run.Packages++
-		for _, l := range p.LeftOut {
-			// Tests that nobody asked for are no gap.
-			if l.Why != "tests are not asked for" {
-				why[l.Why]++
-			}
-		}
-		calls += p.CCalls
-		cut += len(p.Cut)
-	}
-	var whys []string
-	for w := range why {
-		whys = append(whys, w)
-	}
-	slices.Sort(whys)
-	left := func(n int, one, many, w string) {
-		if n == 1 {
-			run.NotJudged = append(run.NotJudged, report.Left{What: "1 " + one, Why: w})
-		} else if n > 1 {
-			run.NotJudged = append(run.NotJudged, report.Left{What: fmt.Sprintf("%d %s", n, many), Why: w})
-		}
-	}
-	for _, w := range whys {
-		left(why[w], "file", "files", w)
-	}
-	left(calls, "call into C", "calls into C", "C code is out of sight")
-	left(cut, "function", "functions", "its dealings with C could not be made out")
-	for _, name := range led.idle {
-		run.NotJudged = append(run.NotJudged, report.Left{What: "rule " + name, Why: "no call path meets its events"})
-	}
-	if len(patterns) == 1 && patterns[0] != "./..." && !strings.HasSuffix(patterns[0], "...") {
-		run.Target = patterns[0]
-	}
-	return run
 }
 
 // sameFunction compares a name that a person wrote with a function: Book,

@@ -74,6 +74,7 @@ func rulesTry(ctx context.Context, s streams, f *rulesFlags, names []string) err
 		return err
 	}
 	low := analyze(prog)
+	low.Judge(book.Rules)
 	width := 0
 	for _, r := range rules {
 		width = max(width, utf8.RuneCountInString(r.Name))
