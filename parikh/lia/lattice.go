@@ -1,118 +1,221 @@
 package lia
 
-// equation is Σ terms + k = 0 over simplex variables, with the reasons for it.
+import "sort"
+
+// equation is Σ terms + k = 0 over simplex variables, that holds at present.
 type equation struct {
 	terms []ent // ascending in i
 	k     num
-	src   []int32 // ascending indices of the equations it was made from
 }
+
+// latticeSub replaces a variable by Σ terms + k. Its terms hold no variable that
+// was replaced at an earlier stage, so going through the stages upwards replaces
+// everything in one sweep.
+type latticeSub struct {
+	v     int32
+	terms []ent
+	k     num
+	src   []int32
+}
+
+// longEquation is the number of terms from which an equation takes no part in
+// peeling: a claim over all counts would leave no column a singleton.
+const longEquation = 40
 
 // latticeTest looks for a system of equations without an integer solution,
 // whatever the bounds: it solves them one by one, substituting a variable with
 // coefficient 1 or -1, which Euclid's algorithm provides where there is none (the
-// column operations of a Hermite normal form, done lazily and sparsely). It
-// returns the indices of equations that already have no solution, or nil. work
-// bounds the term operations; when it runs out the answer is nil, which claims
-// nothing.
+// column operations of a Hermite normal form, done lazily and sparsely). First
+// come the equations that have a variable of their own among the rest (column
+// singletons, peeled repeatedly), which need no substitution at all; nearly all
+// equations of a flow are such. It returns the indices of equations that already
+// have no solution, or nil. work bounds the term operations; when it runs out the
+// answer is nil, which claims nothing.
 func latticeTest(eqs []equation, weight func(int32) int, work int) []int32 {
-	type sub struct {
-		terms []ent
-		k     num
-		src   []int32
+	var subs []latticeSub
+	stage := map[int32]int32{} // variable -> index in subs
+	define := func(u latticeSub) {
+		stage[u.v] = int32(len(subs))
+		subs = append(subs, u)
 	}
-	subs := map[int32]sub{}
-	fresh := int32(-2) // new variables count downwards
+	solve := func(ts []ent, k num, at int, src []int32) {
+		x := ts[at]
+		u := latticeSub{v: x.i, k: k.mul(x.c).neg(), src: src}
+		for i, t := range ts {
+			if i != at {
+				u.terms = append(u.terms, ent{t.i, t.c.mul(x.c).neg()})
+			}
+		}
+		define(u)
+	}
+
+	// Peel.
+	where := map[int32][]int32{}
 	for n := range eqs {
-		cur := eqs[n]
-		cur.src = []int32{int32(n)}
+		work -= len(eqs[n].terms)
+		if len(eqs[n].terms) > longEquation {
+			continue
+		}
+		for _, t := range eqs[n].terms {
+			where[t.i] = append(where[t.i], int32(n))
+		}
+	}
+	count := make(map[int32]int, len(where))
+	done := make([]bool, len(eqs))
+	var queue []int32
+	for n := range eqs {
+		if len(eqs[n].terms) > longEquation {
+			continue
+		}
+		for _, t := range eqs[n].terms {
+			if _, ok := count[t.i]; !ok {
+				if count[t.i] = len(where[t.i]); count[t.i] == 1 {
+					queue = append(queue, t.i)
+				}
+			}
+		}
+	}
+	for len(queue) > 0 {
+		v := queue[0]
+		queue = queue[1:]
+		for _, n := range where[v] {
+			if done[n] {
+				continue
+			}
+			at := -1
+			for i, t := range eqs[n].terms {
+				if t.i == v && t.c.isUnit() {
+					at = i
+				}
+			}
+			if at < 0 {
+				break
+			}
+			done[n] = true
+			solve(eqs[n].terms, eqs[n].k, at, []int32{n})
+			for _, t := range eqs[n].terms {
+				if count[t.i]--; count[t.i] == 1 {
+					queue = append(queue, t.i)
+				}
+			}
+		}
+	}
+
+	// The rest, one by one.
+	acc := map[int32]num{}
+	used := make([]bool, len(eqs)) // sources of the equation at hand
+	fresh := int32(-2)             // new variables count downwards
+	for n := range eqs {
+		if done[n] {
+			continue
+		}
+		ts, k := eqs[n].terms, eqs[n].k
+		src := []int32{int32(n)}
+		used[n] = true
 		for {
-			// Substitute until no substituted variable is left.
-			for {
-				hit := false
-				var out []ent
-				for _, t := range cur.terms {
-					if u, ok := subs[t.i]; ok {
-						if !hit {
-							hit = true
-							out = append(out, cur.terms[:0:0]...)
-						}
-						for _, x := range u.terms {
-							out = append(out, ent{x.i, x.c.mul(t.c)})
-						}
-						cur.k = cur.k.add(u.k.mul(t.c))
-						cur.src = union(cur.src, u.src)
-						work -= len(u.terms) + len(u.src)
-					} else {
-						out = append(out, t)
+			// One sweep through the stages.
+			clear(acc)
+			var heap []int32
+			put := func(v int32, c num) {
+				old, ok := acc[v]
+				acc[v] = old.add(c)
+				if st, sub := stage[v]; sub && !ok {
+					heap = heapPush(heap, st)
+				}
+			}
+			for _, t := range ts {
+				put(t.i, t.c)
+			}
+			work -= len(ts) + 1
+			for len(heap) > 0 {
+				var st int32
+				st, heap = heapPop(heap)
+				u := &subs[st]
+				c := acc[u.v]
+				delete(acc, u.v)
+				if c.isZero() {
+					continue
+				}
+				for _, x := range u.terms {
+					put(x.i, x.c.mul(c))
+				}
+				k = k.add(u.k.mul(c))
+				for _, x := range u.src {
+					if !used[x] {
+						used[x] = true
+						src = append(src, x)
 					}
 				}
-				work -= len(cur.terms) + 1
-				if work < 0 {
+				if work -= len(u.terms) + len(u.src); work < 0 {
 					return nil
 				}
-				if !hit {
-					break
-				}
-				cur.terms = mergeEnts(out)
 			}
-			if len(cur.terms) == 0 {
-				if !cur.k.isZero() {
-					return cur.src
+			ts = make([]ent, 0, len(acc))
+			for v, c := range acc {
+				if !c.isZero() {
+					ts = append(ts, ent{v, c})
+				}
+			}
+			sort.Slice(ts, func(i, j int) bool { return ts[i].i < ts[j].i })
+			if len(ts) == 0 {
+				if !k.isZero() {
+					return ascending(src)
 				}
 				break
 			}
+			if work -= 10 * len(ts); work < 0 { // sorting and what follows
+				return nil
+			}
 			var g num
-			for _, t := range cur.terms {
+			for _, t := range ts {
 				g = g.gcd(t.c)
 			}
-			if !cur.k.div(g).isInt() {
-				return cur.src
+			if !k.div(g).isInt() {
+				return ascending(src)
 			}
 			if !g.eq(one) {
 				d := g.inv()
-				ts := make([]ent, len(cur.terms))
-				for i, t := range cur.terms {
-					ts[i] = ent{t.i, t.c.mul(d)}
+				for i := range ts {
+					ts[i].c = ts[i].c.mul(d)
 				}
-				cur.terms, cur.k = ts, cur.k.mul(d)
+				k = k.mul(d)
 			}
-			best := -1
-			for i, t := range cur.terms {
-				if t.c.isUnit() && (best < 0 || weight(t.i) < weight(cur.terms[best].i)) {
+			best, m := -1, 0
+			for i, t := range ts {
+				if t.c.isUnit() && (best < 0 || weight(t.i) < weight(ts[best].i)) {
 					best = i
 				}
-			}
-			if best >= 0 {
-				x := cur.terms[best]
-				u := sub{k: cur.k.mul(x.c).neg(), src: cur.src}
-				for i, t := range cur.terms {
-					if i != best {
-						u.terms = append(u.terms, ent{t.i, t.c.mul(x.c).neg()})
-					}
-				}
-				subs[x.i] = u
-				break
-			}
-			m := 0
-			for i, t := range cur.terms {
-				if t.c.abs().cmp(cur.terms[m].c.abs()) < 0 {
+				if t.c.abs().cmp(ts[m].c.abs()) < 0 {
 					m = i
 				}
 			}
-			x := cur.terms[m]
-			u := sub{terms: []ent{{fresh, one}}}
+			if best >= 0 {
+				solve(ts, k, best, ascending(src))
+				break
+			}
+			// Euclid: a fresh variable t = x + Σ floor(c_i/c)·y_i.
+			x := ts[m]
+			u := latticeSub{v: x.i, terms: []ent{{fresh, one}}} // a definition: no source
 			fresh--
-			for i, t := range cur.terms {
+			for i, t := range ts {
 				if i != m {
 					if q := t.c.div(x.c).floor(); !q.isZero() {
 						u.terms = append(u.terms, ent{t.i, q.neg()})
 					}
 				}
 			}
-			subs[x.i] = u // a definition of the fresh variable: no source
+			define(u)
+		}
+		for _, x := range src {
+			used[x] = false
 		}
 	}
 	return nil
+}
+
+func ascending(l []int32) []int32 {
+	sort.Slice(l, func(i, j int) bool { return l[i] < l[j] })
+	return l
 }
 
 // mergeEnts sorts and adds up.
@@ -127,25 +230,6 @@ func mergeEnts(es []ent) []ent {
 		out[i] = ent{int32(t.v), t.c}
 	}
 	return out
-}
-
-// union of ascending lists.
-func union(a, b []int32) []int32 {
-	if len(b) == 0 {
-		return a
-	}
-	out := make([]int32, 0, len(a)+len(b))
-	for len(a) > 0 && len(b) > 0 {
-		switch {
-		case a[0] < b[0]:
-			out, a = append(out, a[0]), a[1:]
-		case a[0] > b[0]:
-			out, b = append(out, b[0]), b[1:]
-		default:
-			out, a, b = append(out, a[0]), a[1:], b[1:]
-		}
-	}
-	return append(append(out, a...), b...)
 }
 
 // latticeConflict tests the equations that hold under the present bounds and
