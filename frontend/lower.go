@@ -176,7 +176,7 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 		m.store(fr, i)
 		return nil, false
 	case *ssa.MapUpdate:
-		m.insert(fr, m.x.name(i.Map), i.Map, i.Value)
+		m.mapUpdate(fr, i)
 		m.insert(fr, m.x.name(i.Map), i.Map, i.Key)
 		return nil, false
 	case *ssa.Send:
@@ -202,7 +202,12 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 			m.load(fr, v)
 		}
 	case *ssa.Slice:
-		m.hold(fr, m.x.name(v.X), m.x.reg(v))
+		m.slice(fr, v)
+	case *ssa.IndexAddr:
+		if out, done := m.take(fr, v, dst); done {
+			return out, true
+		}
+		m.perhaps(fr, m.x.name(v.X), m.x.name(v.Index), func(e Expr) Expr { return e })
 	case *ssa.Convert, *ssa.MultiConvert, *ssa.SliceToArrayPointer, *ssa.Range:
 		for _, op := range instr.Operands(nil) {
 			m.hold(fr, m.x.name(*op), m.x.reg(v))
@@ -212,11 +217,17 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 			return nil, false
 		}
 	case *ssa.Lookup:
-		m.fetch(fr, v, v.X, m.x.index(m.x.name(v.X), m.x.name(v.Index)))
+		m.fetch(fr, v, v.X, v.Index)
 	case *ssa.Index:
-		m.fetch(fr, v, v.X, m.x.index(m.x.name(v.X), m.x.name(v.Index)))
+		if out, done := m.take(fr, v, dst); done {
+			return out, true
+		}
+		m.fetch(fr, v, v.X, v.Index)
 	case *ssa.Next:
-		m.fetch(fr, v, v.Iter, 0)
+		if out, done := m.take(fr, v, dst); done {
+			return out, true
+		}
+		m.fetch(fr, v, v.Iter, nil)
 	}
 	return m.bornAt(fr, v, dst, fr.i+1)
 }
@@ -226,6 +237,7 @@ func (m *Model) define(fr *frame, v ssa.Value) {
 	if !m.flowOf(fr.fi).inLoop[fr.b.Index] {
 		return
 	}
+	m.reuse(&fr.ns, fr.fi, v)
 	fr.ns.filter(func(e Expr) bool { return !m.x.mentions(e, v) })
 	fr.fs = fr.fs.filter(func(e Expr) bool { return !m.x.mentions(e, v) })
 }
@@ -329,15 +341,23 @@ func (m *Model) hold(fr *frame, src, dst Expr) {
 }
 
 // fetch: an element is taken out of a container.
-func (m *Model) fetch(fr *frame, v ssa.Value, from ssa.Value, place Expr) {
+func (m *Model) fetch(fr *frame, v ssa.Value, from, at ssa.Value) {
 	if fr.ns.phase != born {
 		return
 	}
 	c := m.x.name(from)
-	for _, e := range fr.ns.names {
-		if place != 0 {
-			fr.ns.add(m.x.rebase(e, place, m.x.reg(v)))
+	if at != nil {
+		to := m.x.reg(v)
+		if _, ok := v.Type().(*types.Tuple); ok {
+			to = m.x.res(v, 0)
 		}
+		place := m.x.index(c, m.x.name(at))
+		for _, e := range fr.ns.names {
+			fr.ns.add(m.x.rebase(e, place, to))
+		}
+		m.perhaps(fr, c, m.x.name(at), func(e Expr) Expr { return m.x.rebase(e, place, to) })
+	}
+	for _, e := range fr.ns.names {
 		if n := m.x.nodes[e]; n.kind == kHeld && n.x == c && m.carries(v.Type()) {
 			if t, ok := v.Type().(*types.Tuple); ok {
 				for i := range t.Len() {
@@ -425,8 +445,14 @@ func (m *Model) store(fr *frame, st *ssa.Store) {
 					continue
 				}
 				m.carryOver(&fr.ns, e, st.Val, m.x.load(a))
+				if p := m.path(st.Addr); p != a {
+					m.carryOver(&fr.ns, e, st.Val, m.x.load(p))
+				}
 				m.alsoUnder(fr, st.Addr, e, st.Val)
 			}
+		}
+		if len(fr.ns.names) < len(old) && m.allSpent(fr) {
+			fr.ns.names = nil // overwritten, and the registers it is still in are not used any more
 		}
 	}
 	// A number that is counted up in memory is widened as one in a register is.
@@ -524,6 +550,14 @@ func (m *Model) edge(fr *frame, from, to *ssa.BasicBlock) {
 		}
 	}
 	f := m.flowOf(fr.fi)
+	m.crossLoops(&fr.ns, fr.fi, from, to)
+	for _, instr := range to.Instrs {
+		phi, ok := instr.(*ssa.Phi)
+		if !ok {
+			break
+		}
+		m.reuse(&fr.ns, fr.fi, phi)
+	}
 	ns, fs := fr.ns, fr.fs
 	for _, instr := range to.Instrs {
 		phi, ok := instr.(*ssa.Phi)
@@ -607,6 +641,16 @@ func (m *Model) prune(fr *frame) {
 	if alive > 0 {
 		fr.ns.filter(func(e Expr) bool { return !dead(e) })
 	}
+}
+
+// loopHead tells whether a back edge leads to b.
+func (m *Model) loopHead(b *ssa.BasicBlock) bool {
+	for _, p := range b.Preds {
+		if b.Dominates(p) {
+			return true
+		}
+	}
+	return false
 }
 
 // widen is what a loop header keeps of a number that was `old` in this turn and
@@ -724,6 +768,9 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 		if a.lo == 1 {
 			side = 0
 		}
+		if side == 1 && !m.exhausted(fr, i) {
+			return dst, true
+		}
 		return m.follow(fr, side, dst)
 	}
 	if j := m.flowOf(fr.fi).jump[b.Index]; j != nil {
@@ -738,7 +785,7 @@ func (m *Model) branch(fr *frame, i *ssa.If, dst []pds.Rule) ([]pds.Rule, bool) 
 	}
 	for side := range 2 {
 		c := fr.clone()
-		if !m.assume(c, i.Cond, side == 0, b) {
+		if !m.assume(c, i.Cond, side == 0, b) || side == 1 && !m.exhausted(c, i) {
 			continue
 		}
 		if fr.ns.phase == born && turns(b, b.Succs[side]) {
@@ -796,6 +843,32 @@ func (m *Model) allDead(fr *frame) bool {
 	return true
 }
 
+// allSpent tells whether every name of the instance is rooted in a register that
+// is not used behind the instruction at fr.
+func (m *Model) allSpent(fr *frame) bool {
+	f := m.flowOf(fr.fi)
+	for _, e := range fr.ns.names {
+		n := m.x.nodes[m.x.root[e]]
+		v, ok := n.ref.(ssa.Value)
+		if n.kind != kReg && n.kind != kRes || !ok || f.pinned[v] {
+			return false
+		}
+		for _, s := range fr.b.Succs {
+			if f.liveAt(v, s) {
+				return false
+			}
+		}
+		for _, i := range fr.b.Instrs[min(fr.i+1, len(fr.b.Instrs)):] {
+			for _, op := range i.Operands(nil) {
+				if *op != nil && baseOf(*op) == v {
+					return false
+				}
+			}
+		}
+	}
+	return true
+}
+
 // skip goes from a branch that bears on nothing to where its sides meet.
 func (m *Model) skip(fr *frame, b, j *ssa.BasicBlock) {
 	region := map[*ssa.BasicBlock]bool{}
@@ -841,16 +914,26 @@ func (m *Model) ret(fr *frame, r *ssa.Return) pds.Rule {
 func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Value) state {
 	st := state{kind: stExit, exit: kind}
 	ns := nset{phase: fr.ns.phase, outside: fr.ns.outside}
+	here := func(y Expr) Expr {
+		if m.x.frameFree(y) {
+			return y
+		}
+		return 0
+	}
 	for _, e := range fr.ns.names {
 		switch m.x.rootKind(e) {
 		case kParam, kFree, kGlobal:
 			// Names that read no memory the caller has kept itself.
-			if m.x.loads[e] > 0 && m.x.frameFree(e) {
+			if e := m.outward(e, here); m.x.loads[e] > 0 && m.x.frameFree(e) {
 				ns.add(e)
 			}
 		}
+		var given nset
 		for i, r := range results {
-			m.carryOver(&ns, e, r, m.x.result(i))
+			m.carryOver(&given, e, r, m.x.result(i))
+		}
+		for _, e := range given.names {
+			ns.add(m.outward(e, here))
 		}
 	}
 	if fr.rec == recDone {
@@ -925,7 +1008,7 @@ func (m *Model) overwrites(sum *effects.Summary, addr Expr, fn *ssa.Function) bo
 	case kGlobal:
 		return sum.MayOverwriteGlobal(n.ref.(*ssa.Global))
 	case kIndex:
-		return sum.Writes() && m.elemWritten(sum, n.x)
+		return sum.Writes() && m.elemWritten(sum, n.x, fn)
 	case kReg:
 		a, ok := n.ref.(*ssa.Alloc)
 		if !ok {
@@ -948,22 +1031,11 @@ func (m *Model) cellWritten(sum *effects.Summary, addr Expr, fn *ssa.Function) b
 	return sum.Writes()
 }
 
-// elemWritten: a container of unknown element type is taken as written if any
-// element is; the element type is not kept in names.
-func (m *Model) elemWritten(sum *effects.Summary, c Expr) bool {
-	n := m.x.nodes[c]
-	if n.kind == kReg {
-		if v, ok := n.ref.(ssa.Value); ok {
-			switch t := v.Type().Underlying().(type) {
-			case *types.Slice:
-				return sum.MayOverwriteElem(t.Elem())
-			case *types.Map:
-				return sum.MayOverwriteElem(t.Elem())
-			case *types.Pointer:
-				if a, ok := t.Elem().Underlying().(*types.Array); ok {
-					return sum.MayOverwriteElem(a.Elem())
-				}
-			}
+// elemWritten: a container of unknown type is taken as written if anything is.
+func (m *Model) elemWritten(sum *effects.Summary, c Expr, fn *ssa.Function) bool {
+	if t := m.typeOf(fn, c); t != nil {
+		if elem := elemOf(t); elem != nil {
+			return sum.MayOverwriteElem(elem)
 		}
 	}
 	return sum.Writes()
