@@ -79,19 +79,31 @@ func (m *Model) linkFree(l *link, i int) Expr {
 // toCallee writes what the frame knows of the instance over the callee's frame.
 func (m *Model) toCallee(ns nset, l *link) nset {
 	out := nset{phase: ns.phase, outside: ns.outside}
+	as := func(y Expr) Expr {
+		for i, a := range l.args {
+			if a == y {
+				return m.x.param(i)
+			}
+		}
+		return 0
+	}
 	for _, e := range ns.names {
+		var in nset
 		if m.x.rootKind(e) == kGlobal {
-			out.add(e)
+			in.add(e)
 		}
 		for i := range l.args {
-			m.carryOver(&out, e, l.vals[i], m.x.param(i))
+			m.carryOver(&in, e, l.vals[i], m.x.param(i))
 		}
 		for i := range l.fi.fn.FreeVars {
 			if l.made != nil && i < len(l.made.Bindings) {
-				m.carryOver(&out, e, l.made.Bindings[i], m.x.free(i))
+				m.carryOver(&in, e, l.made.Bindings[i], m.x.free(i))
 			} else if f := m.linkFree(l, i); f != 0 {
-				out.add(m.x.rebase(e, f, m.x.free(i)))
+				in.add(m.x.rebase(e, f, m.x.free(i)))
 			}
+		}
+		for _, e := range in.names {
+			out.add(m.outward(e, as))
 		}
 	}
 	return out
@@ -198,12 +210,19 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 	if ns.phase == born && fr.ns.phase == unborn {
 		fr.ns = nset{phase: born, outside: ns.outside}
 	}
+	as := func(y Expr) Expr {
+		if n := m.x.nodes[y]; n.kind == kParam && int(n.n) < len(l.args) {
+			return l.args[n.n]
+		}
+		return 0
+	}
 	for _, e := range ns.names {
+		e = m.outward(e, as)
 		root := m.x.root[e]
 		n := m.x.nodes[root]
 		switch n.kind {
 		case kGlobal:
-			fr.ns.add(e)
+			m.addBack(&fr.ns, e)
 		case kResult:
 			if call != nil && !l.callback {
 				fr.ns.add(m.x.rebase(e, root, m.resultName(call, int(n.n))))
@@ -215,11 +234,11 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 				}
 				continue
 			}
-			fr.ns.add(m.x.rebase(e, root, l.args[n.n]))
+			m.addBack(&fr.ns, m.x.rebase(e, root, l.args[n.n]))
 			m.alsoReturned(fr, e, root, l.vals[n.n])
 		case kFree:
 			f := m.linkFree(l, int(n.n))
-			fr.ns.add(m.x.rebase(e, root, f))
+			m.addBack(&fr.ns, m.x.rebase(e, root, f))
 			if l.made != nil && int(n.n) < len(l.made.Bindings) {
 				m.alsoReturned(fr, e, root, l.made.Bindings[n.n])
 			}
@@ -248,7 +267,7 @@ func (m *Model) alsoReturned(fr *frame, e, root Expr, v ssa.Value) {
 		switch m.x.rootKind(o.s) {
 		case kParam, kFree, kGlobal:
 			if m.x.frameFree(o.s) {
-				fr.ns.add(m.x.rebase(e, root, o.s))
+				m.addBack(&fr.ns, m.x.rebase(e, root, o.s))
 			} else {
 				m.heldUnder(fr, o)
 			}
@@ -417,11 +436,7 @@ func (m *Model) enters(fr *frame, l *link) bool {
 	}
 	in := m.toCallee(fr.ns, l)
 	for _, e := range in.names {
-		x := e
-		if n := m.x.nodes[e]; n.kind == kMaybe {
-			x = n.x
-		}
-		if g.subjects[x] {
+		if m.concerns(g, e) {
 			return true
 		}
 	}
@@ -509,10 +524,7 @@ func (m *Model) bears(fr *frame, l *link) bool {
 		return g.bearing
 	}
 	for _, e := range m.toCallee(fr.ns, l).names {
-		if n := m.x.nodes[e]; n.kind == kMaybe {
-			e = n.x
-		}
-		if g.subjects[e] || m.boundEvent(g.fn, e) {
+		if m.concerns(g, e) || m.boundEvent(g.fn, e) {
 			return true
 		}
 	}
@@ -834,9 +846,7 @@ func (m *Model) builtin(fr *frame, c *ssa.Call, name string, dst []pds.Rule) ([]
 					fr.ns.add(m.x.held(r))
 				}
 			}
-			if len(c.Call.Args) > 1 {
-				m.hold(fr, m.x.name(c.Call.Args[1]), r)
-			}
+			m.appended(fr, c)
 		}
 	case "ssa:wrapnilchk":
 		a := m.x.name(c.Call.Args[0])
@@ -879,7 +889,7 @@ func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pd
 		m.kill(p, c)
 		dst = append(dst, m.leaveBy(p, properties.ExitPanic, m.label(label{kind: lblCallPanics, instr: c})))
 	}
-	if ex&effects.Goexits != 0 {
+	if ex&effects.Goexits != 0 && ex&effects.Returns == 0 {
 		p := fr.clone()
 		m.kill(p, c)
 		dst = append(dst, m.leaveBy(p, properties.ExitGoexit, m.label(label{kind: lblGoexit, instr: c})))
@@ -1179,7 +1189,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	if ex&effects.Panics != 0 && (m.panicMatters[fi.fn] || ex&effects.Returns == 0) {
 		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitPanic), Label: m.label(label{kind: lblCallPanics, instr: d})})
 	}
-	if ex&effects.Goexits != 0 {
+	if ex&effects.Goexits != 0 && ex&effects.Returns == 0 {
 		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitGoexit), Label: m.label(label{kind: lblGoexit, instr: d})})
 	}
 	if ex&effects.Returns != 0 {

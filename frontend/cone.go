@@ -24,6 +24,7 @@ type fnInfo struct {
 	subjects map[Expr]bool // what the events of its cone are about, over its parameters, captures and globals
 	subjList []Expr        // the same, in order of discovery
 
+	loops  *loopInfo            // lazily; loops over whole containers
 	stores map[Expr][]ssa.Value // name of address -> stored values, of the own body
 
 	flow *flowInfo // lazily; branches, keys of interest, liveness
@@ -142,8 +143,8 @@ func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 		fi.subjList = append(fi.subjList, o.s)
 		return true
 	}
-	if m.eventBirths {
-		return false // instances of this rule are born at its events only
+	if m.eventBirths || m.x.hasGhost(o.s) {
+		return false // instances of this rule are born at its events only; elements where they are selected
 	}
 	switch b := o.b.(type) {
 	case *ssa.Alloc:
@@ -381,7 +382,16 @@ func (m *Model) indexOrigins(fi *fnInfo, v ssa.Value, base, idx ssa.Value, seen 
 	if _, ok := v.(*ssa.Lookup); ok {
 		lookup = true
 	}
-	return m.mapOrigins(m.originsOf(fi, base, seen), func(o origin) origin {
+	bases := m.originsOf(fi, base, seen)
+	var some []origin // an element that exists at entry, whichever it is
+	if !fixed {
+		for _, o := range bases {
+			if e := m.x.index(o.s, m.x.ghost()); o.b == nil && m.x.frameFree(o.s) {
+				some = append(some, origin{e, e, nil})
+			}
+		}
+	}
+	return clip(append(m.mapOrigins(bases, func(o origin) origin {
 		r := origin{m.x.index(o.s, k), m.x.index(o.n, k), o.b}
 		if !fixed || o.b != nil {
 			r.b = v
@@ -390,7 +400,7 @@ func (m *Model) indexOrigins(fi *fnInfo, v ssa.Value, base, idx ssa.Value, seen 
 			r.n = m.x.reg(v)
 		}
 		return r
-	})
+	}), some...))
 }
 
 // loadOrigin appends the origins of a load at v from the address o; v is nil

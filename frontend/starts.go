@@ -146,6 +146,15 @@ func (m *Model) typeOf(fn *ssa.Function, e Expr) types.Type {
 		return types.NewPointer(n.ref.(*types.Var).Type())
 	case kFieldVal:
 		return n.ref.(*types.Var).Type()
+	case kIndex:
+		// A map has values, everything else addresses of elements.
+		if t := m.typeOf(fn, n.x); t != nil {
+			elem := elemOf(t)
+			if _, ok := t.Underlying().(*types.Map); ok || elem == nil {
+				return elem
+			}
+			return types.NewPointer(elem)
+		}
 	case kLoad:
 		if t := m.typeOf(fn, n.x); t != nil {
 			if p, ok := t.Underlying().(*types.Pointer); ok {

@@ -110,7 +110,9 @@ func (m *Model) findStarts() {
 		}
 		if existing {
 			for _, u := range fi.own {
-				m.addUnit(unitKey{fi, u})
+				if !m.x.hasGhost(u) {
+					m.addUnit(unitKey{fi, u})
+				}
 			}
 		}
 		if fi.direct {
@@ -257,7 +259,7 @@ func (m *Model) Settle(closed bool) {
 			switch {
 			case o.s == 0:
 			case o.b == nil:
-				if g.subjects[o.s] {
+				if g.subjects[o.s] && !m.x.hasGhost(o.s) {
 					k := unitKey{g, o.s}
 					u.parents = append(u.parents, k)
 					m.addUnit(k)
@@ -327,7 +329,9 @@ func (m *Model) finishStarts() {
 		}
 		if existing {
 			for _, u := range fi.subjList {
-				add(unitKey{fi, u})
+				if !m.x.hasGhost(u) { // elements are met where they are selected
+					add(unitKey{fi, u})
+				}
 			}
 		}
 		if fi.bearing {
