@@ -32,16 +32,17 @@
 //     and bounds among them become facts, the rest goes to the Boolean layer.
 //   - presolve (first Check only): greatest common divisors, fixed and implied
 //     values, equations used up by substitution, Euclid's algorithm on equations
-//     without a coefficient ±1.
+//     without a coefficient ±1; crash: a triangular basis for the equations.
 //   - encode: clauses in gini (both directions of every definition), atoms with
 //     canonical forms, remainders by a free quotient each.
 //   - solveSAT: a Boolean assignment; justify: of it, only those theory literals
 //     that make the formulas true.
 //   - theory: simplex over the rationals; a conflict is an infeasible row, made
 //     smaller by leaving out literals (at most 30 tries), and becomes a clause.
-//   - for a fractional point: the lattice test on all equations that hold, cuts,
-//     then the box, then branching: x <= k becomes an atom of the Boolean layer, so
-//     that what a branch refutes is learnt like everything else. The union over
+//   - for a fractional point: the lattice test on all equations that hold, a split
+//     of a remainder whose quotient is unbounded, cuts, then the box, then
+//     branching: x <= k becomes an atom of the Boolean layer, so that what a branch
+//     refutes is learnt like everything else. The union over
 //     the leaves of a branching is formed by gini's resolution of these clauses.
 //   - an integral point is checked by verify and shown to the OnModel callback,
 //     whose lemmas join the formulas.
