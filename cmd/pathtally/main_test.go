@@ -68,6 +68,8 @@ func (c canned) Step(pds.LabelID) properties.Step {
 
 type cannedLowerer struct{ kind string }
 
+func (cannedLowerer) Judge([]*properties.ResolvedRule) {}
+
 func (l cannedLowerer) Lower(r *properties.ResolvedRule) properties.Model {
 	b := pds.NewBuilder(r.Counts...)
 	root := properties.Func{Name: "F", Package: "example/m", Place: properties.Place{File: "m.go", Line: 4, Column: 1}}

@@ -31,6 +31,16 @@ func compareFinding(a, b Finding) int {
 		strings.Compare(a.Instance, b.Instance), strings.Compare(a.Home, b.Home), strings.Compare(a.Message, b.Message))
 }
 
+func compareOpen(a, b Open) int {
+	return cmp.Or(comparePlace(a.Place, b.Place), strings.Compare(a.Rule, b.Rule), strings.Compare(a.Claim, b.Claim), strings.Compare(a.Set, b.Set),
+		strings.Compare(a.Root.Package, b.Root.Package), strings.Compare(a.Root.Name, b.Root.Name), strings.Compare(a.Instance, b.Instance), strings.Compare(a.StoppedBy, b.StoppedBy))
+}
+
+func compareQuestion(a, b Question) int {
+	return cmp.Or(strings.Compare(a.Root.Package, b.Root.Package), comparePlace(a.Root.Place, b.Root.Place), strings.Compare(a.Root.Name, b.Root.Name),
+		strings.Compare(a.Rule, b.Rule), strings.Compare(a.Set, b.Set), strings.Compare(a.Claim, b.Claim), strings.Compare(a.Instance, b.Instance))
+}
+
 // mergeFinding puts b, which is lost in the same way as a, into a: the shortest
 // path wins, ties go by the place of the root.
 func mergeFinding(a *Finding, b Finding) {
@@ -65,36 +75,7 @@ func Merge(results []*RuleResult) *Result {
 	for i := range out.Findings {
 		out.Assumptions = append(out.Assumptions, out.Findings[i].Assumptions...)
 	}
-	out.Assumptions = sortedNotes(out.Assumptions)
-	slices.SortStableFunc(out.Findings, compareFinding)
-	slices.SortStableFunc(out.Open, func(a, b Open) int {
-		return cmp.Or(comparePlace(a.Place, b.Place), strings.Compare(a.Rule, b.Rule), strings.Compare(a.Claim, b.Claim), strings.Compare(a.Set, b.Set),
-			strings.Compare(a.Root.Package, b.Root.Package), strings.Compare(a.Root.Name, b.Root.Name), strings.Compare(a.Instance, b.Instance), strings.Compare(a.StoppedBy, b.StoppedBy))
-	})
-	slices.SortStableFunc(out.Questions, func(a, b Question) int {
-		return cmp.Or(strings.Compare(a.Root.Package, b.Root.Package), comparePlace(a.Root.Place, b.Root.Place), strings.Compare(a.Root.Name, b.Root.Name),
-			strings.Compare(a.Rule, b.Rule), strings.Compare(a.Set, b.Set), strings.Compare(a.Claim, b.Claim), strings.Compare(a.Instance, b.Instance))
-	})
-	slices.Sort(out.Cut)
-	out.Cut = slices.Compact(out.Cut)
-	for i := range out.Questions {
-		q := &out.Questions[i]
-		out.Tally.Questions++
-		switch q.Verdict {
-		case Broken:
-			out.Tally.Broken++
-			if q.Advice {
-				out.Tally.Advice++
-			}
-		case Undecided:
-			out.Tally.Undecided++
-			if q.Advice {
-				out.Tally.UndecidedAdvice++
-			}
-		default:
-			out.Tally.Holds++
-		}
-	}
+	out.settle()
 	for i := range out.Findings {
 		identify(&out.Findings[i])
 	}

@@ -72,6 +72,26 @@ type jsonOpen struct {
 	Line      int    `json:"line"`
 	Column    int    `json:"column"`
 	StoppedBy string `json:"stoppedBy"`
+
+	Fingerprint string  `json:"fingerprint"`
+	Accepted    *string `json:"accepted"`
+}
+
+type jsonStale struct {
+	File        string `json:"file"`
+	Line        int    `json:"line"`
+	Column      int    `json:"column"`
+	Claim       string `json:"claim"`
+	Function    string `json:"function"`
+	Fingerprint string `json:"fingerprint"`
+	Text        string `json:"text"`
+}
+
+// jsonBase says what a base revision has already and is not among the findings.
+type jsonBase struct {
+	Revision  string `json:"revision"`
+	Broken    int    `json:"broken"`
+	Undecided int    `json:"undecided"`
 }
 
 type jsonNote struct {
@@ -104,7 +124,8 @@ type jsonRun struct {
 	Undecided   []jsonOpen    `json:"undecided"`
 	Assumptions []jsonNote    `json:"assumptions"`
 	NotJudged   []Left        `json:"notJudged"`
-	Stale       []string      `json:"stale"`
+	Stale       []jsonStale   `json:"stale"`
+	Base        *jsonBase     `json:"base"`
 	Cut         []string      `json:"cut"`
 	Summary     jsonSummary   `json:"summary"`
 }
@@ -131,7 +152,7 @@ func JSON(w io.Writer, run *Run) error {
 		Undecided:   []jsonOpen{},
 		Assumptions: []jsonNote{},
 		NotJudged:   orEmpty(run.NotJudged),
-		Stale:       []string{},
+		Stale:       []jsonStale{},
 		Cut:         orEmpty(r.Cut),
 		Summary: jsonSummary{run.Packages, run.Functions, max(run.WithEvents, 0), r.Tally.Roots, r.Tally.Instances,
 			r.Tally.Questions, r.Tally.Holds, r.Tally.Broken, r.Tally.Undecided, r.Tally.Advice},
@@ -144,25 +165,29 @@ func JSON(w io.Writer, run *Run) error {
 	for i := range r.Findings {
 		out.Findings = append(out.Findings, jsonOf(&r.Findings[i], run, index))
 	}
+	for _, st := range run.Stale {
+		out.Stale = append(out.Stale, jsonStale{st.File, st.Line, st.Column, st.Claim, st.Function, st.Fingerprint, st.Text})
+	}
+	if run.Base != "" {
+		out.Base = &jsonBase{run.Base, run.KnownFindings, run.KnownOpen}
+	}
 	for i := range r.Open {
 		o := &r.Open[i]
 		out.Undecided = append(out.Undecided, jsonOpen{o.Rule, o.Claim, severity(o.Advice), o.Root.Package, o.Root.Name, o.Instance,
-			o.Place.File, o.Place.Line, o.Place.Column, o.StoppedBy})
+			o.Place.File, o.Place.Line, o.Place.Column, o.StoppedBy, o.Fingerprint(), run.reason(o.Fingerprint())})
 	}
 	return encode(w, out)
 }
 
 func jsonOf(f *judge.Finding, run *Run, index map[properties.Note]int) jsonFinding {
+	head := run.Headline(f)
 	j := jsonFinding{
 		Rule: f.Rule, Claim: f.Claim, Severity: severity(f.Advice), Verdict: "broken", Message: f.Message,
 		Package: f.Root.Package, Function: f.Root.Name, Instance: f.Instance, Checkpoint: checkpoint(f.Point), Formula: f.Formula, Reason: f.Reason,
-		File: f.Cause.Place.File, Line: f.Cause.Place.Line, Column: f.Cause.Place.Column,
+		File: head.File, Line: head.Line, Column: head.Column, Accepted: run.reason(f.Fingerprint),
 		Cause: spot(f.Cause), Blame: f.Blame.Name,
 		Counts: named(f.CountNames, f.Counts), Fingerprint: f.Fingerprint, Starts: f.Starts, Follows: f.Follows,
-		Builds: []int{}, Assumptions: []int{}, Path: []jsonStep{},
-	}
-	for i := range run.Builds {
-		j.Builds = append(j.Builds, i)
+		Builds: orEmpty(run.buildsOf(f)), Assumptions: []int{}, Path: []jsonStep{},
 	}
 	if f.Opened.Place.Line > 0 {
 		s := spot(f.Opened)
@@ -177,6 +202,14 @@ func jsonOf(f *judge.Finding, run *Run, index map[properties.Note]int) jsonFindi
 		j.Path = append(j.Path, jsonStep{s.Place.File, s.Place.Line, s.Place.Column, s.Function, string(s.Kind), s.Text, named(f.CountNames, s.Counts)})
 	}
 	return j
+}
+
+// reason is why something is accepted, nil if it is not.
+func (r *Run) reason(fingerprint string) *string {
+	if a, ok := r.Accepted[fingerprint]; ok {
+		return &a.Reason
+	}
+	return nil
 }
 
 // checkpoint is the JSON word of a point: "end" of "at end", "always" of "always".

@@ -12,8 +12,9 @@ import (
 // finding's headline, then the steps of its path that have a place.
 func Lines(w io.Writer, run *Run, opt Options) error {
 	b := bufio.NewWriter(w)
-	for i := range run.Result.Findings {
-		f := &run.Result.Findings[i]
+	findings := run.shown(opt.Verbose)
+	for i := range findings {
+		f := &findings[i]
 		word := "broken"
 		if f.Advice {
 			word = "advice"
@@ -22,7 +23,7 @@ func Lines(w io.Writer, run *Run, opt Options) error {
 		for k, n := range f.CountNames {
 			counts = append(counts, n+" "+strconv.FormatInt(f.Counts[k], 10))
 		}
-		fmt.Fprintf(b, "%s: %s %s/%s: %s [%s]\n", place(f.Cause.Place), word, f.Rule, f.Claim, f.Message, strings.Join(counts, ", "))
+		fmt.Fprintf(b, "%s: %s %s/%s: %s [%s]\n", place(run.Headline(f)), word, f.Rule, f.Claim, f.Message, strings.Join(counts, ", "))
 		n := len(f.Path)
 		digits := len(strconv.Itoa(n))
 		for k := range f.Path {
@@ -41,13 +42,16 @@ func Lines(w io.Writer, run *Run, opt Options) error {
 			fmt.Fprintf(b, "%s:   %*d/%d %s: %s [%s]\n", place(s.Place), digits, k+1, n, s.Function, text, strings.Join(c, ", "))
 		}
 	}
-	for _, g := range grouped(run.Result.Open) {
+	for _, g := range grouped(run.openShown(opt.Verbose)) {
 		o := &g[0]
 		inst := ""
 		if o.Instance != "" {
 			inst = " for " + o.Instance
 		}
 		fmt.Fprintf(b, "%s: undecided %s: %s%s: %s\n", place(o.Place), claims(g), o.Root.Name, inst, o.StoppedBy)
+	}
+	for _, st := range run.Stale {
+		fmt.Fprintf(b, "%s:%d: advice %s: %s\n", st.File, st.Line, st.Claim, st.Text)
 	}
 	if !opt.Quiet {
 		total, parts := Sentence(run.Result)

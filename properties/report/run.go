@@ -5,6 +5,7 @@ import (
 	"strings"
 
 	"pathtally/properties"
+	"pathtally/properties/accept"
 	"pathtally/properties/judge"
 )
 
@@ -39,6 +40,91 @@ type Run struct {
 	NotJudged  []Left
 
 	Result *judge.Result
+
+	// What is accepted, by fingerprint of a finding or an undecided question.
+	Accepted map[string]accept.Acceptance
+	Stale    []accept.Stale
+	// Base is the revision that the run is compared with, "" if with none; what
+	// it has already is no longer in Result, and counted here.
+	Base          string
+	KnownFindings int
+	KnownOpen     int
+	// Headlines are the changed lines that findings are headed with, by
+	// fingerprint; a finding without one is headed with its cause.
+	Headlines map[string]Headline
+	// Gated: something is accepted, stale or compared, and the summary says so.
+	Gated bool
+
+	// FindingBuilds gives, by fingerprint, the builds (indexes into Builds) that a
+	// finding occurs in; one that is not there occurs in all.
+	FindingBuilds map[string][]int
+	// RuleTexts describes claims, by RULE/CLAIM.
+	RuleTexts map[string]RuleText
+	// Source reads a file as findings name it; nil if there is no source.
+	Source func(file string) ([]byte, error)
+}
+
+// Headline is a place that stands in for a finding's cause in its first line.
+type Headline struct {
+	Place properties.Place
+	Text  string // what happens there
+}
+
+// RuleText is what a person reads about a claim.
+type RuleText struct {
+	Doc     string // of the rule, first sentence first
+	Formula string
+	Reason  string
+	Advice  bool
+}
+
+// IsAccepted says that a fingerprint is accepted.
+func (r *Run) IsAccepted(fingerprint string) bool {
+	_, ok := r.Accepted[fingerprint]
+	return ok
+}
+
+// Headline is the place that a finding is headed with.
+func (r *Run) Headline(f *judge.Finding) properties.Place {
+	if h, ok := r.Headlines[f.Fingerprint]; ok {
+		return h.Place
+	}
+	return f.Cause.Place
+}
+
+// shown are the findings that a person is to see: those that nobody has
+// accepted, and the others too with all.
+func (r *Run) shown(all bool) []judge.Finding {
+	var out []judge.Finding
+	for _, f := range r.Result.Findings {
+		if all || !r.IsAccepted(f.Fingerprint) {
+			out = append(out, f)
+		}
+	}
+	return out
+}
+
+// openShown are the undecided questions that a person is to see.
+func (r *Run) openShown(all bool) []judge.Open {
+	var out []judge.Open
+	for _, o := range r.Result.Open {
+		if all || !r.IsAccepted(o.Fingerprint()) {
+			out = append(out, o)
+		}
+	}
+	return out
+}
+
+// buildsOf names the builds of a finding if it is not in all of them.
+func (r *Run) buildsOf(f *judge.Finding) []int {
+	if in, ok := r.FindingBuilds[f.Fingerprint]; ok {
+		return in
+	}
+	all := make([]int, len(r.Builds))
+	for i := range all {
+		all[i] = i
+	}
+	return all
 }
 
 // Options says how to print.

@@ -10,6 +10,7 @@ import (
 	"strings"
 	"unicode/utf8"
 
+	"pathtally/properties/accept"
 	"pathtally/properties/judge"
 )
 
@@ -19,26 +20,29 @@ const foldAfter = 14
 // Text prints findings, undecided questions and the closing summary.
 func Text(w io.Writer, run *Run, opt Options) error {
 	b := bufio.NewWriter(w)
-	t := &texter{w: b, opt: opt, run: run}
-	for i := 0; i < len(run.Result.Findings); {
-		f := &run.Result.Findings[i]
-		if !opt.Verbose && slices.ContainsFunc(run.Result.Findings, func(g judge.Finding) bool { return g.Fingerprint == f.Follows }) {
+	t := &texter{w: b, opt: opt, run: run, findings: run.shown(opt.Verbose)}
+	for i := 0; i < len(t.findings); {
+		f := &t.findings[i]
+		if !opt.Verbose && slices.ContainsFunc(t.findings, func(g judge.Finding) bool { return g.Fingerprint == f.Follows }) {
 			i++ // one line below the finding that it follows from
 			continue
 		}
 		n := i + 1
 		if !opt.Verbose {
-			for n < len(run.Result.Findings) && sameMistake(f, &run.Result.Findings[n]) {
+			for n < len(t.findings) && sameMistake(f, &t.findings[n]) {
 				n++
 			}
 		}
-		t.finding(f, run.Result.Findings[i+1:n])
+		t.finding(f, t.findings[i+1:n])
 		t.line("")
 		i = n
 	}
-	for _, g := range grouped(run.Result.Open) {
+	for _, g := range grouped(run.openShown(opt.Verbose)) {
 		t.open(g)
 		t.line("")
+	}
+	if !opt.Quiet {
+		t.stale()
 	}
 	if opt.Assumptions && len(run.Result.Assumptions) > 0 {
 		t.line("assumptions")
@@ -57,6 +61,8 @@ type texter struct {
 	w   *bufio.Writer
 	opt Options
 	run *Run
+
+	findings []judge.Finding // those to print
 }
 
 func (t *texter) line(format string, args ...any) {
@@ -122,7 +128,8 @@ func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 	if f.Advice {
 		advice = "advice: "
 	}
-	t.line("%s: %s%s", t.paint(bold, place(f.Cause.Place)), advice, t.paint(bold, f.Message))
+	headline := t.run.Headline(f)
+	t.line("%s: %s%s", t.paint(bold, place(headline)), advice, t.paint(bold, f.Message))
 
 	lostAt := "lost at"
 	if !strings.HasPrefix(f.Point, "at ") {
@@ -130,11 +137,16 @@ func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 	}
 	type fact struct{ label, at, text string }
 	var facts []fact
-	if f.Opened.Place.Line > 0 && (f.Opened.Place != f.Cause.Place || f.CauseText == "") {
+	if h, ok := t.run.Headlines[f.Fingerprint]; ok && h.Place != f.Opened.Place {
+		facts = append(facts, fact{"changed", place(h.Place), h.Text})
+	}
+	if f.Opened.Place.Line > 0 && (f.Opened.Place != f.Cause.Place || f.CauseText == "" || headline != f.Cause.Place) {
 		facts = append(facts, fact{f.OpenedVerb, place(f.Opened.Place), f.Opened.Text})
 	}
 	if f.CauseText != "" {
 		facts = append(facts, fact{lostAt, place(f.Cause.Place), f.CauseText})
+	} else if headline != f.Cause.Place && f.Opened.Place != f.Cause.Place {
+		facts = append(facts, fact{lostAt, place(f.Cause.Place), f.Cause.Text})
 	}
 	widest := 0
 	for _, c := range facts {
@@ -153,12 +165,22 @@ func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 	if f.Reason != "" {
 		label("reason", f.Reason)
 	}
+	if a, ok := t.run.Accepted[f.Fingerprint]; ok {
+		label("accepted", a.Reason+"  ("+a.Where+")")
+	}
+	if in := t.run.buildsOf(f); len(in) < len(t.run.Builds) {
+		var names []string
+		for _, i := range in {
+			names = append(names, t.run.Builds[i])
+		}
+		label("only in", strings.Join(names, ", "))
+	}
 	for i := range also {
 		o := &also[i]
 		label("breaks also", fmt.Sprintf("%s/%s:%s, %s: %s", o.Rule, o.Claim, o.ID(), o.Point, o.Formula))
 	}
-	for i := range t.run.Result.Findings {
-		if o := &t.run.Result.Findings[i]; o.Follows == f.Fingerprint {
+	for i := range t.findings {
+		if o := &t.findings[i]; o.Follows == f.Fingerprint {
 			label("leads to", fmt.Sprintf("%s    %s  (%s/%s:%s)", place(o.Cause.Place), o.Message, o.Rule, o.Claim, o.ID()))
 		}
 	}
@@ -444,6 +466,9 @@ func (t *texter) summary() {
 	}
 	col := max(len(total)+3, 16)
 	t.line("%s%s", pad(total, col), parts)
+	if run.Gated {
+		t.gate(col)
+	}
 	functions := plural(run.Functions, "function", "functions")
 	if run.WithEvents >= 0 {
 		functions = thousands(int64(run.WithEvents)) + " of " + functions + " meet an event"
@@ -484,6 +509,87 @@ func (t *texter) summary() {
 				t.line("%sand %s (--verbose)", pad("", col), plural(n, "other start", "other starts"))
 			}
 			break
+		}
+	}
+}
+
+// counted prints "1 broken, 2 undecided", "none" for nothing.
+func counted(broken, advice, open int) string {
+	var p []string
+	if broken > 0 {
+		p = append(p, thousands(int64(broken))+" broken")
+	}
+	if advice > 0 {
+		p = append(p, thousands(int64(advice))+" advice")
+	}
+	if open > 0 {
+		p = append(p, thousands(int64(open))+" undecided")
+	}
+	if p == nil {
+		return "none"
+	}
+	return strings.Join(p, ", ")
+}
+
+// Standing counts findings and undecided questions as the gate sees them.
+type Standing struct {
+	NewBroken, NewAdvice, NewOpen int
+	AcceptedBroken, AcceptedOpen  int
+}
+
+// Standing counts what is new and what is accepted.
+func (r *Run) Standing() Standing {
+	var s Standing
+	for i := range r.Result.Findings {
+		f := &r.Result.Findings[i]
+		switch {
+		case r.IsAccepted(f.Fingerprint):
+			s.AcceptedBroken++
+		case f.Advice:
+			s.NewAdvice++
+		default:
+			s.NewBroken++
+		}
+	}
+	for i := range r.Result.Open {
+		if r.IsAccepted(r.Result.Open[i].Fingerprint()) {
+			s.AcceptedOpen++
+		} else {
+			s.NewOpen++
+		}
+	}
+	return s
+}
+
+// gate prints what is new, accepted and stale.
+func (t *texter) gate(col int) {
+	s := t.run.Standing()
+	line := pad("new", col) + counted(s.NewBroken, s.NewAdvice, s.NewOpen)
+	if n := s.AcceptedBroken + s.AcceptedOpen; n > 0 {
+		line += "     accepted  " + counted(s.AcceptedBroken, 0, s.AcceptedOpen)
+	}
+	if n := len(t.run.Stale); n > 0 {
+		line += fmt.Sprintf("     stale  %d", n)
+	}
+	t.line("%s", line)
+	if t.run.Base != "" {
+		t.line("%s%s", pad("known", col), counted(t.run.KnownFindings, 0, t.run.KnownOpen)+" in "+t.run.Base+" already")
+	}
+}
+
+// stale prints what accepts nothing any more: advice.
+func (t *texter) stale() {
+	for i, s := range t.run.Stale {
+		at := fmt.Sprintf("%s:%d", s.File, s.Line)
+		if s.Column > 0 {
+			at += ":" + strconv.Itoa(s.Column)
+		}
+		t.line("%s: advice: %s", t.paint(bold, at), s.Text)
+		if i == len(t.run.Stale)-1 {
+			if slices.ContainsFunc(t.run.Stale, func(s accept.Stale) bool { return s.Fingerprint != "" }) {
+				t.line("    to drop     pathtally accept --prune")
+			}
+			t.line("")
 		}
 	}
 }
