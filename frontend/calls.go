@@ -871,10 +871,15 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 		return !m.x.readsPlace(e, hit) && !m.x.callsGetter(e, func(g *ssa.Function) bool { return m.sh.eff.Of(g).ReadsOverwritten(sum) })
 	})
 	if fr.ns.phase == born && !sum.WritesUnknown() {
-		fr.ns.filter(func(e Expr) bool {
-			k := m.x.nodes[e].kind
-			return k == kHeld || k == kMaybe || !m.x.readsPlace(e, hit)
-		})
+		// The place may hold something else now, or what it held: a doubt.
+		old := fr.ns.names
+		fr.ns.names = nil
+		for _, e := range old {
+			if k := m.x.nodes[e].kind; k != kHeld && k != kMaybe && m.x.readsPlace(e, hit) {
+				e = m.x.maybe(e)
+			}
+			fr.ns.add(e)
+		}
 	}
 }
 

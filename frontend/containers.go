@@ -685,6 +685,9 @@ func (m *Model) perhaps(fr *frame, c, y Expr, to func(e Expr) Expr) {
 			if m.x.nodes[y].kind == kConst && m.x.nodes[z].kind == kConst && z != m.x.ghost() {
 				return z // two constants, or one that a loop has come past
 			}
+			if m.apart(y, z) {
+				return z
+			}
 			if s := m.constText(z); len(s) > 4 && (s[:4] == "met " || s[:5] == "later") {
 				return z
 			}
@@ -697,6 +700,26 @@ func (m *Model) perhaps(fr *frame, c, y Expr, to func(e Expr) Expr) {
 			}
 		}
 	}
+}
+
+// apart tells whether two indices differ by a constant that is not zero.
+func (m *Model) apart(y, z Expr) bool {
+	split := func(e Expr) (Expr, int64) {
+		if op, ok := m.x.nodes[e].ref.(*ssa.BinOp); ok && m.x.nodes[e].kind == kReg {
+			if c, ok := op.Y.(*ssa.Const); ok && c.Value != nil && c.Value.Kind() == constant.Int {
+				switch op.Op {
+				case token.ADD:
+					return m.x.name(op.X), c.Int64()
+				case token.SUB:
+					return m.x.name(op.X), -c.Int64()
+				}
+			}
+		}
+		return e, 0
+	}
+	a, i := split(y)
+	b, k := split(z)
+	return a == b && i != k
 }
 
 // concerns tells whether running g does something to what it knows by the
@@ -733,4 +756,44 @@ func elemOf(t types.Type) types.Type {
 		}
 	}
 	return nil
+}
+
+// sendsIt tells whether a case of the select sends the instance.
+func (m *Model) sendsIt(fr *frame, sel *ssa.Select) bool {
+	if fr.ns.phase != born {
+		return false
+	}
+	for _, s := range sel.States {
+		if s.Dir != types.SendOnly {
+			continue
+		}
+		for _, e := range fr.ns.names {
+			if m.reaches(e, s.Send) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
+// choose executes a select that may send the instance: one way for each case,
+// since only the one that is chosen sends.
+func (m *Model) choose(fr *frame, sel *ssa.Select, dst []pds.Rule) []pds.Rule {
+	m.define(fr, sel)
+	first := 0
+	if !sel.Blocking {
+		first = -1
+	}
+	for k := first; k < len(sel.States); k++ {
+		c := fr.clone()
+		if k >= 0 {
+			if s := sel.States[k]; s.Dir == types.SendOnly {
+				m.insert(c, 0, nil, s.Send)
+			}
+		}
+		m.setFact(c, m.x.res(sel, 0), m.intAbs(int64(k), int64(k)))
+		c.i++
+		dst = append(dst, m.goTo(c, 0))
+	}
+	return dst
 }

@@ -183,10 +183,8 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 		m.insert(fr, 0, nil, i.X)
 		return nil, false
 	case *ssa.Select:
-		for _, s := range i.States {
-			if s.Dir == types.SendOnly {
-				m.insert(fr, 0, nil, s.Send)
-			}
+		if m.sendsIt(fr, i) {
+			return m.choose(fr, i, dst), true
 		}
 	}
 	v, ok := instr.(ssa.Value)
@@ -379,9 +377,8 @@ func (m *Model) insert(fr *frame, c Expr, cv ssa.Value, val ssa.Value) {
 	if fr.ns.phase != born {
 		return
 	}
-	v := m.x.name(val)
 	for _, e := range fr.ns.names {
-		if !m.x.within(v, e) {
+		if !m.reaches(e, val) {
 			continue
 		}
 		if c == 0 {
