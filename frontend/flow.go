@@ -488,23 +488,71 @@ func (m *Model) findKeys(fi *fnInfo) {
 	}
 	for _, k := range order {
 		live := newBits(n)
+		defs, early := m.definedIn(k, n)
 		var work []int
-		for b := range use[k] {
+		reach := func(b int) {
+			// In front of the block that defines a register of the key, nothing
+			// that was known of it is of use; a φ stands at the very start.
+			if defs != nil && defs.has(b) && !early.has(b) || live.has(b) {
+				return
+			}
 			live.set(b)
-			work = append(work, b)
+			if defs == nil || !defs.has(b) {
+				work = append(work, b)
+			}
+		}
+		for b := range use[k] {
+			reach(b)
 		}
 		for len(work) > 0 {
 			b := work[len(work)-1]
 			work = work[:len(work)-1]
 			for _, p := range fn.Blocks[b].Preds {
-				if !live.has(p.Index) {
-					live.set(p.Index)
-					work = append(work, p.Index)
-				}
+				reach(p.Index)
 			}
 		}
 		f.keys[k] = live
 	}
+}
+
+// definedIn gives the blocks that define the registers of a key, of n blocks,
+// and those of them in which all of its registers are φs; nil if it has none.
+func (m *Model) definedIn(k Expr, n int) (defs, early bits) {
+	var visit func(e Expr)
+	late := newBits(n)
+	visit = func(e Expr) {
+		if e == 0 {
+			return
+		}
+		switch nd := m.x.nodes[e]; nd.kind {
+		case kReg, kRes:
+			i, ok := nd.ref.(ssa.Instruction)
+			if !ok {
+				return
+			}
+			if defs == nil {
+				defs = newBits(n)
+			}
+			b := i.Block().Index
+			defs.set(b)
+			if _, phi := i.(*ssa.Phi); !phi {
+				late.set(b)
+			}
+		case kParam, kFree, kGlobal, kResult, kConst:
+		default:
+			visit(nd.x)
+			visit(nd.y)
+		}
+	}
+	visit(k)
+	if defs == nil {
+		return nil, nil
+	}
+	early = newBits(n)
+	for i := range defs {
+		early[i] = defs[i] &^ late[i]
+	}
+	return defs, early
 }
 
 // useful: a register whose value may be known; constants are known anyway.
