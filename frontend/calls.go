@@ -241,6 +241,15 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 			m.addBack(&fr.ns, m.x.rebase(e, root, f))
 			if l.made != nil && int(n.n) < len(l.made.Bindings) {
 				m.alsoReturned(fr, e, root, l.made.Bindings[n.n])
+			} else if !l.callback && m.x.loads[e] > 0 {
+				// The closure may have been loaded: its place has it too.
+				for _, o := range m.origins(fr.fi, l.site.Common().Value) {
+					if m.x.frameFree(o.s) {
+						m.addBack(&fr.ns, m.x.rebase(e, root, m.x.capt(o.s, int(n.n))))
+					} else {
+						m.heldUnder(fr, o)
+					}
+				}
 			}
 		}
 	}
@@ -298,7 +307,7 @@ func (m *Model) call(fr *frame, c *ssa.Call, dst []pds.Rule) ([]pds.Rule, bool) 
 	var enter []*link
 	for _, g := range targets {
 		l := m.linkOf(c, g, closure)
-		if m.enters(fr, l) {
+		if m.enters(fr, l) || m.rewrites(fr, l) {
 			enter = append(enter, l)
 		}
 	}
@@ -415,6 +424,11 @@ func (m *Model) isEventObj(s *shape) bool {
 		}
 	}
 	return false
+}
+
+// rewrites tells whether a callee stores what the caller wants to know afterwards.
+func (m *Model) rewrites(fr *frame, l *link) bool {
+	return l.fi.flow != nil && len(l.fi.flow.after) > 0 && m.tracked(fr.fi.fn, l.fi.fn)
 }
 
 // enters tells whether a call has to be followed into its callee's body: an
@@ -1166,7 +1180,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	for _, g := range targets {
 		l := m.linkOf(d, g, closure)
 		in := at.clone()
-		if !m.enters(in, l) && !(st.exit == properties.ExitPanic && m.callsRecover(g)) {
+		if !m.enters(in, l) && !m.rewrites(in, l) && !(st.exit == properties.ExitPanic && m.callsRecover(g)) {
 			continue
 		}
 		entered++

@@ -3,6 +3,7 @@ package frontend
 import (
 	"go/token"
 	"go/types"
+	"slices"
 
 	"golang.org/x/tools/go/ssa"
 
@@ -22,6 +23,9 @@ type flowInfo struct {
 	pinned map[ssa.Value]bool
 	live   map[ssa.Value]bits
 	defers bool // the function defers something
+
+	after []Expr // memory facts that callers want to know behind a call
+	asked bool   // after grew since the function was prepared
 }
 
 // bits is a set of block indices.
@@ -43,37 +47,148 @@ func (m *Model) flowOf(fi *fnInfo) *flowInfo {
 	return fi.flow
 }
 
+// maxRounds bounds how often the functions of the cone are prepared again
+// because callers and callees ask more of each other.
+const maxRounds = 6
+
 // buildFlows prepares all functions of the cone, again until the facts that
 // callers and callees ask of each other no longer grow (recursion) or a fixed
 // number of rounds is over: missing facts only add paths.
 func (m *Model) buildFlows() {
-	for round := 0; round < 3; round++ {
+	for round := 0; round < maxRounds; round++ {
 		grew := false
 		for i := len(m.fns) - 1; i >= 0; i-- {
 			fi := m.fns[i]
-			if !fi.cone || m.isEventFunc(fi.fn) {
+			if m.isEventFunc(fi.fn) || !fi.cone && (fi.flow == nil || len(fi.flow.after) == 0) {
 				continue
 			}
-			before := 0
-			if fi.flow != nil {
+			before, known := 0, fi.flow != nil
+			if known {
 				before = len(fi.flow.entry)
 			}
-			if round == 0 && fi.flow != nil {
-				continue // built as a callee
-			}
-			if round > 0 && !m.asksMore(fi) {
-				continue
-			}
-			m.flowOf(fi)
-			if round > 0 {
+			// In the first round one that is there was built as a callee.
+			if !known {
+				m.flowOf(fi)
+			} else if fi.flow.asked || round > 0 && m.asksMore(fi) {
 				m.buildFlow(fi)
 			}
-			grew = grew || len(fi.flow.entry) > before
+			fi.flow.asked = false
+			grew = m.askCallees(fi) || grew || len(fi.flow.entry) > before
 		}
 		if !grew {
 			break
 		}
 	}
+}
+
+// askCallees tells the callees of fi which memory facts fi wants to know after
+// a call that may change them; it answers whether any callee had not been told.
+func (m *Model) askCallees(fi *fnInfo) bool {
+	var keys []Expr
+	for k := range fi.flow.keys {
+		if m.x.nodes[k].kind == kLoad {
+			keys = append(keys, k)
+		}
+	}
+	if len(keys) == 0 {
+		return false
+	}
+	sortExprs(keys)
+	grew := false
+	for _, b := range fi.fn.Blocks {
+		for _, i := range b.Instrs {
+			site, ok := i.(ssa.CallInstruction)
+			if !ok {
+				continue
+			}
+			if _, ok := site.(*ssa.Go); ok {
+				continue
+			}
+			for _, g := range m.sh.targets[site] {
+				if !m.tracked(fi.fn, g) {
+					continue
+				}
+				sum := m.sh.eff.Of(g)
+				if !sum.Writes() {
+					continue
+				}
+				for _, k := range keys {
+					for _, d := range m.toCalleeKey(k, site, g, b) {
+						if m.x.readsPlace(d, func(addr Expr) bool { return m.overwrites(sum, addr, g) }) && m.askAfter(m.info(g), d) {
+							grew = true
+						}
+					}
+				}
+			}
+		}
+	}
+	return grew
+}
+
+// tracked tells whether what g stores is followed for its caller: a function of
+// the cone, a closure of the caller's own, or a plain setter.
+func (m *Model) tracked(caller, g *ssa.Function) bool {
+	if g.Blocks == nil || m.isEventFunc(g) {
+		return false
+	}
+	if gi, ok := m.fnOf[g]; ok && gi.cone {
+		return true
+	}
+	if g.Parent() == caller {
+		return true
+	}
+	if len(g.Blocks) != 1 {
+		return false
+	}
+	for _, i := range g.Blocks[0].Instrs {
+		if _, ok := i.(ssa.CallInstruction); ok {
+			return false
+		}
+	}
+	return true
+}
+
+func (m *Model) askAfter(gi *fnInfo, k Expr) bool {
+	f := m.flowOf(gi)
+	if slices.Contains(f.after, k) || len(f.after) >= maxAfter {
+		return false
+	}
+	f.after = append(f.after, k)
+	f.asked = true
+	return true
+}
+
+// maxAfter bounds what callers may ask of a function's stores.
+const maxAfter = 24
+
+// toCalleeKey writes a key of the caller over the callee's frame, in every way
+// that an argument, a captured variable or a global allows.
+func (m *Model) toCalleeKey(k Expr, site ssa.CallInstruction, g *ssa.Function, b *ssa.BasicBlock) []Expr {
+	var out []Expr
+	add := func(e Expr) {
+		if e != 0 && e != k && m.x.frameFree(e) && !slices.Contains(out, e) {
+			out = append(out, e)
+		}
+	}
+	if m.x.rootKind(k) == kGlobal {
+		out = append(out, k)
+	}
+	c := caller{fn: site.Parent(), site: site}
+	if mc, ok := site.Common().Value.(*ssa.MakeClosure); ok {
+		c.made = mc
+	}
+	for i := range g.Params {
+		if v := c.arg(g, i); v != nil {
+			add(m.x.rebase(k, m.x.name(v), m.x.param(i)))
+			add(m.x.rebase(k, m.key(v, b), m.x.param(i)))
+		}
+	}
+	for i := range g.FreeVars {
+		if v := c.free(g, i); v != nil {
+			add(m.x.rebase(k, m.x.name(v), m.x.free(i)))
+		}
+	}
+	return out
 }
 
 // asksMore: a callee has keys, so that the function may have to be looked at again.
@@ -455,6 +570,13 @@ func (m *Model) findKeys(fi *fnInfo) {
 				m.callKeys(instr, b, func(k Expr) { everywhere(k) })
 			case ssa.CallInstruction:
 				m.callKeys(instr, b, func(k Expr) { ask(k, i) })
+			}
+		}
+	}
+	for _, k := range f.after {
+		for i, b := range fn.Blocks {
+			if len(b.Succs) == 0 {
+				ask(k, i)
 			}
 		}
 	}
