@@ -99,7 +99,7 @@ func (m *Model) toCallee(ns nset, l *link) nset {
 			if l.made != nil && i < len(l.made.Bindings) {
 				m.carryOver(&in, e, l.made.Bindings[i], m.x.free(i))
 			} else if f := m.linkFree(l, i); f != 0 {
-				in.add(m.x.rebase(e, f, m.x.free(i)))
+				in.add(m.x.rename(e, f, m.x.free(i)))
 			}
 		}
 		for _, e := range in.names {
@@ -225,7 +225,7 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 			m.addBack(&fr.ns, e)
 		case kResult:
 			if call != nil && !l.callback {
-				fr.ns.add(m.x.rebase(e, root, m.resultName(call, int(n.n))))
+				fr.ns.add(m.x.rename(e, root, m.resultName(call, int(n.n))))
 			}
 		case kParam:
 			if int(n.n) >= len(l.args) {
@@ -234,18 +234,18 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 				}
 				continue
 			}
-			m.addBack(&fr.ns, m.x.rebase(e, root, l.args[n.n]))
+			m.addBack(&fr.ns, m.x.rename(e, root, l.args[n.n]))
 			m.alsoReturned(fr, e, root, l.vals[n.n])
 		case kFree:
 			f := m.linkFree(l, int(n.n))
-			m.addBack(&fr.ns, m.x.rebase(e, root, f))
+			m.addBack(&fr.ns, m.x.rename(e, root, f))
 			if l.made != nil && int(n.n) < len(l.made.Bindings) {
 				m.alsoReturned(fr, e, root, l.made.Bindings[n.n])
 			} else if !l.callback && m.x.loads[e] > 0 {
 				// The closure may have been loaded: its place has it too.
 				for _, o := range m.origins(fr.fi, l.site.Common().Value) {
 					if m.x.frameFree(o.s) {
-						m.addBack(&fr.ns, m.x.rebase(e, root, m.x.capt(o.s, int(n.n))))
+						m.addBack(&fr.ns, m.x.rename(e, root, m.x.capt(o.s, int(n.n))))
 					} else {
 						m.heldUnder(fr, o)
 					}
@@ -276,7 +276,7 @@ func (m *Model) alsoReturned(fr *frame, e, root Expr, v ssa.Value) {
 		switch m.x.rootKind(o.s) {
 		case kParam, kFree, kGlobal:
 			if m.x.frameFree(o.s) {
-				m.addBack(&fr.ns, m.x.rebase(e, root, o.s))
+				m.addBack(&fr.ns, m.x.rename(e, root, o.s))
 			} else {
 				m.heldUnder(fr, o)
 			}
@@ -865,7 +865,7 @@ func (m *Model) builtin(fr *frame, c *ssa.Call, name string, dst []pds.Rule) ([]
 	case "ssa:wrapnilchk":
 		a := m.x.name(c.Call.Args[0])
 		for _, e := range fr.ns.names {
-			fr.ns.add(m.x.rebase(e, a, m.x.reg(c)))
+			fr.ns.add(m.x.rename(e, a, m.x.reg(c)))
 		}
 	}
 	return m.bornAt(fr, c, dst, fr.i+1)
@@ -998,7 +998,7 @@ func (m *Model) pass(fr *frame, site ssa.CallInstruction, sum *effects.Summary) 
 				continue
 			}
 			for _, e := range old {
-				fr.ns.add(m.x.rebase(e, p, m.resultName(call, j)))
+				fr.ns.add(m.x.rename(e, p, m.resultName(call, j)))
 			}
 		}
 	}

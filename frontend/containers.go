@@ -405,7 +405,7 @@ func (m *Model) taken(fr *frame, l *wholeLoop, instr ssa.Instruction) {
 	for _, e := range fr.ns.names {
 		m.x.reindex(e, func(c, y Expr) Expr {
 			if y == l.idx {
-				fr.ns.add(m.x.rebase(e, m.x.index(c, y), to))
+				fr.ns.add(m.x.rename(e, m.x.index(c, y), to))
 			}
 			return y
 		})
@@ -561,7 +561,7 @@ func (m *Model) elements(fr *frame, src, dst Expr, at func(y Expr) Expr) {
 				fr.ns.add(m.x.held(dst))
 				continue
 			}
-			fr.ns.add(m.x.rebase(e, inner, m.x.index(dst, y)))
+			fr.ns.add(m.x.rename(e, inner, m.x.index(dst, y)))
 		}
 	}
 }

@@ -299,7 +299,7 @@ func (m *Model) load(fr *frame, v *ssa.UnOp) {
 		old := fr.ns.names
 		for _, e := range old {
 			if p != 0 {
-				fr.ns.add(m.x.rebase(e, p, r))
+				fr.ns.add(m.x.rename(e, p, r))
 			}
 			if n := m.x.nodes[e]; n.kind == kHeld && m.x.within(n.x, a) && m.carries(v.Type()) {
 				// The place lies in something that holds the instance.
@@ -309,7 +309,7 @@ func (m *Model) load(fr *frame, v *ssa.UnOp) {
 		}
 		if s := m.x.load(m.placeKey(v.X, fr.b, 0)); s != 0 && s != p {
 			for _, e := range old {
-				fr.ns.add(m.x.rebase(e, s, r))
+				fr.ns.add(m.x.rename(e, s, r))
 			}
 		}
 	}
@@ -351,9 +351,9 @@ func (m *Model) fetch(fr *frame, v ssa.Value, from, at ssa.Value) {
 		}
 		place := m.x.index(c, m.x.name(at))
 		for _, e := range fr.ns.names {
-			fr.ns.add(m.x.rebase(e, place, to))
+			fr.ns.add(m.x.rename(e, place, to))
 		}
-		m.perhaps(fr, c, m.x.name(at), func(e Expr) Expr { return m.x.rebase(e, place, to) })
+		m.perhaps(fr, c, m.x.name(at), func(e Expr) Expr { return m.x.rename(e, place, to) })
 	}
 	for _, e := range fr.ns.names {
 		if n := m.x.nodes[e]; n.kind == kHeld && n.x == c && m.carries(v.Type()) {
@@ -996,7 +996,7 @@ func (m *Model) outcome(st *state, fr *frame, results []ssa.Value) {
 }
 
 // overwrites tells whether a call summarised by sum may store to the place.
-// addr is written over the frame of fn.
+// addr is written over the frame of fn; nil if that is not known.
 func (m *Model) overwrites(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
 	n := m.x.nodes[addr]
 	switch n.kind {
@@ -1020,6 +1020,9 @@ func (m *Model) overwrites(sum *effects.Summary, addr Expr, fn *ssa.Function) bo
 
 // cellWritten: a place that only its type tells from others.
 func (m *Model) cellWritten(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
+	if fn == nil {
+		return sum.Writes()
+	}
 	if t := m.typeOf(fn, addr); t != nil {
 		if p, ok := t.Underlying().(*types.Pointer); ok {
 			return sum.MayOverwriteCell(p.Elem())
@@ -1030,6 +1033,9 @@ func (m *Model) cellWritten(sum *effects.Summary, addr Expr, fn *ssa.Function) b
 
 // elemWritten: a container of unknown type is taken as written if anything is.
 func (m *Model) elemWritten(sum *effects.Summary, c Expr, fn *ssa.Function) bool {
+	if fn == nil {
+		return sum.Writes()
+	}
 	if t := m.typeOf(fn, c); t != nil {
 		if elem := elemOf(t); elem != nil {
 			return sum.MayOverwriteElem(elem)

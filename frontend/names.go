@@ -27,7 +27,7 @@ func closureOf(v ssa.Value) *ssa.MakeClosure {
 // copied to `to`. A closure has no names of its own: what it captures is named
 // by the captured values, and so is what the closures among them capture.
 func (m *Model) carryOver(ns *nset, e Expr, val ssa.Value, to Expr) {
-	ns.add(m.x.rebase(e, m.x.name(val), to))
+	ns.add(m.x.rename(e, m.x.name(val), to))
 	if mc := closureOf(val); mc != nil {
 		for k, b := range mc.Bindings {
 			m.carryOver(ns, e, b, m.x.capt(to, k))
@@ -138,4 +138,34 @@ func (m *Model) handedOn(out, in nset) bool {
 		}
 	}
 	return false
+}
+
+// rename is rebase for names of the instance: one that would be too deep to
+// track becomes what holds it, instead of nothing.
+func (t *exprs) rename(e, from, to Expr) Expr {
+	if e == from {
+		return to
+	}
+	if e == 0 || to == 0 {
+		return 0
+	}
+	n := t.nodes[e]
+	if n.kind == kLoad {
+		if fn := t.nodes[from]; fn.kind == kLoad {
+			if r := t.rebaseStruct(n.x, fn.x, to); r != 0 {
+				return r
+			}
+		}
+	}
+	if !t.isSel(e) {
+		return 0
+	}
+	x := t.rename(n.x, from, to)
+	if x == 0 {
+		return 0
+	}
+	if r := t.sel(n.kind, x, n.n, n.y, n.ref); r != 0 {
+		return r
+	}
+	return t.held(x)
 }
