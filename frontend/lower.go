@@ -918,10 +918,10 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 		return 0
 	}
 	for _, e := range fr.ns.names {
-		switch m.x.rootKind(e) {
+		switch u := m.unspilled(fr.fi, e); m.x.rootKind(u) {
 		case kParam, kFree, kGlobal:
 			// Names that read no memory the caller has kept itself.
-			if e := m.outward(e, here); m.x.loads[e] > 0 && m.x.frameFree(e) {
+			if e := m.outward(u, here); m.x.loads[e] > 0 && m.x.frameFree(e) {
 				ns.add(e)
 			}
 		}

@@ -169,3 +169,24 @@ func (t *exprs) rename(e, from, to Expr) Expr {
 	}
 	return t.held(x)
 }
+
+// unspilled writes a name that starts in the variable of a captured parameter
+// by the parameter itself: callers know nothing of the variable.
+func (m *Model) unspilled(fi *fnInfo, e Expr) Expr {
+	r := m.x.root[e]
+	a, ok := m.x.nodes[r].ref.(*ssa.Alloc)
+	if !ok || m.x.nodes[r].kind != kReg {
+		return e
+	}
+	vals := m.storesOf(fi)[r]
+	if len(vals) != 1 {
+		return e
+	}
+	if _, ok := vals[0].(*ssa.Parameter); !ok || !a.Heap {
+		return e
+	}
+	if u := m.x.rename(e, m.x.load(r), m.x.name(vals[0])); u != 0 {
+		return u
+	}
+	return e
+}
