@@ -491,7 +491,17 @@ func (m *Model) translate(g *fnInfo, u Expr, c caller, callee *ssa.Function) []o
 	case kFree:
 		v := c.free(callee, int(n.n))
 		if v == nil {
-			return nil
+			// A function value is called: what it captured is in the value.
+			if c.site == nil || c.site.Common().IsInvoke() || c.site.Common().StaticCallee() != nil {
+				return nil
+			}
+			var out []origin
+			for _, o := range m.origins(g, c.site.Common().Value) {
+				if o.b == nil { // else it was captured where it has a name of its own
+					out = append(out, origin{m.x.capt(o.s, int(n.n)), m.x.capt(o.n, int(n.n)), nil})
+				}
+			}
+			return clip(out)
 		}
 		return m.origins(g, v)
 	case kField, kFieldVal, kLoad, kIndex, kCap:

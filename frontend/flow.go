@@ -166,7 +166,7 @@ const maxAfter = 24
 func (m *Model) toCalleeKey(k Expr, site ssa.CallInstruction, g *ssa.Function, b *ssa.BasicBlock) []Expr {
 	var out []Expr
 	add := func(e Expr) {
-		if e != 0 && e != k && m.x.frameFree(e) && !slices.Contains(out, e) {
+		if e != 0 && m.x.frameFree(e) && !slices.Contains(out, e) {
 			out = append(out, e)
 		}
 	}
@@ -379,6 +379,9 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 	for _, g := range m.sh.targets[c] {
 		if gi, ok := m.fnOf[g]; ok && gi.cone && !m.isEventFunc(g) {
 			return false
+		}
+		if isBound(g) && m.isEventFunc(g) {
+			return false // an event, if the function value is bound to the instance
 		}
 	}
 	for _, a := range c.Call.Args {

@@ -2,6 +2,7 @@ package frontend
 
 import (
 	"go/ast"
+	"go/token"
 	"go/types"
 	"slices"
 	"sync"
@@ -211,54 +212,99 @@ func localFuncs(v ssa.Value, seen []ssa.Value, depth int) []*ssa.Function {
 	case *ssa.ChangeType:
 		return localFuncs(v.X, seen, depth+1)
 	case *ssa.UnOp:
-		if a, ok := v.X.(*ssa.Alloc); ok {
-			var out []*ssa.Function
-			for _, r := range *a.Referrers() {
-				switch r := r.(type) {
-				case *ssa.Store:
-					if r.Addr != a {
-						return nil
-					}
-					if c, ok := r.Val.(*ssa.Const); ok && c.Value == nil {
-						continue
-					}
-					fs := localFuncs(r.Val, seen, depth+1)
+		if v.Op != token.MUL {
+			return nil
+		}
+		return cellFuncs(homeOf(v.X), seen, depth)
+	}
+	return nil
+}
+
+// homeOf is the variable that a captured variable is in the function around it.
+func homeOf(v ssa.Value) ssa.Value {
+	for {
+		fv, ok := v.(*ssa.FreeVar)
+		if !ok || fv.Parent().Parent() == nil {
+			return v
+		}
+		var bound ssa.Value
+		for _, b := range fv.Parent().Parent().Blocks {
+			for _, instr := range b.Instrs {
+				if mc, ok := instr.(*ssa.MakeClosure); ok && mc.Fn == fv.Parent() {
+					bound = mc.Bindings[slices.Index(fv.Parent().FreeVars, fv)]
+				}
+			}
+		}
+		if bound == nil {
+			return v
+		}
+		v = bound
+	}
+}
+
+// cellFuncs lists the functions that are stored to a variable, in the function
+// that has it and in the closures that capture it; nil if something else may be.
+func cellFuncs(cell ssa.Value, seen []ssa.Value, depth int) []*ssa.Function {
+	switch cell.(type) {
+	case *ssa.Alloc, *ssa.FreeVar:
+	default:
+		return nil
+	}
+	var out []*ssa.Function
+	for _, r := range *cell.Referrers() {
+		switch r := r.(type) {
+		case *ssa.Store:
+			if r.Addr != cell {
+				return nil
+			}
+			if c, ok := r.Val.(*ssa.Const); ok && c.Value == nil {
+				continue
+			}
+			fs := localFuncs(r.Val, seen, depth+1)
+			if fs == nil {
+				return nil
+			}
+			for _, f := range fs {
+				if !slices.Contains(out, f) {
+					out = append(out, f)
+				}
+			}
+		case *ssa.MakeClosure:
+			for i, b := range r.Bindings {
+				if b != cell {
+					continue
+				}
+				fv := r.Fn.(*ssa.Function).FreeVars[i]
+				if written(fv) {
+					fs := cellFuncs(fv, seen, depth+1)
 					if fs == nil {
 						return nil
 					}
-					out = append(out, fs...)
-				case *ssa.UnOp, *ssa.MakeClosure, *ssa.DebugRef:
-				default:
-					return nil
-				}
-			}
-			return out
-		}
-		if fv, ok := v.X.(*ssa.FreeVar); ok {
-			// A recursive closure: var f func(); f = func() { f() }.
-			for i, x := range fv.Parent().FreeVars {
-				if x != fv || fv.Parent().Parent() == nil {
-					continue
-				}
-				for _, b := range fv.Parent().Parent().Blocks {
-					for _, instr := range b.Instrs {
-						if mc, ok := instr.(*ssa.MakeClosure); ok && mc.Fn == fv.Parent() {
-							if a, ok := mc.Bindings[i].(*ssa.Alloc); ok {
-								for _, r := range *a.Referrers() {
-									if st, ok := r.(*ssa.Store); ok && st.Addr == a {
-										if fs := localFuncs(st.Val, seen, depth+1); fs != nil {
-											return fs
-										}
-									}
-								}
-							}
+					for _, f := range fs {
+						if !slices.Contains(out, f) {
+							out = append(out, f)
 						}
 					}
 				}
 			}
+		case *ssa.UnOp, *ssa.DebugRef:
+		default:
+			return nil
 		}
 	}
-	return nil
+	return out
+}
+
+// written tells whether a captured variable is more than read and called.
+func written(fv *ssa.FreeVar) bool {
+	for _, r := range *fv.Referrers() {
+		switch r.(type) {
+		case *ssa.UnOp, *ssa.DebugRef:
+		default:
+			return true
+		}
+	}
+	return false
 }
 
 // candidateSites lists the calls whose callee's name, or whose kind, an event
