@@ -112,6 +112,7 @@ func wantsJSON(args []string) bool {
 const rootHelp = `pathtally: do things that belong in pairs come out even on every call path?
 
   pathtally check [packages]      judge the rules; exit 1 if something is broken
+  pathtally accept [packages]     record today's findings; later runs stop only for new ones
   pathtally rules  COMMAND        list, show, try
 
 Packages are named as for the go command; without any, the one in this folder.
@@ -126,7 +127,7 @@ func command(ctx context.Context, s streams) *cobra.Command {
 		SilenceUsage:  true,
 		Args: func(_ *cobra.Command, args []string) error {
 			if len(args) > 0 {
-				return fmt.Errorf("there is no command %s: there are check and rules", args[0])
+				return fmt.Errorf("there is no command %s: there are check, accept and rules", args[0])
 			}
 			return nil
 		},
@@ -136,12 +137,12 @@ func command(ctx context.Context, s streams) *cobra.Command {
 	root.SetHelpCommand(&cobra.Command{Use: "help", Hidden: true, RunE: func(c *cobra.Command, args []string) error {
 		target, _, err := root.Find(args)
 		if err != nil || target == nil {
-			return fmt.Errorf("there is no command %s: there are check and rules", strings.Join(args, " "))
+			return fmt.Errorf("there is no command %s: there are check, accept and rules", strings.Join(args, " "))
 		}
 		return target.Help()
 	}})
 	setHelp(root, rootHelp)
-	root.AddCommand(checkCommand(ctx, s), rulesCommand(ctx, s))
+	root.AddCommand(checkCommand(ctx, s), acceptCommand(ctx, s), rulesCommand(ctx, s))
 	return root
 }
 

@@ -184,7 +184,7 @@ func TestHelpNamesTheFlags(t *testing.T) {
 	for _, c := range []struct {
 		path []string
 		text string
-	}{{[]string{"check"}, checkHelp}, {[]string{"rules", "try"}, rulesHelp}} {
+	}{{[]string{"check"}, checkHelp}, {[]string{"accept"}, acceptHelp}, {[]string{"rules", "try"}, rulesHelp}} {
 		cmd, _, err := root.Find(c.path)
 		if err != nil {
 			t.Fatal(err)
@@ -204,7 +204,7 @@ func TestHelpNamesTheFlags(t *testing.T) {
 			}
 		}
 	}
-	for _, name := range []string{"check", "rules"} {
+	for _, name := range []string{"check", "accept", "rules"} {
 		if !strings.Contains(rootHelp, "pathtally "+name) {
 			t.Errorf("the help has no command %s", name)
 		}

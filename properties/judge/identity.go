@@ -10,8 +10,8 @@ import (
 
 // What identifies a finding from one revision to the next: rule, claim and
 // broken inequality, the function it stands in, the event that opens it, the
-// step that loses it, and the shape of the path between the two (the events
-// that count, and the functions they stand in). No line numbers, no names of
+// step that loses it, and the shape of the path in that function (the events
+// that count, and the functions they happen in). No line numbers, no names of
 // locals and no texts of messages are in it: a finding is the same after code
 // was moved, functions were reordered and variables renamed, and another one
 // when something else happens on its way.
@@ -25,28 +25,30 @@ func identify(f *Finding) {
 		opened = "home\x01" + f.Home
 	}
 	f.Fingerprint = fingerprint(f.Rule, f.Claim, f.Broken, f.Blame.Package, f.Blame.Name, opened,
-		f.Cause.Function, shapeOf(f.Cause.Text), between(f))
+		f.Cause.Function, shapeOf(f.Cause.Text), shape(f))
 }
 
-// between lists the counting steps behind the one that opens the imbalance, up
-// to the one that loses it.
-func between(f *Finding) string {
-	first, last := 0, len(f.Path)
+// shape lists the counting steps from where the function that the finding
+// stands in begins, up to the step that loses the instance. What happens before
+// it, on the way from a start, is left out: there may be many ways to come here.
+func shape(f *Finding) string {
+	first, depth := 0, 0
 	for i := range f.Path {
-		if f.Opened.Place.Line > 0 && f.Path[i].Place == f.Opened.Place && f.Path[i].Changed {
-			first = i + 1
+		if f.Path[i].Function == f.Blame.Name {
+			first, depth = i, f.Path[i].Depth
 			break
 		}
 	}
-	for i := len(f.Path) - 1; i >= first; i-- {
+	last := len(f.Path) - 1
+	for i := last; i >= first; i-- {
 		if f.Path[i].Place == f.Cause.Place {
-			last = i + 1
+			last = i
 			break
 		}
 	}
 	var b strings.Builder
-	for i := first; i < min(last, len(f.Path)); i++ {
-		if s := &f.Path[i]; s.Changed && s.Kind != properties.StepEnd {
+	for i := first; i <= last; i++ {
+		if s := &f.Path[i]; s.Changed && s.Depth >= depth && s.Kind != properties.StepEnd {
 			b.WriteString(s.Function + "\x01" + shapeOf(s.Text) + "\x02")
 		}
 	}
