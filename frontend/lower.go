@@ -165,7 +165,11 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 		return m.panics(fr, i, dst), true
 	case *ssa.RunDefers:
 		fr.i++
-		return append(dst, m.unwind(fr, properties.ExitReturn)), true
+		r := m.unwind(fr, properties.ExitReturn)
+		if ret, ok := fr.b.Instrs[len(fr.b.Instrs)-1].(*ssa.Return); ok {
+			r.Label = m.label(label{kind: lblReturn, instr: ret})
+		}
+		return append(dst, r), true
 	case *ssa.Defer:
 		return append(dst, m.deferRule(fr, i)), true
 	case *ssa.Go:
@@ -904,7 +908,20 @@ func (m *Model) skip(fr *frame, b, j *ssa.BasicBlock) {
 // ret leaves the function normally.
 func (m *Model) ret(fr *frame, r *ssa.Return) pds.Rule {
 	st := m.exitState(fr, properties.ExitReturn, r.Results)
-	return pds.Rule{Kind: pds.Pop, State: m.state(st), Label: m.label(label{kind: lblReturn, instr: r})}
+	rule := pds.Rule{Kind: pds.Pop, State: m.state(st)}
+	if !runsDefers(fr.b) { // else the return was shown before the deferred calls ran
+		rule.Label = m.label(label{kind: lblReturn, instr: r})
+	}
+	return rule
+}
+
+func runsDefers(b *ssa.BasicBlock) bool {
+	for _, i := range b.Instrs {
+		if _, ok := i.(*ssa.RunDefers); ok {
+			return true
+		}
+	}
+	return false
 }
 
 // exitState is what the caller learns when the frame ends.
