@@ -76,6 +76,14 @@ func (m *Model) linkFree(l *link, i int) Expr {
 	return 0
 }
 
+// captured is linkFree for names of the instance.
+func (m *Model) captured(l *link, i int) Expr {
+	if l.made == nil && l.closure != 0 {
+		return m.x.captOf(l.closure, i, l.fi.fn)
+	}
+	return m.linkFree(l, i)
+}
+
 // toCallee writes what the frame knows of the instance over the callee's frame.
 func (m *Model) toCallee(ns nset, l *link) nset {
 	out := nset{phase: ns.phase, outside: ns.outside}
@@ -98,7 +106,7 @@ func (m *Model) toCallee(ns nset, l *link) nset {
 		for i := range l.fi.fn.FreeVars {
 			if l.made != nil && i < len(l.made.Bindings) {
 				m.carryOver(&in, e, l.made.Bindings[i], m.x.free(i))
-			} else if f := m.linkFree(l, i); f != 0 {
+			} else if f := m.captured(l, i); f != 0 {
 				in.add(m.x.rename(e, f, m.x.free(i)))
 			}
 		}
@@ -237,7 +245,7 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 			m.addBack(&fr.ns, m.x.rename(e, root, l.args[n.n]))
 			m.alsoReturned(fr, e, root, l.vals[n.n])
 		case kFree:
-			f := m.linkFree(l, int(n.n))
+			f := m.captured(l, int(n.n))
 			m.addBack(&fr.ns, m.x.rename(e, root, f))
 			if l.made != nil && int(n.n) < len(l.made.Bindings) {
 				m.alsoReturned(fr, e, root, l.made.Bindings[n.n])
@@ -245,7 +253,7 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 				// The closure may have been loaded: its place has it too.
 				for _, o := range m.origins(fr.fi, l.site.Common().Value) {
 					if m.x.frameFree(o.s) {
-						m.addBack(&fr.ns, m.x.rename(e, root, m.x.capt(o.s, int(n.n))))
+						m.addBack(&fr.ns, m.x.rename(e, root, m.x.captOf(o.s, int(n.n), l.fi.fn)))
 					} else {
 						m.heldUnder(fr, o)
 					}
@@ -379,12 +387,18 @@ func (m *Model) resolve(fr *frame, site ssa.CallInstruction) (*shape, []*ssa.Fun
 		return s, targets, 0
 	}
 	closure := m.x.name(c.Value)
-	if a := m.t.abs[m.absOf(fr, c.Value, fr.b)]; a.kind == aFunc {
+	a := m.t.abs[m.absOf(fr, c.Value, fr.b)]
+	if fn := m.closureFn(fr.ns, closure); a.kind != aFunc && fn != nil {
+		a = absVal{kind: aFunc, fn: fn}
+	} else if a.kind != aFunc && len(targets) == 1 {
+		a = absVal{kind: aFunc, fn: targets[0]} // nothing else can be in it
+	}
+	if a.kind == aFunc {
 		if isBound(a.fn) || a.fn.Synthetic != "" && a.fn.Object() != nil && len(a.fn.FreeVars) == 0 {
 			t := *s
 			t.fn, t.obj = 0, funcObject(a.fn)
 			if isBound(a.fn) {
-				t.recv, t.recvT = m.x.capt(closure, 0), a.fn.FreeVars[0].Type()
+				t.recv, t.recvT = m.x.captOf(closure, 0, a.fn), a.fn.FreeVars[0].Type()
 				if types.IsInterface(t.recvT) {
 					t.invoke = true
 				}
@@ -521,6 +535,9 @@ func (m *Model) funcValue(fr *frame, v ssa.Value) (*ssa.Function, *ssa.MakeClosu
 	}
 	if a := m.t.abs[m.absOf(fr, v, fr.b)]; a.kind == aFunc {
 		return a.fn, nil
+	}
+	if fn := m.closureFn(fr.ns, m.x.name(v)); fn != nil {
+		return fn, nil
 	}
 	return nil, nil
 }
@@ -1100,7 +1117,7 @@ func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
 	if len(pushed.names) > 0 {
 		after.ns.add(m.x.kept())
 	}
-	if m.outerDefer(d) {
+	if outerDefer(d) {
 		m.note(d, "range-over-func", "a deferred call pushed inside the body of a range over a function is not followed")
 		return m.goTo(after, 0)
 	}
@@ -1111,7 +1128,7 @@ func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
 
 // outerDefer: the deferred call belongs to the enclosing function (it stands
 // in the body of a range over a function).
-func (m *Model) outerDefer(d *ssa.Defer) bool {
+func outerDefer(d *ssa.Defer) bool {
 	if d.DeferStack == nil {
 		return false
 	}

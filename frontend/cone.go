@@ -498,7 +498,7 @@ func (m *Model) translate(g *fnInfo, u Expr, c caller, callee *ssa.Function) []o
 			var out []origin
 			for _, o := range m.origins(g, c.site.Common().Value) {
 				if o.b == nil { // else it was captured where it has a name of its own
-					out = append(out, origin{m.x.capt(o.s, int(n.n)), m.x.capt(o.n, int(n.n)), nil})
+					out = append(out, origin{m.x.captOf(o.s, int(n.n), callee), m.x.captOf(o.n, int(n.n), callee), nil})
 				}
 			}
 			return clip(out)

@@ -181,6 +181,11 @@ func (m *Model) toCalleeKey(k Expr, site ssa.CallInstruction, g *ssa.Function, b
 		if v := c.arg(g, i); v != nil {
 			add(m.x.rebase(k, m.x.name(v), m.x.param(i)))
 			add(m.x.rebase(k, m.key(v, b), m.x.param(i)))
+			if mc, ok := v.(*ssa.MakeClosure); ok {
+				for j, f := range mc.Bindings {
+					add(m.x.rebase(k, m.x.name(f), m.x.capt(m.x.param(i), j)))
+				}
+			}
 		}
 	}
 	for i := range g.FreeVars {
@@ -914,7 +919,7 @@ func (f *flowInfo) findUses() {
 			}
 			_, isDefer := instr.(*ssa.Defer)
 			_, isMake := instr.(*ssa.MakeClosure)
-			if isDefer {
+			if d, ok := instr.(*ssa.Defer); ok && !outerDefer(d) {
 				f.defers = true
 			}
 			for _, op := range instr.Operands(nil) {

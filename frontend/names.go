@@ -30,9 +30,30 @@ func (m *Model) carryOver(ns *nset, e Expr, val ssa.Value, to Expr) {
 	ns.add(m.x.rename(e, m.x.name(val), to))
 	if mc := closureOf(val); mc != nil {
 		for k, b := range mc.Bindings {
-			m.carryOver(ns, e, b, m.x.capt(to, k))
+			m.carryOver(ns, e, b, m.x.captOf(to, k, mc.Fn.(*ssa.Function)))
 		}
 	}
+}
+
+// captOf names captured variable i of the closure value x of fn. A name of
+// the instance thereby says which function it is captured by.
+func (t *exprs) captOf(x Expr, i int, fn *ssa.Function) Expr {
+	return t.sel(kCap, x, int32(i), 0, fn)
+}
+
+// closureFn is the function of the closure value x, as far as a name of the
+// instance tells: nil if it captures nothing that is known.
+func (m *Model) closureFn(ns nset, x Expr) *ssa.Function {
+	for _, e := range ns.names {
+		for m.x.isSel(e) {
+			if n := m.x.nodes[e]; n.kind == kCap && n.x == x {
+				fn, _ := n.ref.(*ssa.Function)
+				return fn
+			}
+			e = m.x.nodes[e].x
+		}
+	}
+	return nil
 }
 
 // reaches tells whether e is a name under val, or under what the closure val captures.
