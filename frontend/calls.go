@@ -468,32 +468,31 @@ func (m *Model) enters(fr *frame, l *link) bool {
 			return true
 		}
 	}
-	if len(in.names) > 0 {
-		sum := m.sh.eff.Of(g.fn)
-		for _, e := range in.names {
-			i := -1
-			switch n := m.x.nodes[m.x.root[e]]; n.kind {
-			case kParam:
-				i = int(n.n)
-			case kFree:
-				i = len(g.fn.Params) + int(n.n)
-			}
-			if i < 0 {
-				continue
-			}
-			f := sum.Flow(i)
-			if m.worthFollowing(f, g.fn) {
-				return true
-			}
+	sum := m.sh.eff.Of(g.fn)
+	for _, e := range in.names {
+		if k := m.x.nodes[e].kind; k == kHeld || k == kMaybe {
+			continue // the summary says as much as can be said
+		}
+		i := -1
+		switch n := m.x.nodes[m.x.root[e]]; n.kind {
+		case kParam:
+			i = int(n.n)
+		case kFree:
+			i = len(g.fn.Params) + int(n.n)
+		}
+		if i >= 0 && m.worthFollowing(sum.Flow(i), i, g.fn) {
+			return true
 		}
 	}
 	return m.callsBack(fr, l)
 }
 
-// worthFollowing: the callee puts what it is given into a result or into an
-// argument's memory; its body says where exactly.
-func (m *Model) worthFollowing(f effects.Flow, fn *ssa.Function) bool {
-	if f.Roots != 0 {
+// worthFollowing: the callee puts what it is given as root i into a result or
+// into another argument's memory; its body says where exactly. An instance that
+// stays where it is (a lock) gets new names by results only: what is stored in
+// passing is not asked about by those names.
+func (m *Model) worthFollowing(f effects.Flow, i int, fn *ssa.Function) bool {
+	if m.rule.Moves && f.Roots&^(1<<uint(min(i, 62))) != 0 {
 		return true
 	}
 	res := fn.Signature.Results()
@@ -552,7 +551,7 @@ func (m *Model) bears(fr *frame, l *link) bool {
 	case anyInst:
 		return g.cone
 	case unborn:
-		return g.bearing
+		return m.exportsBirth(g)
 	}
 	for _, e := range m.toCallee(fr.ns, l).names {
 		if m.concerns(g, e) || m.boundEvent(g.fn, e) {
@@ -1074,6 +1073,9 @@ func (m *Model) resume(st state, sym symbol, fr *frame, dst []pds.Rule) []pds.Ru
 	} else {
 		l = m.linkOf(site, m.fns[ref.callee].fn, ref.closure)
 	}
+	if out, done := m.takePending(st, sym, fr, dst); done {
+		return out
+	}
 	if st.exit != properties.ExitReturn {
 		m.fromCallee(fr, st, l, nil)
 		return append(dst, m.leaveBy(fr, st.exit, 0))
@@ -1114,16 +1116,99 @@ func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
 	}
 	after := fr.clone()
 	after.i++
+	for _, v := range d.Call.Args {
+		if a := m.absOf(fr, v, fr.b); a != 0 {
+			m.setFact(after, m.x.reg(v), a)
+		}
+	}
 	if len(pushed.names) > 0 {
 		after.ns.add(m.x.kept())
 	}
 	if outerDefer(d) {
-		m.note(d, "range-over-func", "a deferred call pushed inside the body of a range over a function is not followed")
-		return m.goTo(after, 0)
+		return m.deferOutside(after, fr, d)
 	}
 	return pds.Rule{Kind: pds.Push, State: runState, Top: m.point(after),
 		Below: m.symbol(symbol{kind: symDeferred, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i), ns: m.t.nset(pushed)}),
 		Label: m.label(label{kind: lblDefer, instr: d})}
+}
+
+// deferOutside pushes a deferred call of the body of a range over a function: it
+// belongs to the function around it, whose part of the stack cannot be reached
+// from here. It travels with the exit until that function has control again.
+func (m *Model) deferOutside(after, fr *frame, d *ssa.Defer) pds.Rule {
+	lbl := m.label(label{kind: lblDefer, instr: d})
+	if fr.fs.get(m.x.pending()) != 0 {
+		m.note(d, "range-over-func", "only one deferred call is followed out of the body of a range over a function")
+		return m.goTo(after, lbl)
+	}
+	pushed := nset{phase: fr.ns.phase}
+	for _, e := range fr.ns.names {
+		if i, ok := m.x.nodes[m.x.root[e]].ref.(ssa.Instruction); ok && i.Parent() == fr.fi.fn {
+			pushed.add(e)
+		}
+	}
+	id := m.symbol(symbol{kind: symDeferred, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i), ns: m.t.nset(pushed)})
+	after.fs = after.fs.with(m.x.pending(), m.t.absOf(absVal{kind: aPending, lo: int64(id)}))
+	return m.goTo(after, lbl)
+}
+
+// takePending handles an exit that carries a deferred call: the function that
+// the call belongs to pushes it, others pass it on. done: dst holds the push,
+// behind which the exit is handled again without it.
+func (m *Model) takePending(st state, sym symbol, fr *frame, dst []pds.Rule) ([]pds.Rule, bool) {
+	key := m.x.pending()
+	a := m.t.facts[st.fs].get(key)
+	if a == 0 {
+		return dst, false
+	}
+	id := pds.SymbolID(m.t.abs[a].lo)
+	if deferOwner(m.fns[m.symbols[id].fn].fn) != fr.fi.fn {
+		if fr.fs.get(key) == 0 {
+			fr.fs = fr.fs.with(key, a)
+		} else if fr.fs.get(key) != a {
+			d := m.fns[m.symbols[id].fn].fn.Blocks[m.symbols[id].blk].Instrs[m.symbols[id].idx]
+			m.note(d, "range-over-func", "only one deferred call is followed out of the body of a range over a function")
+		}
+		return dst, false
+	}
+	st.fs = m.t.factset(m.t.facts[st.fs].with(key, 0))
+	return append(dst, pds.Rule{Kind: pds.Push, State: m.state(st), Top: m.symbol(sym), Below: id}), true
+}
+
+// deferOwner is the function whose deferred calls those of fn are, if they are
+// not its own: the innermost one around fn that is no body of a range over a function.
+func deferOwner(fn *ssa.Function) *ssa.Function {
+	for fn.Synthetic == "range-over-func yield" && fn.Parent() != nil {
+		fn = fn.Parent()
+	}
+	return fn
+}
+
+// inBody writes what the function around a body of a range over a function
+// knows of the instance over the frame of that body.
+func (m *Model) inBody(ns nset, owner, body *ssa.Function) nset {
+	if body == owner || body.Parent() == nil {
+		return ns
+	}
+	ns = m.inBody(ns, owner, body.Parent())
+	out := nset{phase: ns.phase, outside: ns.outside}
+	for _, b := range body.Parent().Blocks {
+		for _, i := range b.Instrs {
+			mc, ok := i.(*ssa.MakeClosure)
+			if !ok || mc.Fn != body {
+				continue
+			}
+			for _, e := range ns.names {
+				if m.x.rootKind(e) == kGlobal {
+					out.add(e)
+				}
+				for k, v := range mc.Bindings {
+					out.add(m.x.rebase(e, m.x.name(v), m.x.free(k)))
+				}
+			}
+		}
+	}
+	return out
 }
 
 // outerDefer: the deferred call belongs to the enclosing function (it stands
@@ -1155,7 +1240,14 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	fi := m.fns[sym.fn]
 	d := fi.fn.Blocks[sym.blk].Instrs[sym.idx].(*ssa.Defer)
 	at := &frame{fi: fi, b: fi.fn.Blocks[sym.blk], i: int(sym.idx), ns: fr.ns, fs: fr.fs, rec: fr.rec}
-	if m.flowOf(fi).inLoop[sym.blk] {
+	away := outerDefer(d)
+	if away {
+		at.fs = nil // they speak of another frame
+		at.ns = m.inBody(fr.ns, fr.fi.fn, fi.fn)
+		for _, e := range m.t.nsets[sym.ns].names {
+			at.ns.add(e)
+		}
+	} else if m.flowOf(fi).inLoop[sym.blk] {
 		pushed := m.t.nsets[sym.ns]
 		at.ns.filter(func(e Expr) bool { return !m.definedInLoop(fi, e) })
 		for _, e := range pushed.names {
@@ -1254,8 +1346,14 @@ func (m *Model) resumeDefer(st state, sym symbol, fr *frame, dst []pds.Rule) []p
 	ref := m.conts[sym.aux]
 	site := fr.b.Instrs[fr.i].(ssa.CallInstruction)
 	l := m.linkOf(site, m.fns[ref.callee].fn, ref.closure)
-	m.fromCallee(fr, st, l, nil)
-	next := state{kind: stUnwind, exit: ref.mode, fn: sym.fn, blk: ref.ublk, idx: ref.uidx, rec: ref.rec,
+	owner := fr.fi
+	if outerDefer(site.(*ssa.Defer)) {
+		owner = m.info(deferOwner(fr.fi.fn))
+		fr.ns.outside = fr.ns.outside || m.t.nsets[st.ns].outside
+	} else {
+		m.fromCallee(fr, st, l, nil)
+	}
+	next := state{kind: stUnwind, exit: ref.mode, fn: int32(owner.id), blk: ref.ublk, idx: ref.uidx, rec: ref.rec,
 		ns: m.t.nset(fr.ns), fs: m.t.factset(fr.fs)}
 	switch st.exit {
 	case properties.ExitReturn:

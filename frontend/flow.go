@@ -23,6 +23,9 @@ type flowInfo struct {
 	pinned map[ssa.Value]bool
 	live   map[ssa.Value]bits
 	defers bool // the function defers something
+	// lateDefers: what it defers stands in bodies of ranges over functions only,
+	// and its returns do not say that deferred calls run.
+	lateDefers bool
 
 	after []Expr // memory facts that callers want to know behind a call
 	asked bool   // after grew since the function was prepared
@@ -605,6 +608,19 @@ func (m *Model) findKeys(fi *fnInfo) {
 					if instr.Op == token.MUL && use[m.x.reg(instr)] != nil {
 						changed = ask(m.x.load(m.placeKey(instr.X, b, 0)), i) || changed
 					}
+					if instr.Op == token.NOT && use[m.x.reg(instr)] != nil {
+						changed = ask(m.key(instr.X, b), i) || changed
+					}
+				case *ssa.BinOp:
+					// A truth value that is kept: what it is made of is asked for where it is made.
+					if isBool(instr.Type()) && use[m.x.reg(instr)] != nil {
+						for _, v := range [2]ssa.Value{instr.X, instr.Y} {
+							if m.useful(v) {
+								changed = ask(m.key(v, b), i) || changed
+								changed = ask(m.x.reg(v), i) || changed
+							}
+						}
+					}
 				case *ssa.Store:
 					for _, p := range []Expr{m.x.load(m.placeKey(instr.Addr, b, 0)), m.x.load(m.x.name(instr.Addr))} {
 						if p != 0 && use[p] != nil {
@@ -709,9 +725,16 @@ func (m *Model) callKeys(site ssa.CallInstruction, b *ssa.BasicBlock, ask func(E
 		if !ok || !gi.cone || m.isEventFunc(g) || g.Blocks == nil {
 			continue
 		}
+		_, deferred := site.(*ssa.Defer)
 		for _, k := range m.flowOf(gi).entry {
 			for _, t := range m.toCaller(k, site, g, b) {
 				ask(t)
+			}
+			// The arguments of a deferred call are what they were at the statement.
+			if n := m.x.nodes[k]; deferred && n.kind == kParam {
+				if v := (caller{fn: site.Parent(), site: site}).arg(g, int(n.n)); v != nil && m.useful(v) {
+					ask(m.x.reg(v))
+				}
 			}
 		}
 	}
@@ -919,6 +942,13 @@ func (f *flowInfo) findUses() {
 			}
 			_, isDefer := instr.(*ssa.Defer)
 			_, isMake := instr.(*ssa.MakeClosure)
+			if c, ok := instr.(*ssa.Call); ok {
+				if b, ok := c.Call.Value.(*ssa.Builtin); ok && b.Name() == "ssa:deferstack" {
+					stack = true
+				}
+			}
+			_, runs := instr.(*ssa.RunDefers)
+			unwinds = unwinds || runs
 			if d, ok := instr.(*ssa.Defer); ok && !outerDefer(d) {
 				f.defers = true
 			}
