@@ -360,7 +360,7 @@ func (m *Model) lend(ns nset) nset {
 }
 
 func (m *Model) entry(fi *fnInfo, ns nset, fs factset, rec int8) pds.SymbolID {
-	return m.symbol(symbol{kind: symEntry, fn: int32(fi.id), ns: m.t.nset(ns), fs: m.t.factset(fs), aux: int32(rec)})
+	return m.bounded(symbol{kind: symEntry, fn: int32(fi.id), ns: m.t.nset(ns), aux: int32(rec)}, fs)
 }
 
 // resolve says what a call site runs, as far as the source and the path's

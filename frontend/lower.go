@@ -36,8 +36,37 @@ func (m *Model) frameOf(s symbol) *frame {
 }
 
 func (m *Model) point(fr *frame) pds.SymbolID {
-	return m.symbol(symbol{kind: symPoint, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i),
-		ns: m.t.nset(fr.ns), fs: m.t.factset(fr.fs), aux: int32(fr.rec)})
+	return m.bounded(symbol{kind: symPoint, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i),
+		ns: m.t.nset(fr.ns), aux: int32(fr.rec)}, fr.fs)
+}
+
+// maxFactsets bounds the sets of facts that one point of a function (with one
+// set of names) is told apart by. Past it facts about integers are dropped, and
+// past twice as many all facts: that only adds paths.
+const maxFactsets = 40
+
+// bounded interns the symbol s with the facts fs, or with fewer. A symbol that
+// exists with all its facts is found again however many there are by now, so
+// the answer for a frame does not change.
+func (m *Model) bounded(s symbol, fs factset) pds.SymbolID {
+	full := s
+	full.fs = m.t.factset(fs)
+	if id, ok := m.symID[full]; ok {
+		return id
+	}
+	n := m.factsets[s]
+	if n >= 2*maxFactsets {
+		full.fs = m.t.factset(nil)
+		return m.symbol(full)
+	}
+	if n >= maxFactsets {
+		full.fs = m.t.factset(fs.only(func(f fact) bool { return m.t.abs[f.val].kind != aInt && m.x.nodes[f.key].kind != kBin }))
+		if id, ok := m.symID[full]; ok {
+			return id
+		}
+	}
+	m.factsets[s] = n + 1
+	return m.symbol(full)
 }
 
 // Rules implements pds.System: it walks from the head's point to the next step
@@ -160,6 +189,11 @@ func (m *Model) step(fr *frame, instr ssa.Instruction, dst []pds.Rule) (out []pd
 	case *ssa.If:
 		return m.branch(fr, i, dst)
 	case *ssa.Return:
+		if m.flowOf(fr.fi).lateDefers && fr.b != fr.fi.fn.Recover {
+			r := m.unwind(fr, properties.ExitReturn)
+			r.Label = m.label(label{kind: lblReturn, instr: i})
+			return append(dst, r), true
+		}
 		return append(dst, m.ret(fr, i)), true
 	case *ssa.Panic:
 		return m.panics(fr, i, dst), true
@@ -620,7 +654,7 @@ func (m *Model) prune(fr *frame) {
 	f := m.flowOf(fr.fi)
 	fr.fs = fr.fs.filter(func(k Expr) bool {
 		live, ok := f.keys[k]
-		return ok && live.has(fr.b.Index)
+		return ok && live.has(fr.b.Index) || k == m.x.pending()
 	})
 	if fr.ns.phase != born || len(fr.ns.names) < 2 {
 		return
@@ -979,6 +1013,9 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 	if kind != properties.ExitReturn {
 		fs = nil
 	}
+	if a := fr.fs.get(m.x.pending()); a != 0 {
+		fs = fs.with(m.x.pending(), a)
+	}
 	st.ns, st.fs = m.t.nset(ns), m.t.factset(fs)
 	return st
 }
@@ -1151,6 +1188,11 @@ func (m *Model) leave(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	fr := m.unwindFrame(st)
 	switch st.exit {
 	case properties.ExitReturn:
+		if r, ok := fr.b.Instrs[fr.i].(*ssa.Return); ok {
+			rule := m.ret(fr, r)
+			rule.Label = 0 // shown before the deferred calls ran
+			return append(dst, rule)
+		}
 		return append(dst, m.goTo(fr, 0))
 	default:
 		return append(dst, pds.Rule{Kind: pds.Pop, State: m.state(m.exitState(fr, st.exit, nil))})

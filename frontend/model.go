@@ -47,9 +47,10 @@ type Model struct {
 	doubtID map[doubtKey]pds.DoubtID
 	notes   noteSet
 
-	units   unitQueue
-	visited map[*ssa.Function]bool // functions whose code the exploration entered
-	funcIDs map[*ssa.Function]int
+	units    unitQueue
+	factsets map[symbol]int         // symbols by everything but their facts
+	visited  map[*ssa.Function]bool // functions whose code the exploration entered
+	funcIDs  map[*ssa.Function]int
 }
 
 type symKind uint8
@@ -141,6 +142,7 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		contID:      map[contRef]int32{},
 		doubtID:     map[doubtKey]pds.DoubtID{},
 		visited:     map[*ssa.Function]bool{},
+		factsets:    map[symbol]int{},
 		funcIDs:     map[*ssa.Function]int{},
 	}
 	m.symbols = append(m.symbols, symbol{})

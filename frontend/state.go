@@ -78,6 +78,7 @@ const (
 	aNe                  // differs from the constant c
 	aType                // an interface with dynamic type typ (not nil)
 	aFunc                // the function fn, a closure of it, or a method bound to a receiver (not nil)
+	aPending             // the deferred call with symbol lo
 )
 
 type absVal struct {
@@ -209,4 +210,14 @@ func (t *tables) factset(f factset) int32 {
 	t.facts = append(t.facts, f)
 	t.factsID[string(b)] = id
 	return id
+}
+
+func (f factset) only(keep func(fact) bool) factset {
+	var n factset
+	for _, x := range f {
+		if keep(x) {
+			n = append(n, x)
+		}
+	}
+	return n
 }
