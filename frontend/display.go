@@ -226,8 +226,14 @@ func (m *Model) Step(id pds.LabelID) properties.Step {
 		m.branchStep(&st, l.instr.(*ssa.If), l.kind == lblTrue)
 	case lblCall:
 		st.Kind, st.Text = properties.StepCall, m.callText(l.instr.(ssa.CallInstruction))
+		if rs := m.rangeAt(l.instr.(ssa.CallInstruction)); rs != nil {
+			st.Place, st.Text = m.at(rs.Pos()), "range "+m.nodeText(rs.X)
+		}
 	case lblCallback:
 		st.Kind, st.Text = properties.StepCall, m.calleeText(l.instr.(ssa.CallInstruction))+" calls the function it is given"
+		if rs := m.rangeAt(l.instr.(ssa.CallInstruction)); rs != nil {
+			st.Place, st.Text = m.at(rs.Pos()), "the loop takes the next element"
+		}
 	case lblReturn:
 		st.Kind, st.Text = properties.StepReturn, m.returnText(l.instr)
 		if !l.instr.Pos().IsValid() && fn.Syntax() != nil {
@@ -372,6 +378,23 @@ func (m *Model) branchStep(st *properties.Step, i *ssa.If, truth bool) {
 		pos = bodyPos(ci)
 	}
 	switch i.Block().Comment {
+	case "rangefunc.resume.ready.check", "rangefunc.resume.exits", "rangefunc.resume.match":
+		// How the body of a range over a function was left.
+		st.Text = "the loop is left by a jump"
+		if i.Block().Comment == "rangefunc.resume.ready.check" && truth {
+			st.Text = "the loop ends"
+		}
+		for b := i.Block().Idom(); b != nil; b = b.Idom() {
+			for k := len(b.Instrs) - 1; k >= 0; k-- {
+				if c, ok := b.Instrs[k].(*ssa.Call); ok {
+					if rs := m.rangeAt(c); rs != nil {
+						st.Place = m.at(rs.Pos())
+						return
+					}
+				}
+			}
+		}
+		return
 	case "rangeindex.loop", "rangeiter.loop", "rangechan.loop", "rangefunc.loop":
 		if rs := m.loopOf(i); rs != nil {
 			st.Place = m.at(rs.Pos())
@@ -535,6 +558,26 @@ func (m *Model) turnNode(l label) ast.Node {
 			}
 		case *ast.FuncLit, *ast.FuncDecl:
 			return nil
+		}
+	}
+	return nil
+}
+
+// rangeAt is the range statement that the call of an iterator stands for, nil
+// for an ordinary call.
+func (m *Model) rangeAt(c ssa.CallInstruction) *ast.RangeStmt {
+	for _, a := range c.Common().Args {
+		mc, ok := a.(*ssa.MakeClosure)
+		if !ok || mc.Fn.(*ssa.Function).Synthetic != "range-over-func yield" {
+			continue
+		}
+		for _, n := range m.enclosing(c.Pos()) {
+			switch n := n.(type) {
+			case *ast.RangeStmt:
+				return n
+			case *ast.FuncLit, *ast.FuncDecl:
+				return nil
+			}
 		}
 	}
 	return nil

@@ -117,6 +117,10 @@ func (t *exprs) constant(s string) Expr { return t.intern(exprNode{kind: kConst,
 // it the instance is not lost, whatever happens to the names of this frame.
 func (t *exprs) kept() Expr { return t.constant("(kept)") }
 
+// pending is the key under which a frame carries the deferred call that it has
+// pushed for the function around it.
+func (t *exprs) pending() Expr { return t.constant("(deferred)") }
+
 func (t *exprs) held(x Expr) Expr {
 	if k := t.nodes[x].kind; k == kHeld {
 		return x

@@ -932,6 +932,11 @@ func (f *flowInfo) findUses() {
 	f.uses = map[ssa.Value][]int{}
 	f.pinned = map[ssa.Value]bool{}
 	f.live = map[ssa.Value]bits{}
+	stack, unwinds := false, false
+	defer func() {
+		f.defers = f.defers || stack
+		f.lateDefers = stack && !unwinds
+	}()
 	for i, b := range f.fi.fn.Blocks {
 		for _, instr := range b.Instrs {
 			if phi, ok := instr.(*ssa.Phi); ok {
