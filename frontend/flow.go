@@ -634,7 +634,7 @@ func (m *Model) findKeys(fi *fnInfo) {
 	}
 	for _, k := range order {
 		live := newBits(n)
-		defs, early := m.definedIn(k, n)
+		defs, early := m.definedIn(fn, k)
 		var work []int
 		reach := func(b int) {
 			// In front of the block that defines a register of the key, nothing
@@ -661,9 +661,10 @@ func (m *Model) findKeys(fi *fnInfo) {
 	}
 }
 
-// definedIn gives the blocks that define the registers of a key, of n blocks,
+// definedIn gives the blocks of fn that define the registers of a key,
 // and those of them in which all of its registers are φs; nil if it has none.
-func (m *Model) definedIn(k Expr, n int) (defs, early bits) {
+func (m *Model) definedIn(fn *ssa.Function, k Expr) (defs, early bits) {
+	n := len(fn.Blocks)
 	var visit func(e Expr)
 	late := newBits(n)
 	visit = func(e Expr) {
@@ -673,7 +674,7 @@ func (m *Model) definedIn(k Expr, n int) (defs, early bits) {
 		switch nd := m.x.nodes[e]; nd.kind {
 		case kReg, kRes:
 			i, ok := nd.ref.(ssa.Instruction)
-			if !ok {
+			if !ok || i.Parent() != fn {
 				return
 			}
 			if defs == nil {
