@@ -1,6 +1,7 @@
 package frontend
 
 import (
+	"go/token"
 	"go/types"
 	"slices"
 
@@ -86,7 +87,7 @@ func (m *Model) buildCone() {
 				if v != nil {
 					for _, o := range m.origins(fi, v) {
 						m.addSubject(fi, o)
-						if o.b == nil && o.s != 0 && !slices.Contains(fi.own, o.s) {
+						if o.b == nil && o.s != 0 && m.typeFits(fi.fn, o.s) && !slices.Contains(fi.own, o.s) {
 							fi.own = append(fi.own, o.s)
 						}
 					}
@@ -127,7 +128,7 @@ func (m *Model) buildCone() {
 
 // addSubject records a subject of fi's cone, or a birth if it does not exist at entry.
 func (m *Model) addSubject(fi *fnInfo, o origin) bool {
-	if o.s == 0 {
+	if o.s == 0 || !m.typeFits(fi.fn, o.s) {
 		return false
 	}
 	if o.b == nil {
@@ -413,6 +414,13 @@ func (m *Model) loadOrigin(fi *fnInfo, out []origin, o origin, v *ssa.UnOp, seen
 			for _, val := range vals {
 				out = append(out, m.originsOf(fi, val, seen)...)
 			}
+			if len(vals) == 0 {
+				// The struct that the place lies in may be stored as a whole.
+				out = m.structOrigins(fi, out, o, v, seen)
+				if len(out) > 0 {
+					return out
+				}
+			}
 			if len(vals) > 0 || v == nil {
 				return out
 			}
@@ -426,6 +434,29 @@ func (m *Model) loadOrigin(fi *fnInfo, out []origin, o origin, v *ssa.UnOp, seen
 		}
 	}
 	return append(out, r)
+}
+
+// structOrigins appends the origins of a load from the address o in a local
+// struct that is a copy of another one.
+func (m *Model) structOrigins(fi *fnInfo, out []origin, o origin, v *ssa.UnOp, seen map[ssa.Value]bool) []origin {
+	for p := o.n; m.x.nodes[p].kind == kField; {
+		p = m.x.nodes[p].x
+		for _, val := range m.storesOf(fi)[p] {
+			load, ok := val.(*ssa.UnOp)
+			if !ok || load.Op != token.MUL || seen[load] {
+				continue
+			}
+			seen[load] = true
+			for _, from := range m.originsOf(fi, load.X, seen) {
+				part := origin{m.x.rebase(o.n, p, from.s), m.x.rebase(o.n, p, from.n), from.b}
+				if part.s != 0 && part.n != 0 {
+					out = m.loadOrigin(fi, out, part, v, seen)
+				}
+			}
+			delete(seen, load)
+		}
+	}
+	return out
 }
 
 func (m *Model) storesOf(fi *fnInfo) map[Expr][]ssa.Value {

@@ -143,6 +143,9 @@ func implements(t types.Type, iface *types.Interface) bool {
 // fits looks at arguments and results as far as they are known without a path.
 func (m *Model) fits(e *properties.EventMatch, s *shape) (match, bool) {
 	mt := match{ev: e, birth: -1}
+	if !m.mayCall(e, s) {
+		return mt, false
+	}
 	if e.CallsInstance {
 		mt.subject = s.fn
 	}

@@ -1,7 +1,11 @@
 package frontend
 
 import (
+	"go/types"
+
 	"golang.org/x/tools/go/ssa"
+
+	"pathtally/properties"
 )
 
 // closureOf is the closure that v is, seen through conversions; nil if its
@@ -210,4 +214,62 @@ func (m *Model) unspilled(fi *fnInfo, e Expr) Expr {
 		return u
 	}
 	return e
+}
+
+// typeFits tells whether what e names in the frame of fn can be an instance of
+// the rule, by its type: an interface may hold one.
+func (m *Model) typeFits(fn *ssa.Function, e Expr) bool {
+	t := m.typeOf(fn, e)
+	if t == nil || m.rule.Each == nil || len(m.rule.Each.Types) == 0 {
+		return true
+	}
+	switch t.Underlying().(type) {
+	case *types.Interface, *types.Signature:
+		return true
+	}
+	if _, ok := t.(*types.TypeParam); ok {
+		return true
+	}
+	for _, want := range m.rule.Each.Types {
+		switch want.Underlying().(type) {
+		case *types.Interface, *types.Signature:
+			return true
+		}
+		if types.Identical(t, want) {
+			return true
+		}
+		if p, ok := t.Underlying().(*types.Pointer); ok && types.Identical(p.Elem(), want) {
+			return true
+		}
+		if p, ok := want.Underlying().(*types.Pointer); ok && types.Identical(p.Elem(), t) {
+			return true
+		}
+	}
+	return false
+}
+
+// mayCall tells whether a call through an interface can run the concrete method
+// of an event: some value of its type must be converted to an interface at all.
+func (m *Model) mayCall(e *properties.EventMatch, s *shape) bool {
+	if !s.invoke || s.site == nil || !s.site.Common().IsInvoke() {
+		return true
+	}
+	for _, c := range e.Callees {
+		if c.Interface || c.Obj == s.obj {
+			return true
+		}
+	}
+	fns, complete := m.sh.resolver.Callees(s.site)
+	if !complete {
+		return true
+	}
+	for _, g := range fns {
+		obj := funcObject(g)
+		for _, c := range e.Callees {
+			if obj == c.Obj {
+				return true
+			}
+		}
+	}
+	return false
 }

@@ -245,6 +245,7 @@ func (m *Model) Settle(closed bool) {
 	if m.sh.boundary(u.fn.fn) {
 		return // an event of another rule, which counts for it
 	}
+	misfits := 0
 	for _, c := range m.sh.callers[u.fn.fn] {
 		g, ok := m.fnOf[c.fn]
 		if !ok || !g.cone || m.isEventFunc(c.fn) || c.fn.Blocks == nil {
@@ -258,6 +259,8 @@ func (m *Model) Settle(closed bool) {
 		for _, o := range m.translate(g, u.u, c, u.fn.fn) {
 			switch {
 			case o.s == 0:
+			case !m.typeFits(g.fn, o.s):
+				misfits++
 			case o.b == nil:
 				if g.subjects[o.s] && !m.x.hasGhost(o.s) {
 					k := unitKey{g, o.s}
@@ -269,6 +272,9 @@ func (m *Model) Settle(closed bool) {
 				m.addUnit(unitKey{g, 0})
 			}
 		}
+	}
+	if misfits > 0 && len(u.parents) == 0 && u.start.Inner {
+		u.closed = true // an interface that never holds an instance of this rule
 	}
 }
 
