@@ -125,7 +125,7 @@ type jsonRun struct {
 	Assumptions []jsonNote    `json:"assumptions"`
 	NotJudged   []Left        `json:"notJudged"`
 	Stale       []jsonStale   `json:"stale"`
-	Base        *jsonBase     `json:"base"`
+	Base        *jsonBase     `json:"base,omitempty"`
 	Cut         []string      `json:"cut"`
 	Summary     jsonSummary   `json:"summary"`
 }
