@@ -571,13 +571,8 @@ func (m *Model) rangeAt(c ssa.CallInstruction) *ast.RangeStmt {
 		if !ok || mc.Fn.(*ssa.Function).Synthetic != "range-over-func yield" {
 			continue
 		}
-		for _, n := range m.enclosing(c.Pos()) {
-			switch n := n.(type) {
-			case *ast.RangeStmt:
-				return n
-			case *ast.FuncLit, *ast.FuncDecl:
-				return nil
-			}
+		if rs, ok := mc.Fn.(*ssa.Function).Syntax().(*ast.RangeStmt); ok {
+			return rs
 		}
 	}
 	return nil

@@ -69,16 +69,16 @@ type Abs int32
 type absKind uint8
 
 const (
-	aTop  absKind = iota // nothing known
-	aNil                 // nil
-	aNon                 // not nil
-	aBool                // lo = 0 false, 1 true
-	aInt                 // lo <= value <= hi
-	aEq                  // equals the constant c
-	aNe                  // differs from the constant c
-	aType                // an interface with dynamic type typ (not nil)
-	aFunc                // the function fn, a closure of it, or a method bound to a receiver (not nil)
-	aPending             // the deferred call with symbol lo
+	aTop     absKind = iota // nothing known
+	aNil                    // nil
+	aNon                    // not nil
+	aBool                   // lo = 0 false, 1 true
+	aInt                    // lo <= value <= hi
+	aEq                     // equals the constant c
+	aNe                     // differs from the constant c
+	aType                   // an interface with dynamic type typ (not nil)
+	aFunc                   // the function fn, a closure of it, or a method bound to a receiver (not nil)
+	aPending                // the deferred call with symbol lo
 )
 
 type absVal struct {
