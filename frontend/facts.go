@@ -56,6 +56,10 @@ func (m *Model) keyDepth(v ssa.Value, at *ssa.BasicBlock, depth int) Expr {
 	case *ssa.MakeInterface:
 		return x.reg(v)
 	case *ssa.Extract:
+		if ta, ok := v.Tuple.(*ssa.TypeAssert); ok && v.Index == 1 {
+			// Asserting one value to one type twice is one question.
+			return x.intern(exprNode{kind: kUn, op: token.TYPE, x: m.keyDepth(ta.X, at, depth+1), ref: types.TypeString(ta.AssertedType, nil)})
+		}
 		if c, ok := v.Tuple.(*ssa.Call); ok {
 			if e := m.getterKey(c, v.Index, at, depth); e != 0 {
 				return e
