@@ -29,7 +29,8 @@ const checkHelp = `pathtally check [packages]      judge every rule on every cal
 
   what      --tests  --deps  --build OS/ARCH[,tags=a,b]  --tags LIST  -C DIR
   which     --only RULE[/CLAIM[:ID]]  --about FUNCTION  --base REV  --rules FILE
-  answers   --format text|lines|json  --output FORMAT=FILE  --assumptions
+  answers   --format text|lines|json|sarif|html|markdown  --output FORMAT=FILE
+            --assumptions
   limits    --steps N  --jobs N  --undecided stop|note  --partial
   comfort   --quiet  --verbose  --timings FILE
 

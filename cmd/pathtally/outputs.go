@@ -13,13 +13,16 @@ import (
 )
 
 // printed are the formats, in the order of the help text.
-var printed = []string{"text", "lines", "json"}
+var printed = []string{"text", "lines", "json", "sarif", "html", "markdown"}
 
 // writers print a run in a format.
 var writers = map[string]func(io.Writer, *report.Run, report.Options) error{
-	"text":  report.Text,
-	"lines": report.Lines,
-	"json":  func(w io.Writer, run *report.Run, _ report.Options) error { return report.JSON(w, run) },
+	"text":     report.Text,
+	"lines":    report.Lines,
+	"json":     func(w io.Writer, run *report.Run, _ report.Options) error { return report.JSON(w, run) },
+	"sarif":    func(w io.Writer, run *report.Run, _ report.Options) error { return report.SARIF(w, run) },
+	"html":     func(w io.Writer, run *report.Run, _ report.Options) error { return report.HTML(w, run) },
+	"markdown": report.Markdown,
 }
 
 // An output is a file that a run writes beside what it prints.

@@ -6,8 +6,6 @@ import (
 	"fmt"
 	"io"
 	"strings"
-
-	"pathtally/properties/judge"
 )
 
 // markdownPaths bounds the paths in a summary: a comment in a merge request has
@@ -18,7 +16,7 @@ const markdownPaths = 10
 // finding, and the paths folded below it.
 func Markdown(w io.Writer, run *Run, opt Options) error {
 	b := bufio.NewWriter(w)
-	findings := run.shown(false)
+	findings := blocks(run.shown(false), false)
 	fmt.Fprintf(b, "**pathtally: %s**\n", Headlined(run))
 	if len(findings) > 0 {
 		b.WriteString("\n| place | what | claim |\n| --- | --- | --- |\n")
@@ -28,7 +26,7 @@ func Markdown(w io.Writer, run *Run, opt Options) error {
 			if f.Advice {
 				advice = "advice: "
 			}
-			fmt.Fprintf(b, "| `%s` | %s%s | `%s/%s:%s` |\n", place(run.Headline(f)), advice, cell(f.Message), f.Rule, f.Claim, f.ID())
+			fmt.Fprintf(b, "| `%s` | %s%s | `%s/%s:%s` |\n", place(run.Headline(&f.Finding)), advice, cell(f.Message), f.Rule, f.Claim, f.ID())
 		}
 	}
 	for i := range findings {
@@ -39,8 +37,8 @@ func Markdown(w io.Writer, run *Run, opt Options) error {
 		f := &findings[i]
 		var p bytes.Buffer
 		pw := bufio.NewWriter(&p)
-		t := &texter{w: pw, opt: Options{Width: 100}, run: run, findings: []judge.Finding{*f}}
-		t.finding(f, nil)
+		t := &texter{w: pw, opt: Options{Width: 100}, run: run}
+		t.finding(f)
 		if err := pw.Flush(); err != nil {
 			return err
 		}

@@ -1,6 +1,7 @@
 package report
 
 import (
+	"slices"
 	"strconv"
 	"strings"
 
@@ -183,4 +184,39 @@ func plural(n int, one, many string) string {
 		return "1 " + one
 	}
 	return thousands(int64(n)) + " " + many
+}
+
+// A block is what a person reads as one: a finding, other claims that the same
+// mistake breaks, and findings that follow from it.
+type block struct {
+	judge.Finding
+	also  []judge.Finding
+	leads []judge.Finding
+}
+
+// blocks puts findings together; with all, each stands for itself.
+func blocks(findings []judge.Finding, all bool) []block {
+	var out []block
+	at := map[string]int{} // fingerprint: the block that holds it
+	for i := 0; i < len(findings); {
+		f := &findings[i]
+		if !all && slices.ContainsFunc(findings, func(g judge.Finding) bool { return g.Fingerprint == f.Follows }) {
+			i++
+			continue
+		}
+		n := i + 1
+		for !all && n < len(findings) && sameMistake(f, &findings[n]) {
+			at[findings[n].Fingerprint] = len(out)
+			n++
+		}
+		at[f.Fingerprint] = len(out)
+		out = append(out, block{Finding: *f, also: findings[i+1 : n]})
+		i = n
+	}
+	for i := range findings {
+		if k, ok := at[findings[i].Follows]; ok {
+			out[k].leads = append(out[k].leads, findings[i])
+		}
+	}
+	return out
 }

@@ -20,22 +20,10 @@ const foldAfter = 14
 // Text prints findings, undecided questions and the closing summary.
 func Text(w io.Writer, run *Run, opt Options) error {
 	b := bufio.NewWriter(w)
-	t := &texter{w: b, opt: opt, run: run, findings: run.shown(opt.Verbose)}
-	for i := 0; i < len(t.findings); {
-		f := &t.findings[i]
-		if !opt.Verbose && slices.ContainsFunc(t.findings, func(g judge.Finding) bool { return g.Fingerprint == f.Follows }) {
-			i++ // one line below the finding that it follows from
-			continue
-		}
-		n := i + 1
-		if !opt.Verbose {
-			for n < len(t.findings) && sameMistake(f, &t.findings[n]) {
-				n++
-			}
-		}
-		t.finding(f, t.findings[i+1:n])
+	t := &texter{w: b, opt: opt, run: run}
+	for _, f := range blocks(run.shown(opt.Verbose), opt.Verbose) {
+		t.finding(&f)
 		t.line("")
-		i = n
 	}
 	for _, g := range grouped(run.openShown(opt.Verbose)) {
 		t.open(g)
@@ -61,8 +49,6 @@ type texter struct {
 	w   *bufio.Writer
 	opt Options
 	run *Run
-
-	findings []judge.Finding // those to print
 }
 
 func (t *texter) line(format string, args ...any) {
@@ -122,8 +108,9 @@ func sameMistake(a, b *judge.Finding) bool {
 		a.Blame.Package == b.Blame.Package && a.Blame.Name == b.Blame.Name && a.Opened.Place == b.Opened.Place
 }
 
-// finding prints f; also lists findings that are the same mistake.
-func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
+// finding prints a block.
+func (t *texter) finding(bl *block) {
+	f := &bl.Finding
 	advice := ""
 	if f.Advice {
 		advice = "advice: "
@@ -175,14 +162,13 @@ func (t *texter) finding(f *judge.Finding, also []judge.Finding) {
 		}
 		label("only in", strings.Join(names, ", "))
 	}
-	for i := range also {
-		o := &also[i]
+	for i := range bl.also {
+		o := &bl.also[i]
 		label("breaks also", fmt.Sprintf("%s/%s:%s, %s: %s", o.Rule, o.Claim, o.ID(), o.Point, o.Formula))
 	}
-	for i := range t.findings {
-		if o := &t.findings[i]; o.Follows == f.Fingerprint {
-			label("leads to", fmt.Sprintf("%s    %s  (%s/%s:%s)", place(o.Cause.Place), o.Message, o.Rule, o.Claim, o.ID()))
-		}
+	for i := range bl.leads {
+		o := &bl.leads[i]
+		label("leads to", fmt.Sprintf("%s    %s  (%s/%s:%s)", place(o.Cause.Place), o.Message, o.Rule, o.Claim, o.ID()))
 	}
 	if f.Root.Name != f.Blame.Name || f.Root.Package != f.Blame.Package {
 		from := f.Root.Name
