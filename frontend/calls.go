@@ -917,7 +917,10 @@ func (m *Model) kill(fr *frame, site ssa.CallInstruction) {
 // overwrite places, hand the instance on, panic, or not come back.
 func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pds.Rule) ([]pds.Rule, bool) {
 	sum := m.sh.effectsAt(c)
-	ex := sum.Exits()
+	ex := m.sh.exitsAt(c)
+	if len(targets) == 0 && c.Call.StaticCallee() == nil {
+		ex |= effects.Returns // nothing in sight implements it; something will
+	}
 	n := len(dst)
 	if ex&effects.Panics != 0 && (m.panicMatters[fr.fi.fn] || ex&effects.Returns == 0) {
 		p := fr.clone()
@@ -932,10 +935,17 @@ func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pd
 	if ex&effects.Returns == 0 {
 		return dst, true
 	}
+	mends := m.mayMend(fr, c, targets)
 	m.pass(fr, c, sum)
 	m.kill(fr, c)
 	m.define(fr, c)
 	m.results(fr, c, sum)
+	if mends != 0 {
+		fr.i++
+		r := m.goTo(fr, m.label(label{kind: lblCall, instr: c}))
+		r.DoubtEffect, r.Doubt = mends, m.doubtAbout(c, "dynamic call", "runs code that nothing in sight names; it may count on what it is handed")
+		return append(dst, r), true
+	}
 	if out, done := m.bornAt(fr, c, dst, fr.i+1); done {
 		return out, true
 	}
@@ -944,6 +954,77 @@ func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pd
 		return append(dst, m.goTo(fr, 0)), true
 	}
 	return nil, false
+}
+
+// mayMend gives what a call of unknown code counts if it does to the instance
+// what is still missing, 0 if it cannot: nothing says what it runs, and it is
+// handed the instance under a type that allows the missing event.
+func (m *Model) mayMend(fr *frame, c *ssa.Call, targets []*ssa.Function) pds.EffectID {
+	if fr.ns.phase != born || len(targets) > 0 || c.Call.StaticCallee() != nil {
+		return 0
+	}
+	sig := c.Call.Signature().Params()
+	v := make([]int64, len(m.rule.Counts))
+	any := false
+	for i, a := range c.Call.Args {
+		if i >= sig.Len() || !fr.ns.has(m.x.name(a)) {
+			continue
+		}
+		t := sig.At(i).Type()
+		for k := range m.rule.Events {
+			e := &m.rule.Events[k]
+			if e.Count < 0 || v[e.Count] != 0 || !m.closes(e) || !allows(t, e) {
+				continue
+			}
+			v[e.Count], any = e.Weight, true
+		}
+	}
+	if !any {
+		return 0
+	}
+	return m.effect(v)
+}
+
+// closes tells whether an event about an instance is a release, a close: the
+// first linear claim of the rule has it on the lighter side of a question that
+// an earlier count weighs down.
+func (m *Model) closes(e *properties.EventMatch) bool {
+	if givesInstance(e) {
+		return false
+	}
+	for i := range m.rule.Claims {
+		c := &m.rule.Claims[i]
+		if !c.Linear {
+			continue
+		}
+		for _, q := range c.Questions {
+			first := slices.IndexFunc(q.Weights, func(w int64) bool { return w != 0 })
+			if first >= 0 && q.Weights[first] > 0 && q.Weights[e.Count]*e.Weight < 0 {
+				return true
+			}
+		}
+		return false
+	}
+	return false
+}
+
+// allows tells whether the event can be done to a value of type t.
+func allows(t types.Type, e *properties.EventMatch) bool {
+	if e.CallsInstance {
+		_, ok := t.Underlying().(*types.Signature)
+		return ok
+	}
+	if _, ok := e.On.(properties.PatInstance); !ok {
+		return true
+	}
+	for _, c := range e.Callees {
+		if obj, _, _ := types.LookupFieldOrMethod(t, true, c.Obj.Pkg(), c.Obj.Name()); obj != nil {
+			if _, ok := obj.(*types.Func); ok {
+				return true
+			}
+		}
+	}
+	return false
 }
 
 // pass: a call that is not followed may hand the instance on.
@@ -1311,7 +1392,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 		return dst
 	}
 	sum := m.sh.effectsAt(d)
-	ex := sum.Exits()
+	ex := m.sh.exitsAt(d)
 	m.pass(fr, d, sum)
 	m.kill(fr, d)
 	if ex&effects.Panics != 0 && (m.panicMatters[fi.fn] || ex&effects.Returns == 0) {

@@ -63,6 +63,10 @@ func (m *Model) label(l label) pds.LabelID {
 }
 
 func (m *Model) doubt(i ssa.Instruction, text string) pds.DoubtID {
+	return m.doubtAbout(i, "alias", text)
+}
+
+func (m *Model) doubtAbout(i ssa.Instruction, kind, text string) pds.DoubtID {
 	k := doubtKey{i, text}
 	if id, ok := m.doubtID[k]; ok {
 		return id
@@ -72,7 +76,7 @@ func (m *Model) doubt(i ssa.Instruction, text string) pds.DoubtID {
 	if c, ok := i.(ssa.CallInstruction); ok {
 		what = m.callText(c)
 	}
-	m.doubts = append(m.doubts, properties.Note{Kind: "alias", Place: m.place(i.Pos(), i), Text: what + " " + text})
+	m.doubts = append(m.doubts, properties.Note{Kind: kind, Place: m.place(i.Pos(), i), Text: what + " " + text})
 	m.doubtID[k] = id
 	return id
 }
