@@ -17,6 +17,7 @@ type fnInfo struct {
 
 	events   bool // an event of the rule stands in its body
 	cone     bool // it reaches an event (over the call graph and its closures)
+	near     bool             // it reaches an event by calls that name their callee: its facts are passed on
 	births   map[ssa.Value][]birth
 	bearing  bool          // an instance can be born in its cone
 	direct   bool          // an instance can be born in its own body
@@ -78,7 +79,7 @@ func (m *Model) buildCone() {
 		s := m.siteShape(site)
 		for _, mt := range m.matchEvents(s) {
 			fi := m.info(fn)
-			fi.events, fi.cone = true, true
+			fi.events, fi.cone, fi.near = true, true, true
 			if mt.birth >= 0 {
 				fi.bearing, fi.direct = true, true
 			}
@@ -110,6 +111,9 @@ func (m *Model) buildCone() {
 			g := m.info(c.fn)
 			changed := !g.cone || fi.bearing && !g.bearing
 			g.cone = true
+			if fi.near && !g.near && (c.site == nil || c.site.Common().StaticCallee() != nil || len(m.sh.targets[c.site]) == 1) {
+				g.near, changed = true, true
+			}
 			g.bearing = g.bearing || fi.bearing
 			for _, u := range fi.subjList {
 				for _, o := range m.translate(g, u, c, fi.fn) {
@@ -290,6 +294,9 @@ func (m *Model) originsOf(fi *fnInfo, v ssa.Value, seen map[ssa.Value]bool) []or
 		})
 	case *ssa.Field:
 		f := structField(v.X.Type(), v.Field)
+		if out, ok := m.partOrigins(fi, v, f, seen); ok {
+			return out
+		}
 		return m.mapOrigins(m.originsOf(fi, v.X, seen), func(o origin) origin {
 			return origin{x.fieldVal(o.s, f), x.fieldVal(o.n, f), o.b}
 		})
@@ -434,6 +441,24 @@ func (m *Model) loadOrigin(fi *fnInfo, out []origin, o origin, v *ssa.UnOp, seen
 		}
 	}
 	return append(out, r)
+}
+
+// partOrigins gives the origins of a field of a struct that was loaded from a
+// local variable whose field is stored to in sight; ok is false for any other.
+func (m *Model) partOrigins(fi *fnInfo, v *ssa.Field, f *types.Var, seen map[ssa.Value]bool) (out []origin, ok bool) {
+	load, isLoad := v.X.(*ssa.UnOp)
+	if !isLoad || load.Op != token.MUL {
+		return nil, false
+	}
+	a, isAlloc := load.X.(*ssa.Alloc)
+	if !isAlloc {
+		return nil, false
+	}
+	vals := m.storesOf(fi)[m.x.field(m.x.reg(a), f)]
+	for _, val := range vals {
+		out = append(out, m.originsOf(fi, val, seen)...)
+	}
+	return clip(out), len(vals) > 0
 }
 
 // structOrigins appends the origins of a load from the address o in a local

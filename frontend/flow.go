@@ -62,7 +62,7 @@ func (m *Model) buildFlows() {
 		grew := false
 		for i := len(m.fns) - 1; i >= 0; i-- {
 			fi := m.fns[i]
-			if m.isEventFunc(fi.fn) || !fi.cone && (fi.flow == nil || len(fi.flow.after) == 0) {
+			if m.isEventFunc(fi.fn) || !fi.near && (fi.flow == nil || len(fi.flow.after) == 0) {
 				continue
 			}
 			before, known := 0, fi.flow != nil
@@ -134,7 +134,7 @@ func (m *Model) tracked(caller, g *ssa.Function) bool {
 	if g.Blocks == nil || m.isEventFunc(g) {
 		return false
 	}
-	if gi, ok := m.fnOf[g]; ok && gi.cone {
+	if gi, ok := m.fnOf[g]; ok && gi.near {
 		return true
 	}
 	if g.Parent() == caller {
@@ -374,7 +374,7 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 		return false
 	}
 	sum := m.sh.effectsAt(c)
-	ex := sum.Exits()
+	ex := m.sh.exitsAt(c)
 	if ex&effects.Returns == 0 || ex&(effects.Goexits|effects.ExitsAll) != 0 && ex&effects.Returns == 0 {
 		return false
 	}
@@ -723,7 +723,7 @@ func (m *Model) callKeys(site ssa.CallInstruction, b *ssa.BasicBlock, ask func(E
 	}
 	for _, g := range m.sh.targets[site] {
 		gi, ok := m.fnOf[g]
-		if !ok || !gi.cone || m.isEventFunc(g) || g.Blocks == nil {
+		if !ok || !gi.near || m.isEventFunc(g) || g.Blocks == nil {
 			continue
 		}
 		_, deferred := site.(*ssa.Defer)

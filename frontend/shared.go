@@ -420,3 +420,15 @@ func (sh *Shared) boundary(fn *ssa.Function) bool {
 	obj := funcObject(fn)
 	return obj != nil && sh.events[obj]
 }
+
+// exitsAt is how a call may go on. One of which nobody in sight is a candidate
+// runs code out of sight: it comes back.
+func (sh *Shared) exitsAt(site ssa.CallInstruction) effects.Exit {
+	ex := sh.effectsAt(site).Exits()
+	if ex&effects.Returns == 0 && site.Common().StaticCallee() == nil {
+		if all, _ := sh.resolver.Callees(site); len(all) == 0 {
+			ex |= effects.Returns
+		}
+	}
+	return ex
+}
