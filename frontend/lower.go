@@ -1052,6 +1052,22 @@ func (m *Model) outcome(st *state, fr *frame, results []ssa.Value) {
 // overwrites tells whether a call summarised by sum may store to the place.
 // addr is written over the frame of fn; nil if that is not known.
 func (m *Model) overwrites(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
+	k := writeKey{sum, addr, fn}
+	w, ok := m.writes[k]
+	if !ok {
+		w = m.overwritesNew(sum, addr, fn)
+		m.writes[k] = w
+	}
+	return w
+}
+
+type writeKey struct {
+	sum  *effects.Summary
+	addr Expr
+	fn   *ssa.Function
+}
+
+func (m *Model) overwritesNew(sum *effects.Summary, addr Expr, fn *ssa.Function) bool {
 	n := m.x.nodes[addr]
 	switch n.kind {
 	case kField:

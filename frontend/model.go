@@ -48,6 +48,7 @@ type Model struct {
 	notes   noteSet
 
 	units    unitQueue
+	writes   map[writeKey]bool
 	factsets map[symbol]int         // symbols by everything but their facts
 	visited  map[*ssa.Function]bool // functions whose code the exploration entered
 	funcIDs  map[*ssa.Function]int
@@ -143,6 +144,7 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		doubtID:     map[doubtKey]pds.DoubtID{},
 		visited:     map[*ssa.Function]bool{},
 		factsets:    map[symbol]int{},
+		writes:      map[writeKey]bool{},
 		funcIDs:     map[*ssa.Function]int{},
 	}
 	m.symbols = append(m.symbols, symbol{})
