@@ -393,7 +393,7 @@ func (p *page) chart(f *judge.Finding, id string) {
 	top := max(greatest(f, steps), 1)
 	x := func(i int) float64 { return left + float64(i)*(w-left-right)/float64(max(len(steps)-1, 1)) }
 	y := func(v int64) float64 { return h - 24 - float64(v)*(h-24-upTo)/float64(top) }
-	p.out("<figure><svg class=\"chart\" viewBox=\"0 0 %s %s\" role=\"img\" aria-label=\"%s\">\n", num(w), num(h), esc("counts along the path; at the end "+finalCounts(f)))
+	p.out("<figure><svg class=\"chart\" width=\"%s\" height=\"%s\" viewBox=\"0 0 %s %s\" role=\"img\" aria-label=\"%s\">\n", num(w), num(h), num(w), num(h), esc("counts along the path; at the end "+finalCounts(f)))
 	always := !strings.HasPrefix(f.Point, "at ")
 	half := (w - left - right) / float64(max(len(steps)-1, 1)) / 2
 	for i, r := range steps {
@@ -419,7 +419,7 @@ func (p *page) chart(f *judge.Finding, id string) {
 	for i, r := range steps {
 		s := &f.Path[r.step]
 		for k := range f.CountNames {
-			if i == len(steps)-1 || (s.Changed && (r.step == 0 || s.Counts[k] != f.Path[r.step-1].Counts[k])) {
+			if i == len(steps)-1 || changedAt(f, r.step, k) {
 				p.mark(k, x(i), y(s.Counts[k])-float64(k%palette)*1.5, 4)
 			}
 		}
@@ -440,6 +440,15 @@ func (p *page) chart(f *judge.Finding, id string) {
 		p.out("<span class=\"false\">%s</span>", esc(f.Fact))
 	}
 	p.out("</figcaption></figure>\n")
+}
+
+// changedAt says that a step changed a count.
+func changedAt(f *judge.Finding, step, k int) bool {
+	var before int64
+	if step > 0 {
+		before = f.Path[step-1].Counts[k]
+	}
+	return f.Path[step].Counts[k] != before
 }
 
 // table says what the pictures show.
@@ -466,7 +475,7 @@ func (p *page) table(f *judge.Finding, id string) {
 		p.out("<tr%s id=\"%s-t%d\"><td>%d</td><td>%s</td><td style=\"padding-left:%dem\">%s</td><td><code>%s</code></td>", class, id, r.step+1, r.step+1, line, 1+min(s.Depth, 6), esc(short(s.Function)), esc(s.Text))
 		for k := range f.CountNames {
 			changed := ""
-			if s.Changed && (r.step == 0 || s.Counts[k] != f.Path[r.step-1].Counts[k]) {
+			if changedAt(f, r.step, k) {
 				changed = " class=\"changed\""
 			}
 			p.out("<td%s>%d</td>", changed, s.Counts[k])
