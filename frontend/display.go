@@ -224,7 +224,7 @@ func (m *Model) Step(id pds.LabelID) properties.Step {
 	case lblBirth:
 		st.Kind, st.Text = properties.StepCall, m.lineText(l.instr)
 	case lblDeferredEvent:
-		st.Kind, st.Text = properties.StepEvent, "deferred: "+m.callText(l.instr.(ssa.CallInstruction))
+		st.Kind, st.Text = properties.StepEvent, "the deferred "+m.callText(l.instr.(ssa.CallInstruction))
 	case lblTrue, lblFalse:
 		st.Kind = properties.StepBranch
 		m.branchStep(&st, l.instr.(*ssa.If), l.kind == lblTrue)

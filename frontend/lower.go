@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"go/token"
 	"go/types"
+	"slices"
 
 	"golang.org/x/tools/go/ssa"
 
@@ -847,9 +848,18 @@ func turns(from, to *ssa.BasicBlock) bool {
 // the loop lose what the turn has made.
 func (m *Model) follow(fr *frame, side int, dst []pds.Rule) ([]pds.Rule, bool) {
 	from, to := fr.b, fr.b.Succs[side]
+	before := fr.ns.names
 	m.edge(fr, from, to)
-	if fr.ns.phase != born || !turns(from, to) {
+	if fr.ns.phase != born {
 		return nil, false
+	}
+	if !turns(from, to) {
+		by := m.replacedBy(before, from, to)
+		if by == nil || !m.allDead(fr) {
+			return nil, false
+		}
+		fr.ns.names = nil
+		return append(dst, m.goTo(fr, m.label(label{kind: lblLost, instr: by}))), true
 	}
 	l := label{kind: lblTurn, instr: from.Instrs[len(from.Instrs)-1], side: int8(side)}
 	if m.allDead(fr) {
@@ -859,6 +869,36 @@ func (m *Model) follow(fr *frame, side int, dst []pds.Rule) ([]pds.Rule, bool) {
 		return nil, false // shown where the body ended
 	}
 	return append(dst, m.goTo(fr, m.label(l))), true
+}
+
+// replacedBy finds the assignment that put something else into the variable
+// that one of the names was: on other ways to block `to` it still is. nil if
+// there is none.
+func (m *Model) replacedBy(names []Expr, from, to *ssa.BasicBlock) ssa.Instruction {
+	pred := slices.Index(to.Preds, from)
+	for _, instr := range to.Instrs {
+		phi, ok := instr.(*ssa.Phi)
+		if !ok {
+			break
+		}
+		for _, e := range names {
+			for k, v := range phi.Edges {
+				if k == pred || v == phi.Edges[pred] || m.x.name(v) != e {
+					continue
+				}
+				switch now := phi.Edges[pred].(type) {
+				case *ssa.Extract:
+					return now.Tuple.(ssa.Instruction)
+				case ssa.Instruction:
+					if _, phi := now.(*ssa.Phi); !phi {
+						return now
+					}
+				}
+				return from.Instrs[len(from.Instrs)-1]
+			}
+		}
+	}
+	return nil
 }
 
 // allDead tells whether every name of the instance is rooted in a register that
