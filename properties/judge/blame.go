@@ -99,6 +99,9 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 			}
 		}
 	}
+	if found, stop := j.causeInSpawned(s, a, bound, t, b); stop != nil || found {
+		return b, stop
+	}
 	if !opens(w) && b.opening >= 0 {
 		b.cause, b.kind = b.opened, properties.StepEvent
 	} else {
@@ -112,6 +115,44 @@ func (j *judge) blame(s *properties.Start, a ask, bound int64, t *trace, by leav
 		b.maskMove(t, last)
 	}
 	return b, nil
+}
+
+// causeInSpawned blames a fork in work that the blamed function (or a call of
+// it) spawned, if the other side had made the counts right.
+func (j *judge) causeInSpawned(s *properties.Start, a ask, bound int64, t *trace, b *blamed) (found bool, stop *stopped) {
+	w := a.weights
+	for i := len(t.moves) - 1; i >= 0; i-- {
+		mv := &t.moves[i]
+		if len(mv.spawned) == 0 || !t.inside(mv.act, b.act) {
+			continue
+		}
+		for k, head := range mv.rule.Spawn {
+			sub, err := replay(j.m, head, t.choices[i].Spawned[k])
+			if err != nil {
+				j.bug("replaying spawned work", s, err.Error())
+			}
+			inner := ask{start: head, weights: w, stops: pds.MarkLoss, mend: a.mend, accept: func(pds.StateID) bool { return true }}
+			// What the rest of the path leaves for this piece of work.
+			room := bound - (dot(w, t.total()) - dot(w, sub.total()))
+			for at := len(sub.moves) - 1; at >= 0; at-- {
+				rules := j.m.Rules(sub.moves[at].head, nil)
+				for r := range rules {
+					if r == sub.choices[at].Rule {
+						continue
+					}
+					least, stop := j.s.beside(inner, sub, at, r)
+					if stop != nil {
+						return false, stop
+					}
+					if !least.none && (least.infinite || least.n <= room) {
+						j.causeAtFork(w, sub, at, r, b)
+						return true, nil
+					}
+				}
+			}
+		}
+	}
+	return false, nil
 }
 
 // decides says whether a fork of activation act can be what loses the instance
