@@ -19,6 +19,8 @@ type flowInfo struct {
 	keys   map[Expr]bits     // facts of interest -> blocks at whose start something later asks for them
 	entry  []Expr            // keys that speak of parameters, captures and globals, in a fixed order
 	inLoop []bool            // by block index
+	inert  []bool            // by block index: bears on nothing
+	pdom   []int             // by block index: immediate postdominator, -1 if none
 	uses   map[ssa.Value][]int
 	pinned map[ssa.Value]bool
 	live   map[ssa.Value]bits
@@ -223,11 +225,14 @@ func (m *Model) buildFlow(fi *fnInfo) {
 		f.inLoop = loopBlocks(fn)
 		f.findUses()
 	}
-	inert := make([]bool, n)
-	for i, b := range fn.Blocks {
-		inert[i] = m.inertBlock(fi, b)
+	if f.inert == nil {
+		f.inert = make([]bool, n)
+		for i, b := range fn.Blocks {
+			f.inert[i] = m.inertBlock(fi, b)
+		}
+		f.pdom = postDominators(fn)
 	}
-	pdom := postDominators(fn)
+	inert, pdom := f.inert, f.pdom
 	// The branches that bear on something make keys; a key at a φ makes the
 	// branch before it bear on something: until nothing changes.
 	for round := 0; ; round++ {
@@ -400,12 +405,7 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 	if c.Call.IsInvoke() && m.carries(c.Call.Value.Type()) && m.rule.Moves {
 		return false
 	}
-	for _, v := range m.askedFieldList {
-		if sum.MayOverwriteField(v) {
-			return false
-		}
-	}
-	return true
+	return !m.writesAsked(sum)
 }
 
 // askedPlace tells whether facts or names read the place somewhere.
@@ -1037,4 +1037,23 @@ func (f *flowInfo) liveAt(v ssa.Value, b *ssa.BasicBlock) bool {
 		f.live[v] = l
 	}
 	return l.has(b.Index)
+}
+
+// writesAsked tells whether a call summarised by sum may store to a field that
+// anything of the cone asks about.
+func (m *Model) writesAsked(sum *effects.Summary) bool {
+	if !sum.Writes() {
+		return false
+	}
+	w, ok := m.askedWrites[sum]
+	if !ok {
+		for _, v := range m.askedFieldList {
+			if sum.MayOverwriteField(v) {
+				w = true
+				break
+			}
+		}
+		m.askedWrites[sum] = w
+	}
+	return w
 }

@@ -6,6 +6,7 @@ import (
 
 	"golang.org/x/tools/go/ssa"
 
+	"pathtally/frontend/effects"
 	"pathtally/pds"
 	"pathtally/properties"
 )
@@ -47,11 +48,12 @@ type Model struct {
 	doubtID map[doubtKey]pds.DoubtID
 	notes   noteSet
 
-	units    unitQueue
-	writes   map[writeKey]bool
-	factsets map[symbol]int         // symbols by everything but their facts
-	visited  map[*ssa.Function]bool // functions whose code the exploration entered
-	funcIDs  map[*ssa.Function]int
+	units       unitQueue
+	writes      map[writeKey]bool
+	askedWrites map[*effects.Summary]bool
+	factsets    map[symbol]int         // symbols by everything but their facts
+	visited     map[*ssa.Function]bool // functions whose code the exploration entered
+	funcIDs     map[*ssa.Function]int
 }
 
 type symKind uint8
@@ -145,6 +147,7 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		visited:     map[*ssa.Function]bool{},
 		factsets:    map[symbol]int{},
 		writes:      map[writeKey]bool{},
+		askedWrites: map[*effects.Summary]bool{},
 		funcIDs:     map[*ssa.Function]int{},
 	}
 	m.symbols = append(m.symbols, symbol{})
