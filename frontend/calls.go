@@ -71,6 +71,9 @@ func (m *Model) linkFree(l *link, i int) Expr {
 		return 0
 	}
 	if l.closure != 0 {
+		if fv := m.sh.sameCapture(l.site, l.fi.fn, i); fv != nil && !l.callback {
+			return m.x.name(fv)
+		}
 		return m.x.capt(l.closure, i)
 	}
 	return 0
@@ -78,7 +81,7 @@ func (m *Model) linkFree(l *link, i int) Expr {
 
 // captured is linkFree for names of the instance.
 func (m *Model) captured(l *link, i int) Expr {
-	if l.made == nil && l.closure != 0 {
+	if l.made == nil && l.closure != 0 && (l.callback || m.sh.sameCapture(l.site, l.fi.fn, i) == nil) {
 		return m.x.captOf(l.closure, i, l.fi.fn)
 	}
 	return m.linkFree(l, i)

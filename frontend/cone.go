@@ -551,6 +551,9 @@ func (m *Model) translate(g *fnInfo, u Expr, c caller, callee *ssa.Function) []o
 			if c.site == nil || c.site.Common().IsInvoke() || c.site.Common().StaticCallee() != nil {
 				return nil
 			}
+			if fv := m.sh.sameCapture(c.site, callee, int(n.n)); fv != nil {
+				return m.origins(g, fv)
+			}
 			var out []origin
 			for _, o := range m.origins(g, c.site.Common().Value) {
 				if o.b == nil { // else it was captured where it has a name of its own

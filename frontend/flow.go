@@ -781,6 +781,9 @@ func (m *Model) toCaller(k Expr, site ssa.CallInstruction, callee *ssa.Function,
 			}
 			return nil
 		}
+		if fv := m.sh.sameCapture(site, callee, int(n.n)); fv != nil {
+			return one(m.x.name(fv))
+		}
 		if site.Common().StaticCallee() == nil && !site.Common().IsInvoke() {
 			return one(m.x.capt(m.x.name(site.Common().Value), int(n.n)))
 		}

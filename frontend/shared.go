@@ -432,3 +432,52 @@ func (sh *Shared) exitsAt(site ssa.CallInstruction) effects.Exit {
 	}
 	return ex
 }
+
+// sameCapture finds, for a closure that calls g by a variable that both of them
+// were made beside (a recursive closure calls itself so), the captured variable
+// of the caller that is captured variable i of g; nil if there is none.
+func (sh *Shared) sameCapture(site ssa.CallInstruction, g *ssa.Function, i int) *ssa.FreeVar {
+	f := site.Parent()
+	load, ok := site.Common().Value.(*ssa.UnOp)
+	if !ok || f.Parent() == nil || g.Parent() != f.Parent() {
+		return nil
+	}
+	fv, ok := load.X.(*ssa.FreeVar)
+	if !ok {
+		return nil
+	}
+	mf, mg := sh.madeOnce(f), sh.madeOnce(g)
+	k := slices.Index(f.FreeVars, fv)
+	if mf == nil || mg == nil || k < 0 || i >= len(mg.Bindings) {
+		return nil
+	}
+	// The variable holds nothing but g.
+	cell, ok := mf.Bindings[k].(*ssa.Alloc)
+	if !ok {
+		return nil
+	}
+	for _, r := range *cell.Referrers() {
+		if st, ok := r.(*ssa.Store); ok && st.Addr == cell && st.Val != mg {
+			return nil
+		}
+	}
+	if j := slices.Index(mf.Bindings, mg.Bindings[i]); j >= 0 {
+		return f.FreeVars[j]
+	}
+	return nil
+}
+
+// madeOnce is the only place that makes a closure of fn; nil if there are several.
+func (sh *Shared) madeOnce(fn *ssa.Function) *ssa.MakeClosure {
+	var made *ssa.MakeClosure
+	for _, c := range sh.callers[fn] {
+		if c.site != nil || c.made == nil || c.made == made {
+			continue
+		}
+		if made != nil {
+			return nil
+		}
+		made = c.made
+	}
+	return made
+}
