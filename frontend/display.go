@@ -411,12 +411,26 @@ func (m *Model) branchStep(st *properties.Step, i *ssa.If, truth bool) {
 			return
 		}
 	}
-	if !pos.IsValid() {
-		if n := m.ifAround(i, truth); n != nil {
-			st.Place = m.at(n.Pos())
-			st.Text = m.verdict(n, truth)
+	if i.Block().Succs[0].Comment == "rangeint.body" {
+		if rs := m.loopOf(i); rs != nil {
+			st.Place, st.Text = m.at(rs.Pos()), "the loop ends"
+			if truth {
+				st.Text = "the loop takes the next turn"
+			}
 			return
 		}
+	}
+	if m.selectStep(st, cond, truth) {
+		return
+	}
+	if !pos.IsValid() || !m.inCondition(pos) {
+		if n, holds := m.ifAround(i, truth); n != nil {
+			st.Place = m.at(n.Pos())
+			st.Text = m.verdict(n, holds)
+			return
+		}
+	}
+	if !pos.IsValid() {
 		st.Text = m.ssaCond(cond, truth)
 		return
 	}
@@ -463,6 +477,28 @@ done:
 	}
 	st.Place = m.at(best.Pos())
 	st.Text = m.verdict(best, truth)
+}
+
+// inCondition tells whether pos lies in the condition of a statement, or in an
+// expression that branches itself, not in a statement before it.
+func (m *Model) inCondition(pos token.Pos) bool {
+	for _, n := range m.enclosing(pos) {
+		switch n := n.(type) {
+		case *ast.IfStmt:
+			return pos >= n.Cond.Pos() && pos < n.Cond.End()
+		case *ast.ForStmt:
+			return n.Cond != nil && pos >= n.Cond.Pos() && pos < n.Cond.End()
+		case *ast.CaseClause, *ast.SwitchStmt, *ast.TypeSwitchStmt:
+			return true
+		case *ast.BinaryExpr:
+			if n.Op == token.LAND || n.Op == token.LOR {
+				return true
+			}
+		case ast.Stmt:
+			return false
+		}
+	}
+	return false
 }
 
 func (m *Model) verdict(n ast.Node, truth bool) string {
@@ -598,10 +634,42 @@ func (m *Model) loopOf(i *ssa.If) *ast.RangeStmt {
 	return nil
 }
 
-// ifAround finds the condition of the if statement whose body a true branch
-// enters, when the condition itself has no place (a parameter, a φ).
-func (m *Model) ifAround(i *ssa.If, truth bool) ast.Expr {
-	b := i.Block().Succs[0]
+// ifAround finds the condition of the if or for statement that the branch i
+// stands for, when the condition itself does not show it (a parameter, a φ, a
+// value that was computed earlier), with the truth that the source's condition
+// has on the given side; nil if it cannot be told.
+func (m *Model) ifAround(i *ssa.If, truth bool) (ast.Expr, bool) {
+	for side, b := range i.Block().Succs {
+		cond := m.bodyOf(b)
+		if cond == nil {
+			continue
+		}
+		// The body stands behind the side on which the source's condition is true.
+		holds := truth == (side == 0)
+		for {
+			u, ok := cond.(*ast.UnaryExpr)
+			if !ok || u.Op != token.NOT {
+				break
+			}
+			cond, holds = u.X, !holds
+		}
+		switch cond.(type) {
+		case *ast.Ident, *ast.SelectorExpr, *ast.CallExpr, *ast.IndexExpr, *ast.StarExpr:
+			return cond, holds
+		case *ast.BinaryExpr:
+			if _, ok := i.Cond.(*ssa.BinOp); ok {
+				return simpleCond(cond), holds
+			}
+		}
+	}
+	return nil, false
+}
+
+// bodyOf is the condition of the statement whose body block b starts.
+func (m *Model) bodyOf(b *ssa.BasicBlock) ast.Expr {
+	if len(b.Preds) != 1 {
+		return nil
+	}
 	for _, instr := range b.Instrs {
 		p := bodyPos(instr)
 		if !p.IsValid() {
@@ -611,20 +679,47 @@ func (m *Model) ifAround(i *ssa.If, truth bool) ast.Expr {
 			switch s := n.(type) {
 			case *ast.IfStmt:
 				if p >= s.Body.Pos() && p < s.Body.End() {
-					return simpleCond(s.Cond)
+					return s.Cond
 				}
 				return nil
 			case *ast.ForStmt:
 				if s.Cond != nil && p >= s.Body.Pos() && p < s.Body.End() {
-					return simpleCond(s.Cond)
+					return s.Cond
 				}
 				return nil
-			case *ast.FuncLit, *ast.FuncDecl:
+			case *ast.RangeStmt, *ast.CaseClause, *ast.CommClause, *ast.FuncLit, *ast.FuncDecl:
 				return nil
 			}
 		}
 	}
 	return nil
+}
+
+// selectStep shows which case of a select was chosen.
+func (m *Model) selectStep(st *properties.Step, cond ssa.Value, truth bool) bool {
+	b, ok := cond.(*ssa.BinOp)
+	if !ok || b.Op != token.EQL {
+		return false
+	}
+	x, ok := b.X.(*ssa.Extract)
+	k, isConst := b.Y.(*ssa.Const)
+	if !ok || !isConst || x.Index != 0 {
+		return false
+	}
+	sel, ok := x.Tuple.(*ssa.Select)
+	if !ok || k.Int64() < 0 || k.Int64() >= int64(len(sel.States)) {
+		return false
+	}
+	for _, n := range m.enclosing(sel.States[k.Int64()].Pos) {
+		if cc, ok := n.(*ast.CommClause); ok && cc.Comm != nil {
+			st.Place, st.Text = m.at(cc.Pos()), "case "+m.nodeText(cc.Comm)
+			if !truth {
+				st.Text = "another case than " + m.nodeText(cc.Comm)
+			}
+			return true
+		}
+	}
+	return false
 }
 
 func simpleCond(e ast.Expr) ast.Expr {
