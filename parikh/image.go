@@ -58,7 +58,8 @@ type Image struct {
 	r   *reduced
 	opt Options
 	*flow
-	counts []lia.Var // by count
+	counts []lia.Var    // by count
+	circ   *circulation // made when first needed
 }
 
 // New makes the image of a grammar.
@@ -67,7 +68,7 @@ func New(g *Grammar, opt Options) *Image {
 		opt.MaxCuts = 50
 	}
 	im := &Image{g: g, r: reduce(g, opt.Plain), opt: opt}
-	im.flow = newFlow(im.r, opt, []int32{0})
+	im.flow = newFlow(im.r, opt, []int32{0}, true)
 	s := im.flow.s
 	if im.r.empty {
 		s.Assert("empty", lia.False())
@@ -184,9 +185,10 @@ type flow struct {
 	isIn    [][]int32
 }
 
-// newFlow makes the flow of derivations from nonterminal 0 (roots = {0}); without
-// roots, that of circulations, which says nothing about connectivity.
-func newFlow(r *reduced, opt Options, roots []int32) *flow {
+// newFlow makes the flow of derivations from nonterminal 0 (roots = {0}, derive),
+// or that of circulations, which hang on some of the roots; without roots it says
+// nothing about connectivity.
+func newFlow(r *reduced, opt Options, roots []int32, derive bool) *flow {
 	f := &flow{r: r, opt: opt, s: lia.New(opt.Solver), roots: roots}
 	f.start = make([]int32, r.numNT+1)
 	for i := range r.prods {
@@ -212,7 +214,7 @@ func newFlow(r *reduced, opt Options, roots []int32) *flow {
 	}
 	for a := range in {
 		extra := lia.Const(0)
-		if a == 0 && roots != nil {
+		if a == 0 && derive {
 			extra = lia.Const(1)
 		}
 		if !r.empty {
