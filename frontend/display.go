@@ -260,7 +260,20 @@ func (m *Model) Step(id pds.LabelID) properties.Step {
 	case lblLost:
 		st.Kind, st.Text = properties.StepEnd, "nothing refers to it any more"
 	}
+	if st.Text == "" {
+		st.Text = strings.TrimSpace(m.sh.prog.SourceLine(m.posOf(l.instr)))
+	}
+	if st.Text == "" {
+		st.Text = "in " + st.Func.Name
+	}
 	return st
+}
+
+func (m *Model) posOf(i ssa.Instruction) token.Pos {
+	if p := i.Pos(); p.IsValid() {
+		return p
+	}
+	return i.Parent().Pos()
 }
 
 func (m *Model) callPos(c ssa.CallInstruction) token.Pos {

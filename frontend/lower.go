@@ -148,7 +148,9 @@ func (m *Model) walk(fr *frame, dst []pds.Rule) []pds.Rule {
 			}
 		}
 		if blocks++; blocks > limit {
-			return dst // runs in a circle in which nothing happens
+			// A long way in which nothing happens, or a circle: then the steps
+			// meet a point that was there before.
+			return append(dst, m.goTo(fr, 0))
 		}
 		if len(fr.b.Instrs) == 0 {
 			return dst
