@@ -985,7 +985,9 @@ func (m *Model) skip(fr *frame, b, j *ssa.BasicBlock) {
 func (m *Model) ret(fr *frame, r *ssa.Return) pds.Rule {
 	st := m.exitState(fr, properties.ExitReturn, r.Results)
 	rule := pds.Rule{Kind: pds.Pop, State: m.state(st)}
-	if !runsDefers(fr.b) { // else the return was shown before the deferred calls ran
+	// With deferred calls the return was shown before they ran; the end of a
+	// package's initialisation stands nowhere.
+	if !runsDefers(fr.b) && (r.Pos().IsValid() || fr.fi.fn.Syntax() != nil) {
 		rule.Label = m.label(label{kind: lblReturn, instr: r})
 	}
 	return rule
