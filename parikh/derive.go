@@ -58,14 +58,14 @@ type pending struct {
 }
 
 type deriver struct {
-	d      *Derivation
-	by     [][]ProdID
-	rem    []*big.Int // by production: how often still to use
-	pend   [][]pending
-	owed   []*big.Int // by nonterminal: sum over pend
-	place  []int      // by nonterminal: a group with an occurrence that has a production; -1
-	rank   []int      // by nonterminal; -1: no way to an end
-	best   []ProdID
+	d     *Derivation
+	by    [][]ProdID
+	rem   []*big.Int // by production: how often still to use
+	pend  [][]pending
+	owed  []*big.Int // by nonterminal: sum over pend
+	place []int      // by nonterminal: a group with an occurrence that has a production; -1
+	rank  []int      // by nonterminal; -1: no way to an end
+	best  []ProdID
 }
 
 // Derive rebuilds a derivation of g that uses each production y[p] times. The

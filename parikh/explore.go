@@ -238,8 +238,23 @@ func (im *Image) Rays(ctx context.Context, counts []int) Rays {
 		return Rays{Status: No}
 	}
 	k := len(counts)
-	c := im.circulations()
-	var inner [][]*big.Int
+	inner, budget := im.circulations().cone(ctx, counts)
+	if budget != "" {
+		return Rays{Rays: inner, Budget: budget}
+	}
+	rays, lines := dualCone(k, inner)
+	for _, l := range lines {
+		rays = append(rays, l, negated(l))
+	}
+	ext, both := dualCone(k, rays)
+	sortVectors(ext)
+	return Rays{Rays: ext, Lines: both, Status: Yes}
+}
+
+// cone finds effects of elementary circulations that span the cone of all effects
+// on some counts.
+func (c *circulation) cone(ctx context.Context, counts []int) (inner [][]*big.Int, budget string) {
+	k := len(counts)
 	for {
 		rays, lines := dualCone(k, inner)
 		normals := rays
@@ -258,7 +273,7 @@ func (im *Image) Rays(ctx context.Context, counts []int) Rays {
 				panic(fmt.Sprintf("parikh: rays: %v", err))
 			}
 			if r.Status == lia.Unknown {
-				return Rays{Rays: inner, Budget: r.Budget}
+				return inner, r.Budget
 			}
 			if r.Status == lia.Unsat {
 				continue
@@ -267,24 +282,17 @@ func (im *Image) Rays(ctx context.Context, counts []int) Rays {
 			for i, x := range c.y {
 				z[i] = r.Model.Int(x)
 			}
-			z = im.r.elementary(z, func(z []*big.Int) int {
-				return dot(n, im.r.effect(z, counts)).Sign()
+			z = c.r.elementary(z, func(z []*big.Int) int {
+				return dot(n, c.r.effect(z, counts)).Sign()
 			})
-			inner = append(inner, primitive(im.r.effect(z, counts)))
+			inner = append(inner, c.r.effect(primitive(z), counts))
 			found = true
 			break
 		}
 		if !found {
-			break
+			return inner, ""
 		}
 	}
-	rays, lines := dualCone(k, inner)
-	for _, l := range lines {
-		rays = append(rays, l, negated(l))
-	}
-	ext, both := dualCone(k, rays)
-	sortVectors(ext)
-	return Rays{Rays: ext, Lines: both, Status: Yes}
 }
 
 // effect adds up the effects of numbers of reduced productions, for some counts.

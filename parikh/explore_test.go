@@ -24,7 +24,7 @@ func TestRandomShape(t *testing.T) {
 		}
 		want := brute(g, bound)
 		im := New(g, Options{})
-		u := im.LinearSets(bg, 40)
+		u := New(g, Options{Solver: lia.Options{MaxNodes: 300, MaxPivots: 20000}}).LinearSets(bg, 40)
 		if u.Complete {
 			complete++
 		}

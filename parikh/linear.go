@@ -54,7 +54,7 @@ const (
 
 // LinearSets finds at most limit linear sets, in three steps again and again:
 // solve (a derivation whose vector is in no set so far, with fewest productions),
-// generalise (the pumps that hang on what it uses are periods), block.
+// generalise (the pumps among the nonterminals it uses are periods), block.
 //
 // It ends: of infinitely many derivations with one support, two are comparable;
 // their difference is a circulation on that support and a natural combination of
@@ -121,12 +121,20 @@ func (im *Image) LinearSets(ctx context.Context, limit int) Union {
 }
 
 // periods gives independent sets of periods such that every effect of a
-// circulation that hangs on the support is a natural combination of one of them,
-// up to finitely many offsets. budget is not empty if it does not get there.
+// circulation inside the support is a natural combination of one of them, up to
+// finitely many offsets. budget is not empty if it does not get there. (Pumps that
+// use more than the support would do no harm, but there may be no finite set that
+// generates them: in S -> a A S | eps, A -> b A | eps each effect has to contain
+// an a before it contains a b.)
 func (im *Image) periods(ctx context.Context, support []int32) (simplices [][][]*big.Int, budget string) {
-	f := newFlow(im.r, im.opt, support, false)
-	counts := f.countVars(im.g.Counts)
-	f.s.OnModel(func(m lia.Model) ([]lia.Formula, error) { return f.cut(m), nil })
+	f := &circulation{flow: newFlow(im.r, im.opt, nil, false)}
+	f.counts = f.countVars(im.g.Counts)
+	counts := f.counts
+	for i, x := range f.y {
+		if !slices.Contains(support, im.r.prods[i].lhs) {
+			f.s.Assert("support", lia.LE(lia.V(x), lia.Const(0)))
+		}
+	}
 	var total []lia.Lin
 	for _, x := range f.y {
 		total = append(total, lia.V(x))
@@ -136,8 +144,17 @@ func (im *Image) periods(ctx context.Context, support []int32) (simplices [][][]
 	for i := range zero {
 		zero[i] = new(big.Int)
 	}
-	simplices = [][][]*big.Int{nil}
-	var found [][]*big.Int
+	all := make([]int, k)
+	for i := range all {
+		all[i] = i
+	}
+	found, budget := f.cone(ctx, all)
+	if budget != "" {
+		return nil, budget
+	}
+	if simplices = independentSets(k, found); len(simplices) > maxSimplices {
+		return nil, "limit"
+	}
 	offsets := [][]*big.Int{zero}
 	for range 8 * maxPeriods {
 		// Known effects: offsets plus combinations of one simplex.
