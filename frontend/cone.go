@@ -17,7 +17,7 @@ type fnInfo struct {
 
 	events   bool // an event of the rule stands in its body
 	cone     bool // it reaches an event (over the call graph and its closures)
-	near     bool             // it reaches an event by calls that name their callee: its facts are passed on
+	near     bool             // it reaches an event by named calls in sight: what it asks of its parameters is passed on
 	births   map[ssa.Value][]birth
 	bearing  bool          // an instance can be born in its cone
 	direct   bool          // an instance can be born in its own body
@@ -71,8 +71,12 @@ func (m *Model) buildCone() {
 			work = append(work, fi)
 		}
 	}
+	handles := m.sh.handles(m.rule)
 	for _, site := range m.sh.candidateSites(m.rule) {
 		fn := site.Parent()
+		if m.siteShape(site).fn != 0 && handles != nil && !handles[m.sh.prog.PackageOfFunction(fn)] {
+			continue
+		}
 		if m.isEventFunc(fn) {
 			continue // an event's function is not entered
 		}
@@ -111,7 +115,7 @@ func (m *Model) buildCone() {
 			g := m.info(c.fn)
 			changed := !g.cone || fi.bearing && !g.bearing
 			g.cone = true
-			if fi.near && !g.near && (c.site == nil || c.site.Common().StaticCallee() != nil || len(m.sh.targets[c.site]) == 1) {
+			if fi.near && !g.near && (c.site == nil || c.site.Common().StaticCallee() != nil || len(m.sh.targets[c.site]) == 1) && m.sh.together(c.fn, fi.fn) {
 				g.near, changed = true, true
 			}
 			g.bearing = g.bearing || fi.bearing

@@ -481,3 +481,56 @@ func (sh *Shared) madeOnce(fn *ssa.Function) *ssa.MakeClosure {
 	}
 	return made
 }
+
+// together tells whether two functions are close enough for one to decide a
+// branch of the other by an argument: of one package, or of the judged module's.
+// Facts that are not passed on only add paths.
+func (sh *Shared) together(a, b *ssa.Function) bool {
+	p, q := sh.prog.PackageOfFunction(a), sh.prog.PackageOfFunction(b)
+	return p == q || p != nil && q != nil && p.Main && q.Main && !p.Standard && !q.Standard
+}
+
+// handles lists the packages in which a plain function value may be an instance
+// of a rule whose instances are function values: those that import the package
+// of the instance's type, or convert such a value to a plain one. nil: the
+// rule is of another kind.
+func (sh *Shared) handles(rule *properties.ResolvedRule) map[*load.Package]bool {
+	if rule.Each == nil {
+		return nil
+	}
+	named := map[types.Type]bool{}
+	homes := map[string]bool{}
+	for _, t := range rule.Each.Types {
+		n, ok := types.Unalias(t).(*types.Named)
+		if !ok || n.Obj().Pkg() == nil {
+			return nil
+		}
+		if _, ok := t.Underlying().(*types.Signature); !ok {
+			return nil
+		}
+		named[n] = true
+		homes[n.Obj().Pkg().Path()] = true
+	}
+	out := map[*load.Package]bool{}
+	for _, p := range sh.prog.Packages {
+		for _, imp := range p.Imports {
+			if homes[imp] {
+				out[p] = true
+			}
+		}
+	}
+	for _, fn := range sh.fns {
+		p := sh.prog.PackageOfFunction(fn)
+		if out[p] {
+			continue
+		}
+		for _, b := range fn.Blocks {
+			for _, i := range b.Instrs {
+				if c, ok := i.(*ssa.ChangeType); ok && named[types.Unalias(c.X.Type())] {
+					out[p] = true
+				}
+			}
+		}
+	}
+	return out
+}
