@@ -365,6 +365,9 @@ func (m *Model) absDepth(fr *frame, v ssa.Value, at *ssa.BasicBlock, depth int) 
 		if b, ok := v.Call.Value.(*ssa.Builtin); ok && (b.Name() == "len" || b.Name() == "cap") {
 			return m.intAbs(0, maxInt)
 		}
+		if x := m.errorTest(v); x != nil && m.t.abs[m.absDepth(fr, x, at, depth+1)].kind == aNil {
+			return m.boolAbs(false)
+		}
 	case *ssa.Extract:
 		if ta, ok := v.Tuple.(*ssa.TypeAssert); ok {
 			a := m.t.abs[m.absDepth(fr, ta.X, at, depth+1)]
@@ -549,6 +552,10 @@ func (m *Model) assume(fr *frame, v ssa.Value, truth bool, at *ssa.BasicBlock) b
 		}
 		m.refine(fr, v.X, op, v.Y, at)
 		m.refine(fr, v.Y, flip(op), v.X, at)
+	case *ssa.Call:
+		if x := m.errorTest(v); x != nil && truth {
+			m.strengthen(fr, x, m.nonNil(), at)
+		}
 	case *ssa.Extract:
 		if ta, ok := v.Tuple.(*ssa.TypeAssert); ok && v.Index == 1 && truth {
 			if _, iface := ta.AssertedType.Underlying().(*types.Interface); iface {
@@ -559,6 +566,34 @@ func (m *Model) assume(fr *frame, v ssa.Value, truth bool, at *ssa.BasicBlock) b
 		}
 	}
 	return true
+}
+
+// errorTest is the error that a call asks about, if its answer true says that
+// the error is not nil: errors.Is with a target that is not nil, errors.As, and
+// the older questions of package os. Source: the documentation of the standard library.
+func (m *Model) errorTest(c *ssa.Call) ssa.Value {
+	fn := c.Call.StaticCallee()
+	if fn == nil || len(c.Call.Args) == 0 {
+		return nil
+	}
+	obj := funcObject(fn)
+	if obj == nil {
+		return nil
+	}
+	switch obj.FullName() {
+	case "errors.Is":
+		switch t := c.Call.Args[1].(type) {
+		case *ssa.MakeInterface:
+			return c.Call.Args[0]
+		case *ssa.UnOp:
+			if g, ok := t.X.(*ssa.Global); ok && t.Op == token.MUL && m.sh.eff.GlobalNonNil(g) {
+				return c.Call.Args[0]
+			}
+		}
+	case "errors.As", "os.IsNotExist", "os.IsExist", "os.IsPermission", "os.IsTimeout":
+		return c.Call.Args[0]
+	}
+	return nil
 }
 
 func negate(op token.Token) token.Token {

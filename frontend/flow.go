@@ -554,6 +554,10 @@ func (m *Model) findKeys(fi *fnInfo) {
 			if ta, ok := v.Tuple.(*ssa.TypeAssert); ok {
 				cond(ta.X, b, depth+1)
 			}
+		case *ssa.Call:
+			if x := m.errorTest(v); x != nil {
+				cond(x, b, depth+1)
+			}
 		case *ssa.ChangeInterface:
 			cond(v.X, b, depth+1)
 		case *ssa.ChangeType:
