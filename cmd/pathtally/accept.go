@@ -77,12 +77,16 @@ func acceptFindings(ctx context.Context, s streams, f *acceptFlags, patterns []s
 		return err
 	}
 	bar.clear()
-	g, err := openGate(whole, &f.checkFlags, only)
+	data, err := readGate(whole, &f.checkFlags, only)
 	if err != nil {
 		return err
 	}
 	run := whole.reportRun(patterns)
-	g.mark(run)
+	g, err := data.apply(run)
+	if err != nil {
+		return err
+	}
+	g.root = whole.builds[0].prog.ModuleDir
 	missing := only.keep(run.Result)
 	if missing != "" {
 		return &failure{stage: "usage", message: fmt.Sprintf("finding %s is not among the findings of this run", missing), text: fmt.Sprintf("pathtally: finding %s is not among the findings of this run", missing)}

@@ -220,7 +220,7 @@ func hasGo(dir string, all bool) bool {
 // count as changed.
 type changes map[string][]lineRange
 
-type lineRange struct{ from, to int }
+type lineRange struct{ From, To int }
 
 func (c *checkout) changes(ctx context.Context) (changes, error) {
 	out, err := c.git(ctx, "-c", "core.quotePath=off", "diff", "--no-color", "--no-ext-diff", "--relative", "--unified=0", "--src-prefix=a/", "--dst-prefix=b/", c.rev, "--", "*.go")
@@ -279,7 +279,7 @@ func parseDiff(text string) changes {
 
 func (ch changes) has(file string, line int) bool {
 	for _, r := range ch[file] {
-		if line >= r.from && line <= r.to {
+		if line >= r.From && line <= r.To {
 			return true
 		}
 	}
@@ -320,7 +320,7 @@ func (ch changes) nearest(f *judge.Finding) (report.Headline, bool) {
 	// as an Unlock that was taken away.
 	at, far := 0, 0
 	for _, r := range ch[f.Cause.Place.File] {
-		for _, line := range []int{r.from, min(r.to, r.from+1<<20)} {
+		for _, line := range []int{r.From, min(r.To, r.From+1<<20)} {
 			d := line - f.Cause.Place.Line
 			if d < 0 {
 				d = -d

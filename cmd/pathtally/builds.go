@@ -73,7 +73,7 @@ func judgeBuilds(ctx context.Context, f *checkFlags, patterns []string, only onl
 		if slices.ContainsFunc(out.builds, func(o *analysis) bool { return o.name == a.name }) {
 			return nil, usage("--build %s is there twice", a.name)
 		}
-		r := judge.Merge(a.results)
+		r := mergeOf(a)
 		for i := range r.Findings {
 			p := r.Findings[i].Fingerprint
 			out.in[p] = append(out.in[p], len(out.builds))
@@ -107,13 +107,51 @@ func judgeOne(ctx context.Context, f *checkFlags, dir string, patterns []string,
 	return &analysis{prog, book, files, results, led, name}, nil
 }
 
-// reportRun puts the numbers around the result. Packages and functions of
-// several builds are counted once.
+// reportRun puts the numbers around the result.
 func (j *judged) reportRun(patterns []string) *report.Run {
+	run := j.header(patterns)
+	run.Result, run.FindingBuilds = j.result, j.in
+	var leds []ledger
+	for _, a := range j.builds {
+		leds = append(leds, a.led)
+	}
+	met(run, leds)
+	return run
+}
+
+// met says how many functions meet an event, and which rules of the module meet
+// none in any build.
+func met(run *report.Run, leds []ledger) {
+	functions, idle := map[string]bool{}, map[string]int{}
+	run.WithEvents = -1
+	for _, l := range leds {
+		for _, fn := range l.functions {
+			functions[fn] = true
+		}
+		for _, r := range l.idle {
+			idle[r.Name]++
+		}
+		if l.withEvents >= 0 {
+			run.WithEvents = 0
+		}
+	}
+	if run.WithEvents == 0 {
+		run.WithEvents = len(functions)
+	}
+	for _, r := range leds[0].idle {
+		if idle[r.Name] == len(leds) {
+			run.NotJudged = append(run.NotJudged, report.Left{What: "rule " + r.Name, Why: "no call path meets its events"})
+		}
+	}
+}
+
+// header is the part of a report that does not depend on verdicts. Packages and
+// functions of several builds are counted once.
+func (j *judged) header(patterns []string) *report.Run {
 	first := j.builds[0]
-	run := &report.Run{Version: version, Module: first.prog.ModulePath, Result: j.result, FindingBuilds: j.in, Source: sourceOf(first.prog), RuleTexts: map[string]report.RuleText{}}
+	run := &report.Run{Version: version, Module: first.prog.ModulePath, Source: sourceOf(first.prog), RuleTexts: map[string]report.RuleText{}}
 	sets := map[string]bool{}
-	packages, functions, met := map[string]bool{}, map[string]bool{}, map[string]bool{}
+	packages, functions := map[string]bool{}, map[string]bool{}
 	type gap struct{ what, why string }
 	gaps := map[string]map[string]bool{} // why, then which
 	add := func(why, which string) {
@@ -123,7 +161,6 @@ func (j *judged) reportRun(patterns []string) *report.Run {
 		gaps[why][which] = true
 	}
 	calls, cut := 0, map[string]bool{}
-	idle := map[string]int{}
 	for _, a := range j.builds {
 		run.Builds = append(run.Builds, a.name)
 		for _, rule := range a.book.Rules {
@@ -156,12 +193,6 @@ func (j *judged) reportRun(patterns []string) *report.Run {
 		for _, fn := range a.prog.Functions() {
 			functions[fn.String()+fmt.Sprint(a.prog.Fset.Position(fn.Pos()))] = true
 		}
-		for _, fn := range a.led.functions {
-			met[fn] = true
-		}
-		for _, name := range a.led.idle {
-			idle[name]++
-		}
 	}
 	// A file that another build has read is no gap.
 	for _, a := range j.builds {
@@ -178,9 +209,9 @@ func (j *judged) reportRun(patterns []string) *report.Run {
 			}
 		}
 	}
-	run.Packages, run.Functions, run.WithEvents = len(packages), len(functions), len(met)
+	run.Packages, run.Functions = len(packages), len(functions)
 	if len(j.builds) == 1 {
-		run.Functions, run.WithEvents = len(first.prog.Functions()), first.led.withEvents
+		run.Functions = len(first.prog.Functions())
 	}
 	slices.SortFunc(run.Rulesets, func(a, b report.Ruleset) int { return strings.Compare(a.Name, b.Name) })
 	left := func(n int, one, many, w string) {
@@ -200,10 +231,8 @@ func (j *judged) reportRun(patterns []string) *report.Run {
 	}
 	left(calls, "call into C", "calls into C", "C code is out of sight")
 	left(len(cut), "function", "functions", "its dealings with C could not be made out")
-	for _, name := range first.led.idle {
-		if idle[name] == len(j.builds) {
-			run.NotJudged = append(run.NotJudged, report.Left{What: "rule " + name, Why: "no call path meets its events"})
-		}
+	for _, name := range otherModules(first.prog, patterns) {
+		run.NotJudged = append(run.NotJudged, report.Left{What: "module " + name, Why: "another module; name it by -C"})
 	}
 	for _, p := range first.prog.Packages {
 		if len(p.Errors) > 0 || p.Broken {
@@ -245,4 +274,26 @@ func (j *judged) leftOut() string {
 	return b.String()
 }
 
-func mergeOf(a *analysis) *judge.Result { return judge.Merge(a.results) }
+// mergeOf puts the rules of a build together; with --part some were not judged.
+func mergeOf(a *analysis) *judge.Result {
+	return judge.Merge(slices.DeleteFunc(slices.Clone(a.results), func(r *judge.RuleResult) bool { return r == nil }))
+}
+
+// otherModules lists the folders of modules below this one that a pattern for
+// everything below does not reach, as the go command has it.
+func otherModules(prog *load.Program, patterns []string) []string {
+	if prog.ModulePath == "" || !slices.Contains(patterns, "./...") {
+		return nil
+	}
+	left, err := prog.Unjudged()
+	if err != nil {
+		return nil // what cannot be read is no module that anybody can judge
+	}
+	var out []string
+	for _, u := range left {
+		if u.Why == "another module" {
+			out = append(out, u.Folder)
+		}
+	}
+	return out
+}

@@ -30,8 +30,8 @@ const checkHelp = `pathtally check [packages]      judge every rule on every cal
   what      --tests  --deps  --build OS/ARCH[,tags=a,b]  --tags LIST  -C DIR
   which     --only RULE[/CLAIM[:ID]]  --about FUNCTION  --base REV  --rules FILE
   answers   --format text|lines|json|sarif|html|markdown  --output FORMAT=FILE
-            --assumptions
-  limits    --steps N  --jobs N  --undecided stop|note  --partial
+            --assumptions  --ledger FILE
+  limits    --steps N  --jobs N  --part I/N  --undecided stop|note  --partial
   comfort   --quiet  --verbose  --timings FILE
 
   pathtally check ./...                          the module
@@ -43,8 +43,39 @@ What pathtally.accepted and //pathtally:accept comments accept does not stop a r
 exit  0 nothing new is broken or undecided   1 broken   2 could not run   3 undecided only
 `
 
+// showFlags say how to answer; check and join share them.
+type showFlags struct {
+	format      string
+	outputs     []string
+	assumptions bool
+	undecided   string
+	quiet       bool
+	verbose     bool
+}
+
+func (f *showFlags) register(fl *pflag.FlagSet) {
+	fl.StringVar(&f.format, "format", "text", "what to print: "+syntax.Enumerate(printed, "or"))
+	fl.StringArrayVar(&f.outputs, "output", nil, "write FORMAT=FILE as well")
+	fl.BoolVar(&f.assumptions, "assumptions", false, "list every assumption")
+	fl.StringVar(&f.undecided, "undecided", "stop", "stop or note")
+	fl.BoolVar(&f.quiet, "quiet", false, "findings only")
+	fl.BoolVar(&f.verbose, "verbose", false, "whole paths, accepted findings too")
+}
+
+func (f *showFlags) validate() error {
+	if !slices.Contains(printed, f.format) {
+		return usage("--format %s: there are %s", f.format, syntax.Enumerate(printed, "and"))
+	}
+	if f.undecided != "stop" && f.undecided != "note" {
+		return usage("--undecided %s: there are stop and note", f.undecided)
+	}
+	_, err := parseOutputs(f.outputs)
+	return err
+}
+
 // checkFlags are the flags of check.
 type checkFlags struct {
+	showFlags
 	dir         string
 	tests, deps bool
 	tags        string
@@ -53,15 +84,11 @@ type checkFlags struct {
 	about       string
 	base        string
 	rules       []string
-	format      string
-	outputs     []string
-	assumptions bool
 	steps       int64
 	jobs        int
-	undecided   string
 	partial     bool
-	quiet       bool
-	verbose     bool
+	part        string
+	ledger      string
 	timings     string
 	cpuProfile  string
 }
@@ -87,15 +114,15 @@ func checkCommand(ctx context.Context, s streams) *cobra.Command {
 	}
 	fl := c.Flags()
 	f.whatFlags(fl)
+	f.register(fl)
+	completes(c, "format", func() []string { return printed })
+	completes(c, "undecided", func() []string { return []string{"stop", "note"} })
+	completes(c, "only", builtInNames)
 	fl.StringVar(&f.about, "about", "", "list every verdict on a function")
 	fl.StringVar(&f.base, "base", "", "report only what this git revision does not have")
-	fl.StringVar(&f.format, "format", "text", "what to print: "+syntax.Enumerate(printed, "or"))
-	fl.StringArrayVar(&f.outputs, "output", nil, "write FORMAT=FILE as well")
-	fl.BoolVar(&f.assumptions, "assumptions", false, "list every assumption")
-	fl.StringVar(&f.undecided, "undecided", "stop", "stop or note")
 	fl.BoolVar(&f.partial, "partial", false, "judge the rest when packages have errors")
-	fl.BoolVar(&f.quiet, "quiet", false, "findings only")
-	fl.BoolVar(&f.verbose, "verbose", false, "whole paths, accepted findings too")
+	fl.StringVar(&f.part, "part", "", "judge part I of N; see pathtally join")
+	fl.StringVar(&f.ledger, "ledger", "", "write what was judged and what was not to a file")
 	fl.StringVar(&f.timings, "timings", "", "write times and memory to a file")
 	fl.StringVar(&f.cpuProfile, "cpuprofile", "", "write a CPU profile")
 	if err := fl.MarkHidden("cpuprofile"); err != nil {
@@ -111,17 +138,22 @@ func usage(format string, args ...any) error {
 }
 
 func (f *checkFlags) validate() error {
-	if !slices.Contains(printed, f.format) {
-		return usage("--format %s: there are %s", f.format, syntax.Enumerate(printed, "and"))
-	}
-	if f.undecided != "stop" && f.undecided != "note" {
-		return usage("--undecided %s: there are stop and note", f.undecided)
+	if err := f.showFlags.validate(); err != nil {
+		return err
 	}
 	if f.about != "" && f.format != "text" {
 		return usage("--about prints text: leave --format %s out", f.format)
 	}
-	if _, err := parseOutputs(f.outputs); err != nil {
-		return err
+	if f.part != "" {
+		if _, err := parsePart(f.part); err != nil {
+			return err
+		}
+		if f.format != "text" || len(f.outputs) > 0 || f.about != "" || f.ledger != "" {
+			return usage("--part prints what pathtally join reads: give --format, --output and --ledger to join or to a whole run")
+		}
+		if f.partial {
+			return usage("--part with --partial: a run that leaves something out cannot be joined")
+		}
 	}
 	return f.validateWhat()
 }
@@ -171,38 +203,37 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 	if err != nil {
 		return err
 	}
-	run := whole.reportRun(patterns)
-	g, err := openGate(whole, f, only)
+	gd, err := readGate(whole, f, only)
 	if err != nil {
 		return err
 	}
 	if f.base != "" {
 		from := time.Now()
-		if err := g.compare(ctx, f, patterns, only, bar, whole, run); err != nil {
+		if gd.Base, err = baseOf(ctx, f, patterns, only, bar, whole); err != nil {
 			return err
 		}
 		times.done("base", from)
 	}
 	bar.clear()
-	g.mark(run)
 	if f.timings != "" {
 		if err := times.write(f.timings); err != nil {
 			return &failure{stage: "usage", message: err.Error()}
 		}
 	}
+	if f.part != "" {
+		return writePart(s.out, f, whole, patterns, gd)
+	}
+	run := whole.reportRun(patterns)
+	if f.ledger != "" {
+		if err := replaceFile(f.ledger, []byte(whole.ledgerText(run))); err != nil {
+			return &failure{stage: "usage", message: "--ledger: " + err.Error()}
+		}
+	}
+	if _, err := gd.apply(run); err != nil {
+		return err
+	}
 	missing := only.keep(run.Result)
-	opt := report.Options{Colour: s.outTerminal && !s.noColour, Width: s.width, Assumptions: f.assumptions, Quiet: f.quiet, Verbose: f.verbose}
-	if f.about != "" {
-		err = report.About(s.out, run, func(q judge.Question) bool {
-			return sameFunction(f.about, q.Root) || slices.ContainsFunc(q.Blame, func(fn properties.Func) bool { return sameFunction(f.about, fn) })
-		}, opt)
-	} else {
-		err = writers[f.format](s.out, run, opt)
-	}
-	if err != nil {
-		return &failure{stage: "internal", message: "writing the result: " + err.Error()}
-	}
-	if err := writeOutputs(outputs, run, opt); err != nil {
+	if err := show(s, &f.showFlags, run, outputs, f.about); err != nil {
 		return err
 	}
 	if missing != "" {
@@ -213,6 +244,23 @@ func check(ctx context.Context, s streams, f *checkFlags, patterns []string) (er
 		return status(exitFailed)
 	}
 	return statusOf(run, f.undecided == "note")
+}
+
+// show prints a run and writes the outputs beside it.
+func show(s streams, f *showFlags, run *report.Run, outputs []output, about string) error {
+	opt := report.Options{Colour: s.outTerminal && !s.noColour, Width: s.width, Assumptions: f.assumptions, Quiet: f.quiet, Verbose: f.verbose}
+	var err error
+	if about != "" {
+		err = report.About(s.out, run, func(q judge.Question) bool {
+			return sameFunction(about, q.Root) || slices.ContainsFunc(q.Blame, func(fn properties.Func) bool { return sameFunction(about, fn) })
+		}, opt)
+	} else {
+		err = writers[f.format](s.out, run, opt)
+	}
+	if err != nil {
+		return &failure{stage: "internal", message: "writing the result: " + err.Error()}
+	}
+	return writeOutputs(outputs, run, opt)
 }
 
 // statusOf gives the exit status: a new finding of a claim stops, and so does a
@@ -357,9 +405,15 @@ func ruleFailure(err error) error {
 
 // ledger counts what was looked at.
 type ledger struct {
-	withEvents int
-	functions  []string // the functions that meet an event, sorted
-	idle       []string // rules of the module whose events are met nowhere
+	withEvents int        // functions; below 0 if the models do not say
+	functions  []string   // that meet an event: package, NUL, name and place; sorted
+	idle       []idleRule // rules of the module whose events are met nowhere
+}
+
+// An idleRule is a rule that met nothing; Index is its place among the rules.
+type idleRule struct {
+	Index int
+	Name  string
 }
 
 // judgeAll makes the model of each rule and judges it, several at a time.
@@ -379,6 +433,17 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 	for _, r := range book.Rules {
 		if r := only.claims(r); r != nil {
 			rules = append(rules, r)
+		}
+	}
+	// With --part each rule is judged by one of the parts; the others stay nil.
+	pick, err := parsePart(f.part)
+	if err != nil {
+		return nil, ledger{}, err
+	}
+	var mine []int
+	for i := range rules {
+		if pick.has(i) {
+			mine = append(mine, i)
 		}
 	}
 	jobs := f.jobs
@@ -407,7 +472,7 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 				}
 				return book.State(rule, claim, ref)
 			},
-			Asked: func(v judge.Verdict) { bar.judged(v == judge.Broken, int(finished.Load()), len(rules)) },
+			Asked: func(v judge.Verdict) { bar.judged(v == judge.Broken, int(finished.Load()), len(mine)) },
 		})
 		idle[i] = !rule.BuiltIn && len(m.Starts()) == 0
 		if l, ok := m.(properties.Ledger); ok {
@@ -416,14 +481,14 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 		finished.Add(1)
 	}
 	var wg sync.WaitGroup
-	for range min(jobs, max(len(rules), 1)) {
+	for range min(jobs, max(len(mine), 1)) {
 		wg.Go(func() {
 			for {
 				i := int(next.Add(1)) - 1
-				if i >= len(rules) {
+				if i >= len(mine) {
 					return
 				}
-				one(i)
+				one(mine[i])
 			}
 		})
 	}
@@ -439,10 +504,10 @@ func judgeAll(prog *load.Program, book *properties.RuleBook, only onlyList, f *c
 	seen := map[string]bool{}
 	for i := range rules {
 		for _, fn := range met[i] {
-			seen[fmt.Sprint(fn.Package, fn.Name, fn.Place)] = true
+			seen[fmt.Sprint(fn.Package, "\x00", fn.Name, fn.Place)] = true
 		}
 		if idle[i] {
-			led.idle = append(led.idle, rules[i].Name)
+			led.idle = append(led.idle, idleRule{i, rules[i].Name})
 		}
 	}
 	led.withEvents = len(seen)

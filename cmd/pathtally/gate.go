@@ -6,55 +6,67 @@ import (
 	"fmt"
 	"os"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"pathtally/properties/accept"
 	"pathtally/properties/report"
 )
 
-// A gate knows what is accepted and what a base revision has already.
-type gate struct {
-	file    *accept.File
-	applied *accept.Applied
-	root    string // of the module
-	build   string // as entries name it
+// gateData is all that decides what is accepted and what is known, apart from
+// the result itself. Parts of a run carry it to join.
+type gateData struct {
+	File       string // pathtally.accepted as text, "" without one
+	Directives []accept.Directive
+	Build      string   // as entries name it
+	Packages   []string // judged, or gone; sorted
+	Claims     []string // RULE/CLAIM that were judged; sorted
+	Rules      []string // names of all rules; sorted
+	Narrow     bool     // --only names something: nothing is said of other claims
+	ByID       bool     // --only names single findings
+	Base       *baseData
 }
 
-// openGate reads pathtally.accepted and the directives of the judged packages,
-// and compares them with the result.
-func openGate(j *judged, f *checkFlags, only onlyList) (*gate, error) {
+// baseData is what a base revision has already, and which lines differ from it.
+type baseData struct {
+	Revision    string
+	Known, Open []string // fingerprints, sorted
+	Changed     changes
+}
+
+// readGate reads pathtally.accepted and the directives of the judged packages.
+func readGate(j *judged, f *checkFlags, only onlyList) (*gateData, error) {
 	first := j.builds[0].prog
-	g := &gate{file: &accept.File{}, root: first.ModuleDir, build: buildName(j, f)}
-	var err error
+	d := &gateData{Build: buildName(j, f), Narrow: len(only) > 0, ByID: only.byID()}
+	file := &accept.File{}
 	if first.ModulePath != "" || first.Workspace != "" {
-		if g.file, err = accept.Read(first.ModuleDir); err != nil {
+		var err error
+		if file, err = accept.Read(first.ModuleDir); err != nil {
 			return nil, acceptFailure(err)
 		}
 	}
-	var ds []accept.Directive
+	if len(file.Entries) > 0 {
+		text, err := os.ReadFile(filepath.Join(first.ModuleDir, accept.FileName))
+		if err != nil {
+			return nil, acceptFailure(err)
+		}
+		d.File = string(text)
+	}
 	seen := map[string]bool{}
-	claims := map[string]bool{}
-	rules := map[string]bool{}
-	packages := map[string]bool{}
-	modules := map[string]string{} // module path: of the main modules
 	for _, a := range j.builds {
 		for _, r := range a.book.Rules {
-			rules[r.Name] = true
+			d.Rules = append(d.Rules, r.Name)
 			if r := only.claims(r); r != nil {
 				for _, c := range r.Claims {
-					claims[r.Name+"/"+c.Name] = true
+					d.Claims = append(d.Claims, r.Name+"/"+c.Name)
 				}
-			}
-			if len(only) > 0 {
-				continue
 			}
 		}
 		for _, p := range a.prog.Packages {
 			if !p.Bodies || !p.Main {
 				continue
 			}
-			packages[p.Path] = true
-			modules[p.Module] = p.Module
+			d.Packages = append(d.Packages, p.Path)
 			for _, file := range p.GoFiles {
 				rel, err := filepath.Rel(a.prog.ModuleDir, file)
 				if err != nil || seen[file] || strings.HasPrefix(rel, "..") {
@@ -69,33 +81,91 @@ func openGate(j *judged, f *checkFlags, only onlyList) (*gate, error) {
 				if err != nil {
 					return nil, acceptFailure(err)
 				}
-				ds = append(ds, found...)
+				d.Directives = append(d.Directives, found...)
 			}
 		}
 	}
-	scope := accept.Scope{
-		Build: g.build,
-		Package: func(path string) bool {
-			return packages[path] || g.gone(path, first.ModulePath)
-		},
-		Claim: func(claim string) bool {
-			rule, _, _ := strings.Cut(claim, "/")
-			// With --only nothing is said of claims that were not asked about, with
-			// an ID of one finding nothing of others.
-			return !only.byID() && (claims[claim] || (len(only) == 0 && !rules[rule]))
-		},
+	for _, e := range file.Entries {
+		if gone(first.ModuleDir, e.Package, first.ModulePath) {
+			d.Packages = append(d.Packages, e.Package)
+		}
 	}
-	g.applied = accept.Apply(j.result, g.file, ds, scope)
+	for _, list := range []*[]string{&d.Packages, &d.Claims, &d.Rules} {
+		slices.Sort(*list)
+		*list = slices.Compact(*list)
+	}
+	return d, nil
+}
+
+// apply marks what is accepted, stale and known in a run.
+func (d *gateData) apply(run *report.Run) (*gate, error) {
+	file, err := accept.Parse(accept.FileName, d.File)
+	if err != nil {
+		return nil, acceptFailure(err)
+	}
+	has := func(list []string, s string) bool { _, ok := slices.BinarySearch(list, s); return ok }
+	g := &gate{file: file, build: d.Build}
+	g.applied = accept.Apply(run.Result, file, d.Directives, accept.Scope{
+		Build:   d.Build,
+		Package: func(path string) bool { return has(d.Packages, path) },
+		Claim: func(claim string) bool {
+			// With --only nothing is said of claims that were not asked about, with
+			// the ID of one finding nothing of others. A rule that is gone is stale.
+			rule, _, _ := strings.Cut(claim, "/")
+			return !d.ByID && (has(d.Claims, claim) || (!d.Narrow && !has(d.Rules, rule)))
+		},
+	})
+	run.Accepted, run.Stale = g.applied.Accepted, g.applied.Stale
+	run.Gated = len(file.Entries) > 0 || len(run.Accepted) > 0 || len(run.Stale) > 0 || d.Base != nil
+	if d.Base != nil {
+		d.Base.apply(run)
+	}
 	return g, nil
 }
 
+// apply takes what the base has already out of a run, and heads what is left
+// with the changed line nearest to its cause.
+func (b *baseData) apply(run *report.Run) {
+	has := func(list []string, s string) bool { _, ok := slices.BinarySearch(list, s); return ok }
+	run.Base = b.Revision
+	run.Headlines = map[string]report.Headline{}
+	narrowed := *run.Result
+	narrowed.Findings, narrowed.Open = nil, nil
+	for _, x := range run.Result.Findings {
+		if has(b.Known, x.Fingerprint) {
+			run.KnownFindings++
+			continue
+		}
+		if at, ok := b.Changed.nearest(&x); ok {
+			run.Headlines[x.Fingerprint] = at
+		}
+		narrowed.Findings = append(narrowed.Findings, x)
+	}
+	for _, o := range run.Result.Open {
+		if has(b.Open, o.Fingerprint()) {
+			run.KnownOpen++
+			continue
+		}
+		narrowed.Open = append(narrowed.Open, o)
+	}
+	run.Result = &narrowed
+}
+
+// A gate is what is accepted in a run.
+type gate struct {
+	file    *accept.File
+	applied *accept.Applied
+	root    string // of the module; set where the file is written
+	build   string // as entries name it
+}
+
 // gone says that a package of the module has no folder any more.
-func (g *gate) gone(path, module string) bool {
+func gone(root, path, module string) bool {
 	rest, ok := strings.CutPrefix(path, module+"/")
 	if !ok {
 		return false
 	}
-	_, err := os.Stat(filepath.Join(g.root, filepath.FromSlash(strings.TrimSuffix(rest, "_test"))))
+	_, err := os.Stat(filepath.Join(root, filepath.FromSlash(strings.TrimSuffix(rest, "_test"))))
 	return os.IsNotExist(err)
 }
 
@@ -126,32 +196,25 @@ func acceptFailure(err error) error {
 	return f
 }
 
-// mark puts what is accepted and stale into the run.
-func (g *gate) mark(run *report.Run) {
-	run.Accepted = g.applied.Accepted
-	run.Stale = g.applied.Stale
-	run.Gated = len(g.file.Entries) > 0 || len(g.applied.Accepted) > 0 || len(g.applied.Stale) > 0 || run.Base != ""
-}
-
-// compare judges a base revision and takes what it has already out of the run.
-// The rules are those of today, so that a new rule does not stop a change that
-// broke nothing; where they mean nothing in the old code, its own rules stand.
-func (g *gate) compare(ctx context.Context, f *checkFlags, patterns []string, only onlyList, bar *progress, j *judged, run *report.Run) error {
+// baseOf judges a base revision. The rules are those of today, so that a new
+// rule does not stop a change that broke nothing; where they mean nothing in the
+// old code, its own rules stand. The answer is nil without --base.
+func baseOf(ctx context.Context, f *checkFlags, patterns []string, only onlyList, bar *progress, j *judged) (*baseData, error) {
 	bar.stage("base", 0, 1)
-	old, err := checkOut(ctx, g.root, f.base)
+	old, err := checkOut(ctx, j.builds[0].prog.ModuleDir, f.base)
 	if err != nil {
-		return err
+		return nil, err
 	}
 	defer old.remove()
 	builds, err := parseBuilds(f)
 	if err != nil {
-		return err
+		return nil, err
 	}
 	dir, here, err := old.folder(f.dir, patterns)
 	if err != nil {
-		return err
+		return nil, err
 	}
-	known, open := map[string]bool{}, map[string]bool{}
+	out := &baseData{Revision: f.base}
 	for i, b := range builds {
 		if dir == "" {
 			break // nothing of what is asked for was there
@@ -168,44 +231,23 @@ func (g *gate) compare(ctx context.Context, f *checkFlags, patterns []string, on
 				if text == "" {
 					text = fail.message
 				}
-				return &failure{stage: fail.stage, message: fmt.Sprintf("--base %s cannot be judged: %s", f.base, fail.message), places: fail.places,
+				return nil, &failure{stage: fail.stage, message: fmt.Sprintf("--base %s cannot be judged: %s", f.base, fail.message), places: fail.places,
 					text: fmt.Sprintf("pathtally: --base %s cannot be judged:\n%s", f.base, text)}
 			}
-			return err
+			return nil, err
 		}
 		r := mergeOf(a)
 		for i := range r.Findings {
-			known[r.Findings[i].Fingerprint] = true
+			out.Known = append(out.Known, r.Findings[i].Fingerprint)
 		}
 		for i := range r.Open {
-			open[r.Open[i].Fingerprint()] = true
+			out.Open = append(out.Open, r.Open[i].Fingerprint())
 		}
 	}
-	changed, err := old.changes(ctx)
-	if err != nil {
-		return err
+	slices.Sort(out.Known)
+	slices.Sort(out.Open)
+	if out.Changed, err = old.changes(ctx); err != nil {
+		return nil, err
 	}
-	run.Base = f.base
-	run.Headlines = map[string]report.Headline{}
-	narrowed := *run.Result
-	narrowed.Findings, narrowed.Open = nil, nil
-	for _, x := range run.Result.Findings {
-		if known[x.Fingerprint] {
-			run.KnownFindings++
-			continue
-		}
-		if at, ok := changed.nearest(&x); ok {
-			run.Headlines[x.Fingerprint] = at
-		}
-		narrowed.Findings = append(narrowed.Findings, x)
-	}
-	for _, o := range run.Result.Open {
-		if open[o.Fingerprint()] {
-			run.KnownOpen++
-			continue
-		}
-		narrowed.Open = append(narrowed.Open, o)
-	}
-	run.Result = &narrowed
-	return nil
+	return out, nil
 }

@@ -114,6 +114,8 @@ const rootHelp = `pathtally: do things that belong in pairs come out even on eve
   pathtally check [packages]      judge the rules; exit 1 if something is broken
   pathtally accept [packages]     record today's findings; later runs stop only for new ones
   pathtally rules  COMMAND        list, show, try
+  pathtally join FILES            one result out of the parts of a run
+  pathtally completion SHELL      completion of commands and flags
 
 Packages are named as for the go command; without any, the one in this folder.
 Start with:  pathtally check ./...          Help on one:  pathtally check --help
@@ -127,7 +129,7 @@ func command(ctx context.Context, s streams) *cobra.Command {
 		SilenceUsage:  true,
 		Args: func(_ *cobra.Command, args []string) error {
 			if len(args) > 0 {
-				return fmt.Errorf("there is no command %s: there are check, accept and rules", args[0])
+				return fmt.Errorf("there is no command %s: there are check, accept, rules, join and completion", args[0])
 			}
 			return nil
 		},
@@ -137,12 +139,12 @@ func command(ctx context.Context, s streams) *cobra.Command {
 	root.SetHelpCommand(&cobra.Command{Use: "help", Hidden: true, RunE: func(c *cobra.Command, args []string) error {
 		target, _, err := root.Find(args)
 		if err != nil || target == nil {
-			return fmt.Errorf("there is no command %s: there are check, accept and rules", strings.Join(args, " "))
+			return fmt.Errorf("there is no command %s: there are check, accept, rules, join and completion", strings.Join(args, " "))
 		}
 		return target.Help()
 	}})
 	setHelp(root, rootHelp)
-	root.AddCommand(checkCommand(ctx, s), acceptCommand(ctx, s), rulesCommand(ctx, s))
+	root.AddCommand(checkCommand(ctx, s), acceptCommand(ctx, s), rulesCommand(ctx, s), joinCommand(s), completionCommand(s))
 	return root
 }
 

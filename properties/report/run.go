@@ -62,7 +62,7 @@ type Run struct {
 	// RuleTexts describes claims, by RULE/CLAIM.
 	RuleTexts map[string]RuleText
 	// Source reads a file as findings name it; nil if there is no source.
-	Source func(file string) ([]byte, error)
+	Source func(file string) ([]byte, error) `json:"-"`
 }
 
 // Headline is a place that stands in for a finding's cause in its first line.
