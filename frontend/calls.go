@@ -117,6 +117,7 @@ func (m *Model) toCallee(ns nset, l *link) nset {
 			out.add(m.outward(e, as))
 		}
 	}
+	m.tidy(&out)
 	return out
 }
 

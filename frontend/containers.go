@@ -88,8 +88,39 @@ func (s *nset) reindex(t *exprs, f func(c, y Expr) Expr) {
 	}
 	s.names = nil
 	for _, e := range old {
-		s.add(t.reindex(e, f))
+		r := t.reindex(e, f)
+		if r != e && r != 0 && t.nodes[e].kind == kMaybe {
+			r = t.held(t.nodes[r].x) // a doubt about an element that is out of reach now
+		}
+		s.add(r)
 	}
+}
+
+// tidy drops what other names cover: what a part of an object may hold, the
+// object may hold.
+func (m *Model) tidy(ns *nset) {
+	held := 0
+	for _, e := range ns.names {
+		if m.x.nodes[e].kind == kHeld {
+			held++
+		}
+	}
+	if held < 2 {
+		return
+	}
+	ns.filter(func(e Expr) bool {
+		n := m.x.nodes[e]
+		if n.kind != kHeld {
+			return true
+		}
+		for x := n.x; m.x.isSel(x); {
+			x = m.x.nodes[x].x
+			if ns.has(m.x.held(x)) {
+				return false
+			}
+		}
+		return true
+	})
 }
 
 // A wholeLoop is a loop that takes every element of a container once, unless
@@ -362,6 +393,9 @@ func (m *Model) take(fr *frame, instr ssa.Instruction, dst []pds.Rule) ([]pds.Ru
 	met, later := m.x.met(l), m.x.later(l)
 	open := false
 	for _, e := range fr.ns.names {
+		if k := m.x.nodes[e].kind; k == kHeld || k == kMaybe {
+			continue
+		}
 		m.x.reindex(e, func(c, y Expr) Expr {
 			if y != l.idx && y != met && y != later && m.isOver(l, c) {
 				open = true

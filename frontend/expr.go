@@ -125,6 +125,12 @@ func (t *exprs) held(x Expr) Expr {
 	if k := t.nodes[x].kind; k == kHeld {
 		return x
 	}
+	// What an element holds, its container holds: which element is of no use.
+	for e := x; t.isSel(e); e = t.nodes[e].x {
+		if n := t.nodes[e]; n.kind == kIndex {
+			x = n.x
+		}
+	}
 	return t.intern(exprNode{kind: kHeld, x: x})
 }
 func (t *exprs) maybe(x Expr) Expr {

@@ -662,6 +662,7 @@ func (m *Model) prune(fr *frame) {
 	if fr.ns.phase != born || len(fr.ns.names) < 2 {
 		return
 	}
+	m.tidy(&fr.ns)
 	dead := func(e Expr) bool {
 		switch n := m.x.nodes[m.x.root[e]]; n.kind {
 		case kReg, kRes:
