@@ -103,10 +103,10 @@ func (j *judged) ledgerText(run *report.Run) string {
 			if folders, err := prog.Unjudged(); err == nil {
 				for _, u := range folders {
 					files := ""
-				if u.Files > 0 { // of another module nothing is read
-					files = fmt.Sprintf("files %d", u.Files)
-				}
-				gaps = append(gaps, fmt.Sprintf("folder\t%s\t%s\t%s", u.Folder, files, u.Why))
+					if u.Files > 0 { // of another module nothing is read
+						files = fmt.Sprintf("files %d", u.Files)
+					}
+					gaps = append(gaps, fmt.Sprintf("folder\t%s\t%s\t%s", u.Folder, files, u.Why))
 				}
 			}
 		}
