@@ -55,9 +55,24 @@
 //
 // A rule's kind is stop, pop, step or push; "doubt" names a doubt and
 // "doubtEffect" what the step counts if the doubt is taken; "marks" lists names
-// of points of interest ("loss" is [MarkLoss]); "spawn" lists heads. The members
-// "parameters" and "predicates" of a system and "event" and "guard" of a rule
-// are reserved for systems with parameters of the sorts ref, int, string and
-// bool: they may be absent or empty, and anything else in them is refused. Any
-// other unknown member is an error.
+// of points of interest ("loss" is [MarkLoss]); "spawn" lists heads. An unknown
+// member is an error.
+//
+// # Parameters and data
+//
+// A parametric system ([Data]) has parameters whose values are chosen once, before
+// the run; events that carry data of the sorts ref, int, string and bool; and
+// predicates, which add to counts when an event happens with data that satisfy
+// them. A rule may carry an event and a guard ([ParseGuard]) over its data and the
+// parameters; it can be taken with any data that satisfy the guard. Data of
+// different steps are independent. In the JSON form:
+//
+//	"parameters": [{"name": "limit", "sort": "int"}],
+//	"events": [{"name": "send", "data": [{"name": "n", "sort": "int"}]}],
+//	"predicates": [{"count": "big", "event": "send", "where": "n > limit"},
+//	               {"count": "bytes", "event": "send", "by": "n"}],
+//	"rules": [{"from": ..., "event": "send", "guard": "n >= 1 && n <= 512"}]
+//
+// What a Table says as a [System] are the counts without predicates, with every
+// guard taken as true; package parikh decides the rest.
 package pds

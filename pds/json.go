@@ -226,17 +226,9 @@ func (in *reader) names(v *value, path string) ([]string, error) {
 	return names, nil
 }
 
-// reserved refuses anything but an empty list, object or null.
-func (in *reader) reserved(v *value, path string) error {
-	if v.kind == 0 || (v.kind == '[' || v.kind == '{') && len(v.items) == 0 {
-		return nil
-	}
-	return in.errorAt(v.offset, path, "is reserved for systems with parameters, which version %d does not read", formatVersion)
-}
-
 func (in *reader) system(root *value) (*Table, error) {
 	var counts, states, symbols []string
-	var starts, rules *value
+	var starts, rules, parameters, events, predicates *value
 	var format string
 	var version int64
 	err := in.members(root, "", func(name string, v *value, path string) (bool, error) {
@@ -262,8 +254,12 @@ func (in *reader) system(root *value) (*Table, error) {
 			starts, err = v, in.want(v, path, '[')
 		case "rules":
 			rules, err = v, in.want(v, path, '[')
-		case "parameters", "predicates":
-			err = in.reserved(v, path)
+		case "parameters":
+			parameters = v
+		case "events":
+			events = v
+		case "predicates":
+			predicates = v
 		default:
 			return false, nil
 		}
@@ -282,6 +278,22 @@ func (in *reader) system(root *value) (*Table, error) {
 	for _, s := range symbols {
 		in.b.Symbol(s)
 	}
+	in.b.t.data = &Data{}
+	if parameters != nil {
+		if in.b.t.data.Parameters, err = in.variables(parameters, "parameters"); err != nil {
+			return nil, err
+		}
+	}
+	if events != nil {
+		if in.b.t.data.Events, err = in.events(events, "events"); err != nil {
+			return nil, err
+		}
+	}
+	if predicates != nil {
+		if err = in.predicates(predicates, "predicates"); err != nil {
+			return nil, err
+		}
+	}
 	if starts != nil {
 		for i, v := range starts.items {
 			h, err := in.head(v, fmt.Sprintf("starts[%d]", i))
@@ -297,6 +309,9 @@ func (in *reader) system(root *value) (*Table, error) {
 				return nil, err
 			}
 		}
+	}
+	if d := in.b.t.data; len(d.Parameters)+len(d.Events)+len(d.Predicates)+len(in.b.t.guards) == 0 {
+		in.b.t.data = nil
 	}
 	return in.b.Table(), nil
 }
@@ -358,6 +373,7 @@ func (in *reader) rule(v *value, path string) error {
 	var from Head
 	var r Rule
 	kind := ""
+	var event, cond *value
 	given := map[string]bool{}
 	err := in.members(v, path, func(name string, v *value, path string) (bool, error) {
 		given[name] = true
@@ -420,8 +436,10 @@ func (in *reader) rule(v *value, path string) error {
 					r.Spawn = append(r.Spawn, h)
 				}
 			}
-		case "event", "guard":
-			err = in.reserved(v, path)
+		case "event":
+			event = v
+		case "guard":
+			cond = v
 		default:
 			return false, nil
 		}
@@ -456,7 +474,14 @@ func (in *reader) rule(v *value, path string) error {
 			r.Kind = Kind(i)
 		}
 	}
+	g, err := in.guard(event, cond, path)
+	if err != nil {
+		return err
+	}
 	in.b.Add(from, r)
+	if g != nil {
+		in.b.guard(from, g)
+	}
 	return nil
 }
 
@@ -475,6 +500,8 @@ type (
 		Effect      json.RawMessage `json:"effect,omitempty"`
 		Doubt       string          `json:"doubt,omitempty"`
 		DoubtEffect json.RawMessage `json:"doubtEffect,omitempty"`
+		Event       string          `json:"event,omitempty"`
+		Guard       string          `json:"guard,omitempty"`
 		Label       string          `json:"label,omitempty"`
 		Marks       []string        `json:"marks,omitempty"`
 		Spawn       []headJSON      `json:"spawn,omitempty"`
@@ -518,6 +545,10 @@ func (t *Table) WriteJSON(w io.Writer) error {
 	}
 	fmt.Fprintf(&b, "{\n  \"format\": %q, \"version\": %d,\n", formatName, formatVersion)
 	fmt.Fprintf(&b, "  \"counts\": %s,\n  \"states\": %s,\n  \"symbols\": %s,\n", list(t.counts), list(t.states[1:]), list(t.symbols[1:]))
+	if t.data != nil {
+		fmt.Fprintf(&b, "  \"parameters\": %s,\n  \"events\": %s,\n  \"predicates\": %s,\n",
+			encode(variablesJSON(t.data.Parameters)), encode(t.eventsJSON()), encode(t.predicatesJSON()))
+	}
 	b.WriteString("  \"starts\": [")
 	for i, h := range t.starts {
 		if i > 0 {
@@ -528,7 +559,7 @@ func (t *Table) WriteJSON(w io.Writer) error {
 	b.WriteString("],\n  \"rules\": [")
 	sep := "\n    "
 	for _, h := range t.heads {
-		for _, r := range t.rules[h] {
+		for i, r := range t.rules[h] {
 			out := ruleJSON{From: head(h), Kind: r.Kind.String(), Effect: effect(r.Effect), Label: t.LabelText(r.Label), Marks: t.markNames(r.Mark)}
 			if r.Kind != Stop {
 				out.State = t.StateName(r.State)
@@ -541,6 +572,14 @@ func (t *Table) WriteJSON(w io.Writer) error {
 			}
 			if r.Doubt != 0 {
 				out.Doubt, out.DoubtEffect = nameOf(t.doubts, int(r.Doubt), "doubt"), effect(r.DoubtEffect)
+			}
+			if g := t.Guard(h, i); g != nil {
+				if g.Event >= 0 {
+					out.Event = t.data.Events[g.Event].Name
+				}
+				if g.Cond != nil {
+					out.Guard = g.Cond.Src
+				}
 			}
 			for _, s := range r.Spawn {
 				out.Spawn = append(out.Spawn, head(s))

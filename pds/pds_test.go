@@ -47,8 +47,26 @@ back leave -> back
 	}
 }
 
+// guarded is a system with parameters: each lock of key counts if it is the chosen
+// one, and adds what is asked for.
+func guarded() *Table {
+	b := NewBuilder("taken", "asked")
+	params := []Variable{{"chosen", String}, {"limit", Int}}
+	data := []Variable{{"key", String}, {"n", Int}, {"fresh", Bool}, {"who", Ref}}
+	where, err := ParseGuard(`key == chosen && !fresh => prefix(key, "a\n") || n % 3 == 1`, params, data)
+	if err != nil {
+		panic(err)
+	}
+	b.Parametric(Data{Parameters: params, Events: []Event{{"lock", data}, {"idle", nil}},
+		Predicates: []Predicate{{Count: 0, Event: 0, Where: where, By: -1}, {Count: 1, Event: 0, By: 1}}})
+	b.Start("q", "x")
+	b.Pop("q", "x", "q").Pop("q", "x", "r").Guarded(b.Head("q", "x"), "lock", "n >= 1 && n <= limit && who != nil")
+	b.Pop("q", "x", "s").Guarded(b.Head("q", "x"), "", "limit > 3")
+	return b.Table()
+}
+
 func TestRoundTrip(t *testing.T) {
-	for _, sys := range []*Table{drain(), all(), NewBuilder().Table()} {
+	for _, sys := range []*Table{drain(), all(), guarded(), NewBuilder().Table()} {
 		if err := sys.Sanity(); err != nil {
 			t.Fatal(err)
 		}
@@ -93,6 +111,7 @@ func TestGoldenJSON(t *testing.T) {
 
 func TestReadErrors(t *testing.T) {
 	const head = `{"format": "pathtally-system", "version": 1, "counts": ["a"], "states": ["p"], "symbols": ["x"], `
+	const events = `"events": [{"name": "e", "data": [{"name": "n", "sort": "int"}, {"name": "s", "sort": "string"}]}], `
 	rule := func(s string) string {
 		return head + "\n" + `"rules": [{"from": {"state": "p", "symbol": "x"}, ` + s + `}]}`
 	}
@@ -111,8 +130,23 @@ func TestReadErrors(t *testing.T) {
 		{head + `"rules": {}}`, "rules: is an object, must be a list"},
 		{head + `"starts": [{"state": "p"}]}`, "starts[0]: needs a state and a symbol"},
 		{head + `"starts": [{"state": "z", "symbol": "x"}]}`, `starts[0].state: state "z" is not declared`},
-		{head + `"parameters": [{"name": "n", "sort": "int"}]}`, "parameters: is reserved"},
-		{head + `"predicates": [1]}`, "predicates: is reserved"},
+		{head + `"parameters": [{"name": "n", "sort": "number"}]}`, `parameters[0].sort: is "number", must be ref, int, string or bool`},
+		{head + `"parameters": [{"name": "n"}]}`, `parameters[0]: needs "name" and "sort"`},
+		{head + `"parameters": [{"name": "n-m", "sort": "int"}]}`, `parameters[0].name: "n-m" is not a name`},
+		{head + `"parameters": [{"name": "n", "sort": "int"}, {"name": "n", "sort": "int"}]}`, `parameters[1].name: "n" comes twice`},
+		{head + `"predicates": [1]}`, "predicates[0]: is a number, must be an object"},
+		{head + `"predicates": [{"count": "a", "event": "e"}]}`, `predicates[0].event: event "e" is not declared`},
+		{head + events + `"predicates": [{"count": "b", "event": "e"}]}`, `predicates[0].count: count "b" is not declared`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "n <"}]}`, `predicates[0].where: at byte 3: the formula ends too early`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "m == 1"}]}`, `"m" is no parameter and no datum`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "s < 1"}]}`, `at byte 0: has sort string, must be int`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "s == n"}]}`, `at byte 5: has sort int, the left side has string`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "n == 9223372036854775808"}]}`, `does not fit into 64 bits`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "n * n == 1"}]}`, `one side of * must be a number`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "n % 0 == 1"}]}`, `must be a positive number`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "where": "matches(s, \"(\")"}]}`, `missing closing )`},
+		{head + events + `"predicates": [{"count": "a", "event": "e", "by": "s"}]}`, `predicates[0].by: "s" has sort string, must be int`},
+		{head + events + `"rules": [{"from": {"state": "p", "symbol": "x"}, "kind": "stop", "guard": "n > 1"}]}`, `rules[0].guard: at byte 0: "n" is no parameter`},
 		{rule(`"kind": "step", "state": "p", "top": "w"`), `2:88: rules[0].top: symbol "w" is not declared`},
 		{rule(`"kind": "step", "state": "w", "top": "x"`), `rules[0].state: state "w" is not declared`},
 		{rule(`"kind": "jump"`), `rules[0].kind: is "jump", must be stop, pop, step or push`},
@@ -126,8 +160,8 @@ func TestReadErrors(t *testing.T) {
 		{rule(`"kind": "stop", "doubtEffect": {"a": 1}`), "rules[0].doubtEffect: without a doubt"},
 		{rule(`"kind": "pop", "state": "p", "marks": ["loss"]`), `rules[0].marks: "loss" belongs to a stop`},
 		{rule(`"kind": "stop", "spawn": [{"state": "p", "symbol": "y"}]`), `rules[0].spawn[0].symbol: symbol "y" is not declared`},
-		{rule(`"kind": "stop", "guard": {"op": "=="}`), "rules[0].guard: is reserved"},
-		{rule(`"kind": "stop", "event": "x"`), "rules[0].event: is reserved"},
+		{rule(`"kind": "stop", "guard": {"op": "=="}`), "rules[0].guard: is an object, must be a string"},
+		{rule(`"kind": "stop", "event": "x"`), `rules[0].event: event "x" is not declared`},
 		{rule(`"kind": "stop", "colour": 1`), "rules[0].colour: unknown member"},
 		{head + `"rules": [{"kind": "stop"}]}`, `rules[0]: needs "from" and "kind"`},
 		{`{"states": ["p", "q", "p"]}`, `states[2]: "p" is states[0] already`},
@@ -318,7 +352,7 @@ func TestDOT(t *testing.T) {
 }
 
 func FuzzRead(f *testing.F) {
-	for _, sys := range []*Table{drain(), all()} {
+	for _, sys := range []*Table{drain(), all(), guarded()} {
 		var out bytes.Buffer
 		if err := sys.WriteJSON(&out); err != nil {
 			f.Fatal(err)

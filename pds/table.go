@@ -23,6 +23,8 @@ type Table struct {
 	starts  []Head
 	heads   []Head // heads with rules, in the order in which they first got one
 	rules   map[Head][]Rule
+	data    *Data             // nil if the system has no parameters, events and predicates
+	guards  map[Head][]*Guard // index as in rules; may be shorter
 }
 
 // LossMark is the name of [MarkLoss] in text.
@@ -88,8 +90,9 @@ func nameOf(names []string, i int, prefix string) string {
 func (t *Table) String() string {
 	var b strings.Builder
 	for _, h := range t.heads {
-		for _, r := range t.rules[h] {
+		for i, r := range t.rules[h] {
 			fmt.Fprintf(&b, "%s %s -> %s", t.StateName(h.State), t.SymbolName(h.Symbol), t.target(r))
+			b.WriteString(t.guardText(h, i))
 			if e := t.effectText(r.Effect); e != "" {
 				fmt.Fprintf(&b, " [%s]", e)
 			}
@@ -166,7 +169,7 @@ type Builder struct {
 // NewBuilder starts a system with the named counts.
 func NewBuilder(counts ...string) *Builder {
 	t := &Table{counts: slices.Clone(counts), states: []string{""}, symbols: []string{""}, labels: []string{""}, doubts: []string{""},
-		marks: []string{LossMark}, vectors: [][]int64{make([]int64, len(counts))}, rules: map[Head][]Rule{}}
+		marks: []string{LossMark}, vectors: [][]int64{make([]int64, len(counts))}, rules: map[Head][]Rule{}, guards: map[Head][]*Guard{}}
 	b := &Builder{t: t, states: map[string]int{}, symbols: map[string]int{}, labels: map[string]int{}, doubts: map[string]int{}, effects: map[string]EffectID{}}
 	b.effects[fmt.Sprint(t.vectors[0])] = 0
 	return b
@@ -297,6 +300,47 @@ func (b *Builder) Add(h Head, r Rule, options ...Option) *Builder {
 		b.t.heads = append(b.t.heads, h)
 	}
 	b.t.rules[h] = append(b.t.rules[h], r)
+	return b
+}
+
+// Parametric gives the system parameters, events and predicates. Rules with guards
+// are added after it.
+func (b *Builder) Parametric(d Data) *Builder {
+	b.t.data = &d
+	return b
+}
+
+// Guarded gives the rule that was added last to h an event ("" for none) and a
+// condition over the parameters and the event's data ("" for true). It panics if
+// they are not declared or do not parse.
+func (b *Builder) Guarded(h Head, event, cond string) *Builder {
+	g := &Guard{Event: -1}
+	var data []Variable
+	if event != "" {
+		g.Event = slices.IndexFunc(b.t.data.Events, func(e Event) bool { return e.Name == event })
+		if g.Event < 0 {
+			panic(fmt.Sprintf("pds: no event %q", event))
+		}
+		data = b.t.data.Events[g.Event].Data
+	}
+	if cond != "" {
+		e, err := ParseGuard(cond, b.t.data.Parameters, data)
+		if err != nil {
+			panic(fmt.Sprintf("pds: guard %q: %v", cond, err))
+		}
+		g.Cond = e
+	}
+	return b.guard(h, g)
+}
+
+// guard gives the rule that was added last to a head what it says of data.
+func (b *Builder) guard(h Head, g *Guard) *Builder {
+	list := b.t.guards[h]
+	for len(list) < len(b.t.rules[h]) {
+		list = append(list, nil)
+	}
+	list[len(list)-1] = g
+	b.t.guards[h] = list
 	return b
 }
 
