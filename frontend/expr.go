@@ -121,7 +121,15 @@ func (t *exprs) kept() Expr { return t.constant("(kept)") }
 // pushed for the function around it.
 func (t *exprs) pending() Expr { return t.constant("(deferred)") }
 
+// maxHeld bounds the loads of what an inexact name is about: what can be reached
+// from a place can be reached from its holder, and a recursive structure would
+// give a name for each of its paths.
+const maxHeld = 2
+
 func (t *exprs) held(x Expr) Expr {
+	for t.loads[x] > maxHeld && t.isSel(x) {
+		x = t.nodes[x].x
+	}
 	if k := t.nodes[x].kind; k == kHeld {
 		return x
 	}
