@@ -17,7 +17,7 @@ type fnInfo struct {
 
 	events   bool // an event of the rule stands in its body
 	cone     bool // it reaches an event (over the call graph and its closures)
-	near     bool             // it reaches an event by named calls in sight: what it asks of its parameters is passed on
+	near     bool // it reaches an event by named calls in sight: what it asks of its parameters is passed on
 	births   map[ssa.Value][]birth
 	bearing  bool          // an instance can be born in its cone
 	direct   bool          // an instance can be born in its own body
