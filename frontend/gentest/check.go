@@ -192,9 +192,12 @@ func (r *Result) check(prog *load.Program, path string, runs map[string]*RootRun
 		}
 		byRoot[s.Root.Name] = append(byRoot[s.Root.Name], im)
 	}
-	verdicts := map[[3]string]judge.Verdict{}
+	verdicts := map[[3]string]judge.Question{}
 	for _, q := range judge.Merge([]*judge.RuleResult{judge.Judge(rule, sh.Lower(rule), judge.Options{})}).Questions {
-		verdicts[[3]string{q.Root.Name, q.Instance, q.Claim}] = q.Verdict
+		if q.RootKind != "exported" {
+			continue // a closure, named as the function it stands in
+		}
+		verdicts[[3]string{q.Root.Name, q.Instance, q.Claim}] = q
 	}
 	var names []string
 	for n := range runs {
@@ -212,14 +215,10 @@ func (r *Result) check(prog *load.Program, path string, runs map[string]*RootRun
 }
 
 // compare looks at one root.
-func (r *Result) compare(run *RootRun, ims []*images, e *summary.Engine, m properties.Model, verdicts map[[3]string]judge.Verdict) {
-	panicked := false
+func (r *Result) compare(run *RootRun, ims []*images, e *summary.Engine, m properties.Model, verdicts map[[3]string]judge.Question) {
 	byInstance := map[string][]Observed{}
 	var order []string
 	for _, o := range run.Seen {
-		if o.Exit == "panic" {
-			panicked = true
-		}
 		if byInstance[o.Instance] == nil {
 			order = append(order, o.Instance)
 		}
@@ -265,7 +264,6 @@ func (r *Result) compare(run *RootRun, ims []*images, e *summary.Engine, m prope
 			}
 		}
 	}
-	_ = panicked
 }
 
 // compareSeen looks for what ran in the image.
@@ -324,12 +322,13 @@ func (r *Result) bounds(o Observed, im *images, e *summary.Engine) {
 
 // claims compares verdicts with what ran. A contract (the caller gives back)
 // makes a claim hold that the image breaks; that is no error.
-func (r *Result) claims(o Observed, im *images, verdicts map[[3]string]judge.Verdict) {
+func (r *Result) claims(o Observed, im *images, verdicts map[[3]string]judge.Question) {
 	if im == nil || o.Exit == "panic" {
 		return
 	}
 	check := func(claim string, vs [][2]int, ok func(taken, given int) bool, known *image) {
-		if verdict, asked := verdicts[[3]string{o.Root, o.Instance, claim}]; !asked || verdict != judge.Holds {
+		q, asked := verdicts[[3]string{o.Root, o.Instance, claim}]
+		if !asked || q.Verdict != judge.Holds {
 			return
 		}
 		for _, v := range vs {
@@ -339,7 +338,7 @@ func (r *Result) claims(o Observed, im *images, verdicts map[[3]string]judge.Ver
 			if !im.start.Born && known.has(v) {
 				continue
 			}
-			r.fail(Refuted, o.Root, o.Instance, claim, "%d/%d ran", v[0], v[1])
+			r.fail(Refuted, o.Root, o.Instance, claim, "%d/%d ran; it holds because %s", v[0], v[1], q.Grounds)
 		}
 	}
 	known := *im.sure[o.Exit]

@@ -9,9 +9,11 @@ import (
 
 // Generate makes the program of a seed. In a known program no branch is left
 // to the oracle, so that every root has exactly one run.
-func Generate(seed int64, known bool) *Program {
+//
+// without names features to leave out, see features.
+func Generate(seed int64, known bool, without ...string) *Program {
 	for draft := uint64(0); ; draft++ {
-		p := generate(seed, draft, known)
+		p := generate(seed, draft, known, without)
 		_, err := p.Check()
 		for err != nil && dropUnused(p, err) {
 			_, err = p.Check()
@@ -26,10 +28,10 @@ func Generate(seed int64, known bool) *Program {
 }
 
 // generate makes a draft, which need not compile: about 1 in 600 does not.
-func generate(seed int64, draft uint64, known bool) *Program {
-	g := &gen{r: rand.New(rand.NewPCG(uint64(seed), draft)), known: known, at: -1}
-	g.risky = g.chance(60)
-	g.spawns = g.chance(25)
+func generate(seed int64, draft uint64, known bool, without []string) *Program {
+	g := &gen{r: rand.New(rand.NewPCG(uint64(seed), draft)), known: known, at: -1, without: without}
+	g.risky = g.chance(60) && g.has("panic")
+	g.spawns = g.chance(25) && g.has("goroutine")
 	for range 1 + g.r.IntN(4) {
 		g.signature()
 	}
@@ -78,6 +80,40 @@ type gen struct {
 	at         int // the function being written; -1: a root
 	names      int
 	usesRescue bool
+	without    []string
+}
+
+// features are what Generate can leave out; the rest is always in.
+var features = []string{
+	"field func", // a function value stored in a field and called
+	"set func",   // a variable of function type is assigned again
+	"set res",    // a pointer variable is assigned again
+	"set P",      // the pointer field of a box is assigned
+	"box",        // a box is allocated
+	"local",      // an instance is allocated
+	"goto",
+	"goroutine",
+	"goexit",
+	"panic",
+	"defer",
+	"closure",
+	"method value",
+	"interface",
+	"func param",
+	"named",
+	"flag",
+	"field flag",
+	"returned func",
+	"returned res",
+	"two results",
+	"field pointer",
+}
+
+func (g *gen) has(feature string) bool {
+	if !slices.Contains(features, feature) {
+		panic("gentest: no feature " + feature)
+	}
+	return !slices.Contains(g.without, feature)
 }
 
 // A signature is a helper's.
@@ -129,22 +165,32 @@ func (g *gen) signature() {
 	s := signature{name: fmt.Sprintf("f%d", len(g.funcs))}
 	types := []string{"*Res", "*Res", "*Res", "bool", "func()", "Taker", "int", "*Box"}
 	for i := range g.r.IntN(4) {
-		s.params = append(s.params, param{fmt.Sprintf("p%d", i), pick(g, types)})
+		t := pick(g, types)
+		if t == "func()" && !g.has("func param") || t == "Taker" && !g.has("interface") {
+			t = "*Res"
+		}
+		s.params = append(s.params, param{fmt.Sprintf("p%d", i), t})
 	}
 	s.method = g.chance(30)
 	switch g.r.IntN(9) {
 	case 0, 1:
-		s.results = []string{"*Res"}
+		if g.has("returned res") {
+			s.results = []string{"*Res"}
+		}
 	case 2:
 		s.results = []string{"bool"}
 	case 3:
-		s.results = []string{"func()"}
+		if g.has("returned func") {
+			s.results = []string{"func()"}
+		}
 	case 4:
 		s.results = []string{"error"}
 	case 5:
-		s.results = []string{"*Res", "bool"}
+		if g.has("two results") {
+			s.results = []string{"*Res", "bool"}
+		}
 	}
-	s.named = len(s.results) > 0 && g.chance(40)
+	s.named = len(s.results) > 0 && g.chance(40) && g.has("named")
 	g.funcs = append(g.funcs, s)
 }
 
@@ -292,6 +338,9 @@ func (g *gen) receiver(sc *scope) string {
 		return pick(g, v)
 	}
 	if v := sc.vars["*Box"]; len(v) > 0 && g.chance(90) {
+		if !g.has("field pointer") {
+			return pick(g, v) + pick(g, []string{".A", ".A", ".C"})
+		}
 		return pick(g, v) + pick(g, []string{".A", ".A", ".C", ".P"})
 	}
 	return "Glob"
@@ -434,6 +483,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 		sc.add("bool", f)
 		return text("%s := %s\n_ = %s", f, v, f)
 	case 6:
+		if !g.has("flag") {
+			return nil
+		}
 		if sc.quiet {
 			return nil
 		}
@@ -442,6 +494,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 		}
 		return nil
 	case 7:
+		if !g.has("field flag") {
+			return nil
+		}
 		if b := sc.vars["*Box"]; len(b) > 0 && !sc.quiet {
 			return text("%s.F = %s", pick(g, b), g.value(sc, "bool"))
 		}
@@ -475,6 +530,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 			return tree(label+"for {\nif !rt.Flip() { break }", g.loopBody(sc, l), "}")
 		}
 		if g.known || sc.quiet {
+			return nil
+		}
+		if !g.has("goto") {
 			return nil
 		}
 		again := g.name("L")
@@ -511,6 +569,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 		}
 		return nil
 	case 12, 13:
+		if !g.has("defer") {
+			return nil
+		}
 		if sc.quiet {
 			return text("defer %s", g.event(sc))
 		}
@@ -545,13 +606,16 @@ func (g *gen) tryStmt(sc *scope) *node {
 		}
 		return text("if %s { panic(\"oops\") }", g.cond(sc))
 	case 16:
-		if !g.risky || sc.quiet || g.chance(60) {
+		if !g.risky || sc.quiet || g.chance(60) || !g.has("goexit") {
 			return nil
 		}
 		return text("if %s { runtime.Goexit() }", g.cond(sc))
 	case 17, 18, 19, 20, 21:
 		return g.call(sc)
 	case 22:
+		if !g.has("closure") {
+			return nil
+		}
 		fn := g.name("g")
 		n := tree(fn+" := func() {", g.closure(sc, false), "}\n_ = "+fn)
 		if !sc.quiet {
@@ -565,21 +629,33 @@ func (g *gen) tryStmt(sc *scope) *node {
 		}
 		return nil
 	case 25:
+		if !g.has("set func") {
+			return nil
+		}
 		if v := sc.vars["func()"]; len(v) > 0 && !sc.quiet {
 			return text("%s = %s", pick(g, v), g.value(&scope{vars: map[string][]string{"*Res": sc.vars["*Res"], "*Box": sc.vars["*Box"]}}, "func()"))
 		}
 		return nil
 	case 26:
+		if !g.has("method value") {
+			return nil
+		}
 		m := g.name("m")
 		n := text("%s := %s%s\n_ = %s", m, g.receiver(sc), pick(g, []string{".Take", ".Give"}), m)
 		sc.add("func()", m)
 		return n
 	case 27:
+		if !g.has("interface") {
+			return nil
+		}
 		i := g.name("t")
 		n := text("var %s Taker = %s\n_ = %s", i, g.value(sc, "Taker"), i)
 		sc.add("Taker", i)
 		return n
 	case 28:
+		if !g.has("local") {
+			return nil
+		}
 		r := g.name("r")
 		if sc.quiet {
 			return nil
@@ -591,6 +667,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 		sc.add("*Res", r)
 		return n
 	case 29:
+		if !g.has("local") {
+			return nil
+		}
 		r := g.name("v")
 		if sc.quiet {
 			return nil
@@ -599,6 +678,9 @@ func (g *gen) tryStmt(sc *scope) *node {
 		sc.add("*Res", r+"p")
 		return n
 	case 30:
+		if !g.has("box") {
+			return nil
+		}
 		r := g.name("b")
 		if sc.quiet {
 			return nil
@@ -607,16 +689,25 @@ func (g *gen) tryStmt(sc *scope) *node {
 		sc.add("*Box", r)
 		return n
 	case 31:
+		if !g.has("set res") {
+			return nil
+		}
 		if v := sc.vars["*Res"]; len(v) > 0 && !sc.quiet {
 			return text("%s = %s", pick(g, v), g.resPtr(sc))
 		}
 		return nil
 	case 32:
+		if !g.has("set P") {
+			return nil
+		}
 		if v := sc.vars["*Box"]; len(v) > 0 && !sc.quiet {
 			return text("%s.P = %s", pick(g, v), g.resPtr(sc))
 		}
 		return nil
 	case 33:
+		if !g.has("field func") {
+			return nil
+		}
 		if v := sc.vars["*Box"]; len(v) > 0 && !sc.quiet {
 			b := pick(g, v)
 			return text("%s.G = %s\n%s.G()", b, g.value(sc, "func()"), b)

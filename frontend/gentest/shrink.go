@@ -10,7 +10,7 @@ import (
 // the go command serves many.
 const (
 	shrinkRounds     = 60
-	shrinkCandidates = 60 // per program and round
+	shrinkCandidates = 24 // per program and round
 )
 
 // Shrink makes failing programs smaller as long as their first failure stays:
