@@ -134,6 +134,28 @@ func (m *Model) buildCone() {
 	m.coverBirths()
 }
 
+// maxPath bounds the loads on the way from a root's parameter to an instance.
+const maxPath = 3
+
+// farAway tells whether an instance is not asked about from this frame: it lies
+// behind more loads than maxPath, or inside a recursive structure (a field
+// occurs twice on the way). A function nearer to it is then a root for it.
+func (t *exprs) farAway(e Expr) bool {
+	if int(t.loads[e]) > maxPath {
+		return true
+	}
+	for x := e; t.isSel(x); x = t.nodes[x].x {
+		if n := t.nodes[x]; n.kind == kField {
+			for y := n.x; t.isSel(y); y = t.nodes[y].x {
+				if k := t.nodes[y]; k.kind == kField && k.ref == n.ref {
+					return true
+				}
+			}
+		}
+	}
+	return false
+}
+
 // addSubject records a subject of fi's cone, or a birth if it does not exist at entry.
 func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 	if o.s == 0 || !m.typeFits(fi.fn, o.s) {
@@ -145,7 +167,7 @@ func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 		default:
 			return false
 		}
-		if fi.subjects[o.s] || len(fi.subjList) >= maxSubjects {
+		if fi.subjects[o.s] || len(fi.subjList) >= maxSubjects || m.x.farAway(o.s) {
 			return false
 		}
 		fi.subjects[o.s] = true

@@ -230,10 +230,10 @@ func (m *Model) Next() (properties.Start, bool) {
 }
 
 // Settle implements properties.BottomUp.
-func (m *Model) Settle(closed bool) {
+func (m *Model) Settle(s properties.Settled) {
 	u := m.units.now
-	u.settled, u.closed = true, closed
-	if closed {
+	u.settled, u.closed = true, s == properties.Closed
+	if s != properties.NotClosed {
 		if u.u == 0 && u.fn.exports == exportsUnknown {
 			u.fn.exports = exportsNo
 		}

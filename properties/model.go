@@ -38,9 +38,18 @@ type Ledger interface {
 type BottomUp interface {
 	// Next gives the next start to look at, callees before callers.
 	Next() (Start, bool)
-	// Settle says whether the start that Next gave last is closed.
-	Settle(closed bool)
+	// Settle says what was found of the start that Next gave last.
+	Settle(Settled)
 }
+
+// Settled is what a start turned out to be.
+type Settled uint8
+
+const (
+	Closed    Settled = iota // callers need not follow it
+	NotClosed                // callers have to follow it
+	Spent                    // the budget ran out: it is judged on its own, and callers do not follow it
+)
 
 // Place is a position in the source. File is as the user should see it
 // (relative to the module root with forward slashes where it is inside).

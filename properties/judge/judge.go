@@ -25,6 +25,10 @@ type Options struct {
 	Asked func(Verdict)
 }
 
+// lookShare is the part of a start's budget that is spent on finding out
+// whether its callers have to follow it.
+const lookShare = 8
+
 const (
 	DefaultSteps  = 200_000
 	DefaultCauses = 20
@@ -78,9 +82,11 @@ func (o Options) causes() int {
 func newJudge(rule *properties.ResolvedRule, m properties.Model, s searcher, opt Options) *judge {
 	j := &judge{rule: rule, m: m, s: s, opt: opt, homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
 	if b, ok := m.(properties.BottomUp); ok {
+		j.s.limit(opt.steps() / lookShare)
 		for s, more := b.Next(); more; s, more = b.Next() {
 			b.Settle(j.closed(&s))
 		}
+		j.s.limit(opt.steps())
 	}
 	j.starts = m.Starts()
 	for i := range j.starts {
@@ -189,13 +195,21 @@ type answered struct {
 	blame   []properties.Func
 }
 
-// closed says whether callers of a function need not follow it: see
-// properties.BottomUp. It asks every claim, advice too, on or off.
-func (j *judge) closed(s *properties.Start) bool {
+// closed says whether callers of a function have to follow it: see
+// properties.BottomUp. It asks every claim, advice too, on or off, with a part
+// of the budget: there are many functions to look at.
+func (j *judge) closed(s *properties.Start) properties.Settled {
+	of := func(stop *stopped) properties.Settled {
+		if stop != nil {
+			return properties.Spent
+		}
+		return properties.NotClosed
+	}
+	matters := func(e properties.Exit) bool { return e.Kind != properties.ExitPanic || s.Caught }
 	for ci := range j.rule.Claims {
 		c := &j.rule.Claims[ci]
 		if !c.Linear {
-			return false
+			return properties.NotClosed
 		}
 		for qi := range c.Questions {
 			w := c.Questions[qi].Weights
@@ -205,29 +219,31 @@ func (j *judge) closed(s *properties.Start) bool {
 				a.stops = pds.MarkLoss
 				a.accept = func(q pds.StateID) bool {
 					e := j.m.Exit(q)
-					return (e.Kind != properties.ExitPanic || s.Caught) && !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
+					return matters(e) && !(s.Born && e.Unborn) && !(j.rule.Moves && e.Outside)
 				}
 			}
 			most, stop := j.s.greatest(a)
 			if stop != nil || most.over(c.Questions[qi].Bound) {
-				return false
+				return of(stop)
 			}
 			if s.Born {
 				continue
 			}
-			all, stop := j.span(s.Head, w, func(e properties.Exit) bool { return e.Kind != properties.ExitPanic || s.Caught })
+			all, stop := j.span(s.Head, w, matters)
 			if stop != nil || !all.none && !all.is(0) {
-				return false
+				return of(stop)
 			}
 		}
 	}
 	if s.Born {
 		live, stop := j.span(s.Head, make([]int64, len(j.rule.Counts)), func(e properties.Exit) bool {
-			return !e.Unborn && e.Named && (e.Kind != properties.ExitPanic || s.Caught)
+			return !e.Unborn && e.Named && matters(e)
 		})
-		return stop == nil && live.none
+		if stop != nil || !live.none {
+			return of(stop)
+		}
 	}
-	return true
+	return properties.Closed
 }
 
 // answer decides one inequality of a claim at one start.
