@@ -41,6 +41,9 @@ func (im *Image) Greatest(ctx context.Context, f Form) Bound {
 	if im.r.empty {
 		return Bound{Status: No}
 	}
+	if im.data != nil && !im.data.fixed() {
+		return Bound{Budget: "parameters"}
+	}
 	c := im.circulations()
 	r, err := c.s.Check(ctx, lia.GE(c.lin(f), lia.Const(1)))
 	if err != nil {
@@ -70,6 +73,9 @@ func (im *Image) Least(ctx context.Context, f Form) Bound {
 
 // most finds the greatest value of a form that is known to be bounded.
 func (im *Image) most(ctx context.Context, f Form, also lia.Formula) Bound {
+	if !im.exactSlots() {
+		return Bound{Budget: "slots"}
+	}
 	o, err := im.s.Maximise(ctx, im.lin(f), also)
 	if err != nil {
 		panic(fmt.Sprintf("parikh: most: %v", err))
@@ -94,6 +100,9 @@ func (im *Image) circulations() *circulation {
 	if im.circ == nil {
 		f := newFlow(im.r, im.opt, nil, false)
 		im.circ = &circulation{flow: f, counts: f.countVars(im.g.Counts)}
+		if im.data != nil {
+			im.circ.counts = im.data.cells(f, im.circ.counts)
+		}
 	}
 	return im.circ
 }
@@ -131,6 +140,14 @@ func (im *Image) Minimal(ctx context.Context, f lia.Formula, limit int) (Vectors
 				return Vectors{}, ErrNegative
 			}
 		}
+	}
+	for _, p := range im.data.weights() {
+		if p < 0 {
+			return Vectors{}, ErrNegative
+		}
+	}
+	if !im.exactSlots() {
+		return Vectors{Budget: "slots"}, nil
 	}
 	var out Vectors
 	sum := make([]lia.Lin, len(im.counts))
@@ -229,7 +246,8 @@ type Rays struct {
 // Rays finds the extreme rays of the image, looking only at the given counts (at
 // most MaxRayCounts, all different; the caller's duty). It keeps an inner cone and
 // looks for circulations beyond its facets; each one found is split until it
-// cannot be split any more, so that there are finitely many.
+// cannot be split any more, so that there are finitely many. Systems with data are
+// expanded first ([Expand]).
 func (im *Image) Rays(ctx context.Context, counts []int) Rays {
 	if len(counts) > MaxRayCounts {
 		panic(fmt.Sprintf("parikh: rays of %d counts", len(counts)))
@@ -238,6 +256,9 @@ func (im *Image) Rays(ctx context.Context, counts []int) Rays {
 		return Rays{Status: No}
 	}
 	k := len(counts)
+	if im.data != nil {
+		return Rays{Budget: "data"}
+	}
 	inner, budget := im.circulations().cone(ctx, counts)
 	if budget != "" {
 		return Rays{Rays: inner, Budget: budget}

@@ -42,8 +42,11 @@ type Answer struct {
 	// Budget names what ran out if Status is Unknown: pivots, nodes, clauses, cuts
 	// or cancelled.
 	Budget string
-	Counts []*big.Int // Yes: one per count of the grammar
+	Counts []*big.Int // Yes: one per name in Names
 	prods  []*big.Int // Yes: by production of the input
+	// Parameters and Choices say with which values, in systems with data.
+	Parameters []Value
+	Choices    []Choice
 }
 
 // Productions says how often each production of the input grammar is used; nil
@@ -58,7 +61,9 @@ type Image struct {
 	r   *reduced
 	opt Options
 	*flow
-	counts []lia.Var    // by count
+	names  []string     // of the counts that questions speak of
+	counts []lia.Var    // by name
+	data   *dataLayer   // nil without data
 	circ   *circulation // made when first needed
 }
 
@@ -73,7 +78,7 @@ func New(g *Grammar, opt Options) *Image {
 	if im.r.empty {
 		s.Assert("empty", lia.False())
 	}
-	im.counts = im.flow.countVars(g.Counts)
+	im.names, im.counts = g.Counts, im.flow.countVars(g.Counts)
 	s.OnModel(func(m lia.Model) ([]lia.Formula, error) { return im.flow.cut(m), nil })
 	return im
 }
@@ -111,6 +116,9 @@ func (im *Image) Cuts() (cuts, ranked int) {
 // Grammar is the grammar that the image was made of.
 func (im *Image) Grammar() *Grammar { return im.g }
 
+// Names lists the counts that questions speak of; the caller must not change it.
+func (im *Image) Names() []string { return im.names }
+
 // Count is a count as a form, for questions.
 func (im *Image) Count(i int) lia.Lin { return lia.V(im.counts[i]) }
 
@@ -121,7 +129,7 @@ func (im *Image) Parse(text string) (lia.Formula, error) {
 }
 
 func (im *Image) scope(name string) (lia.Var, lia.Bool, bool) {
-	for i, c := range im.g.Counts {
+	for i, c := range im.names {
 		if c == name {
 			return im.counts[i], 0, true
 		}
@@ -131,6 +139,9 @@ func (im *Image) scope(name string) (lia.Var, lia.Bool, bool) {
 
 // Ask asks for a derivation whose counts satisfy f.
 func (im *Image) Ask(ctx context.Context, f lia.Formula) Answer {
+	if im.data != nil && len(im.data.slotted) > 0 {
+		return im.askSlots(ctx, f)
+	}
 	r, err := im.s.Check(ctx, f)
 	if err != nil {
 		panic(fmt.Sprintf("parikh: ask: %v", err))
@@ -154,6 +165,9 @@ func (im *Image) answer(st lia.Status, budget string, m lia.Model) Answer {
 		y[i] = m.Int(x)
 	}
 	a.prods = im.r.expand(y)
+	if im.data != nil {
+		a.Parameters, a.Choices = im.data.values(m)
+	}
 	return a
 }
 

@@ -65,6 +65,10 @@ func (im *Image) LinearSets(ctx context.Context, limit int) Union {
 		u.Complete = true
 		return u
 	}
+	if im.data != nil {
+		u.Budget = "data"
+		return u
+	}
 	var total []lia.Lin
 	for _, x := range im.y {
 		total = append(total, lia.V(x))
