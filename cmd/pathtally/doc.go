@@ -5,13 +5,16 @@
 // analyses nothing itself.
 //
 //	pathtally check [packages]      judge the rules
+//	pathtally accept [packages]     record findings with a reason; see package accept
 //	pathtally rules list|show|try   look at the rules, run their examples
+//	pathtally join FILES            put the parts of a run together (part.go)
+//	pathtally completion SHELL      for bash, zsh, fish and powershell
 //
 // # Exit statuses of check
 //
-//	0  nothing is broken or undecided; an advice never stops
+//	0  nothing new is broken or undecided; advice and what is accepted never stop
 //	1  something is broken (wins over 3)
-//	2  it could not run: usage, load or rule error, or a bug
+//	2  it could not run: usage, load or rule error, or a bug; or --partial left something out
 //	3  nothing is broken, something is undecided (not with --undecided note)
 //
 // Results go to standard output, everything else to standard error. With

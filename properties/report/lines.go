@@ -50,11 +50,15 @@ func Lines(w io.Writer, run *Run, opt Options) error {
 		}
 		fmt.Fprintf(b, "%s: undecided %s: %s%s: %s\n", place(o.Place), claims(g), o.Root.Name, inst, o.StoppedBy)
 	}
-	for _, st := range run.Stale {
-		fmt.Fprintf(b, "%s:%d: advice %s: %s\n", st.File, st.Line, st.Claim, st.Text)
-	}
 	if !opt.Quiet {
+		for _, st := range run.Stale {
+			fmt.Fprintf(b, "%s:%d: advice %s: %s\n", st.File, st.Line, st.Claim, st.Text)
+		}
 		total, parts := Sentence(run.Result)
+		if run.Gated {
+			s := run.Standing()
+			parts += "; new: " + counted(s.NewBroken, s.NewAdvice, s.NewOpen) + "; accepted: " + counted(s.AcceptedBroken, 0, s.AcceptedOpen)
+		}
 		fmt.Fprintf(b, "%s: %s\n", total, parts)
 	}
 	return b.Flush()

@@ -165,6 +165,11 @@ func TestTextOfAGate(t *testing.T) {
 	}
 	golden(t, "textgated.golden", b.Bytes())
 	b.Reset()
+	if err := Lines(&b, gated(), Options{}); err != nil {
+		t.Fatal(err)
+	}
+	golden(t, "linesgated.golden", b.Bytes())
+	b.Reset()
 	if err := Text(&b, gated(), Options{Verbose: true}); err != nil {
 		t.Fatal(err)
 	}
