@@ -197,6 +197,8 @@ func TestBase(t *testing.T) {
 		t.Skip("no git")
 	}
 	top := t.TempDir()
+	scratch := t.TempDir() // of its own, so that other runs do not count
+	t.Setenv("TMPDIR", scratch)
 	dir := filepath.Join(top, "service")
 	if err := os.MkdirAll(dir, 0o755); err != nil {
 		t.Fatal(err)
@@ -235,7 +237,7 @@ func TestBase(t *testing.T) {
 			t.Errorf("--base %s: status %d\n%s", rev, status, errs)
 		}
 	}
-	if entries, err := filepath.Glob(filepath.Join(os.TempDir(), "pathtally-base-*")); err != nil || len(entries) > 0 {
+	if entries, err := filepath.Glob(filepath.Join(scratch, "pathtally-base-*")); err != nil || len(entries) > 0 {
 		t.Errorf("left behind: %v %v", entries, err)
 	}
 }
