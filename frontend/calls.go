@@ -1177,7 +1177,8 @@ func (m *Model) resume(st state, sym symbol, fr *frame, dst []pds.Rule) []pds.Ru
 			return dst
 		}
 	}
-	if call != nil && wasUnborn && fr.ns.phase == unborn {
+	if call != nil && wasUnborn && fr.ns.phase == unborn && m.fns[ref.callee].exports != exportsYes {
+		// What an entered callee has to do with instances was followed in it.
 		if out, done := m.bornAt(fr, call, dst, fr.i+1); done {
 			return out
 		}

@@ -92,7 +92,9 @@ func judgeCase(t *testing.T, prog *load.Program, c casetest.Case, path, file str
 		switch r.Name {
 		case "mutex", "rwmutex", "file", "body", "cancel":
 			results = append(results, judge.Judge(r, sh.Lower(r), judge.Options{
-				State: func(claim, pkg string) properties.State { return book.State(r, claim, properties.PackageRef{Path: pkg, Dir: "."}) },
+				State: func(claim, pkg string) properties.State {
+					return book.State(r, claim, properties.PackageRef{Path: pkg, Dir: "."})
+				},
 			}))
 		}
 	}

@@ -177,19 +177,13 @@ func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 	if m.eventBirths || m.x.hasGhost(o.s) {
 		return false // instances of this rule are born at its events only; elements where they are selected
 	}
-	switch b := o.b.(type) {
+	switch o.b.(type) {
 	case *ssa.Alloc:
 		if m.x.loads[o.n] > 0 {
 			return false // not there yet when the holder is allocated
 		}
 	case *ssa.MakeClosure, *ssa.Function, *ssa.Const, *ssa.Builtin:
 		return false
-	case *ssa.Call:
-		if fn := b.Common().StaticCallee(); fn != nil {
-			if gi, ok := m.fnOf[fn]; ok && gi.bearing {
-				return false // born inside the callee
-			}
-		}
 	}
 	for _, x := range fi.births[o.b] {
 		if x.static == o.s {

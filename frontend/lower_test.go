@@ -51,10 +51,10 @@ func TestTmp(t *testing.T) {
 		for _, s := range m.starts {
 			before := steps
 			explore(m, s.Head, seen, &steps)
-			if steps-before > 20000 {
+			if steps-before > 3000 {
 				fmt.Println("  big", s.Root.Name, s.Kind, s.Instance, steps-before)
 			}
-			if steps > 300000 {
+			if steps > 3000000 {
 				break
 			}
 		}
@@ -121,7 +121,7 @@ func explore(m *Model, h pds.Head, seen map[pds.Head]bool, steps *int) {
 		}
 	}
 	visit(h)
-	for len(work) > 0 && *steps < 400000 {
+	for n := 0; len(work) > 0 && n < 20000; n++ {
 		h := work[len(work)-1]
 		work = work[:len(work)-1]
 		*steps++

@@ -174,7 +174,7 @@ func (r *Result) check(prog *load.Program, path string, runs map[string]*RootRun
 	byRoot := map[string][]*images{}
 	if b, ok := m.(properties.BottomUp); ok {
 		for _, more := b.Next(); more; _, more = b.Next() {
-			b.Settle(false) // no short cuts: every root's paths go all the way down
+			b.Settle(properties.NotClosed) // no short cuts: every root's paths go all the way down
 		}
 	}
 	for _, s := range m.Starts() {
