@@ -6,16 +6,19 @@ import (
 	"errors"
 	"fmt"
 	"math/big"
+	"slices"
 )
 
 // Derivation is a derivation tree in run-length form. A Group stands for Size
 // occurrences of one nonterminal, numbered from 0; its Uses say, run by run, which
-// production each of them takes; each kid of a use is a group with one occurrence
-// per occurrence of the run. Pumps stand between an occurrence and its production:
-// Times turns, each of which leads from the nonterminal back to itself.
+// production each of them takes; each kid of a use is a run of occurrences of some
+// group, one for each occurrence of the use. Every occurrence but the start is a
+// kid once. Pumps stand between an occurrence and its production: Times turns, each
+// of which leads from the nonterminal back to itself.
 //
-// Groups[0] is the start. The size of a derivation is independent of its counts:
-// O(productions · nonterminals) groups and at most one pump per production.
+// Groups[0] is the start; groups stand before those of their kids. The size of a
+// derivation is independent of its counts: O(productions · nonterminals) groups
+// and at most one pump per production.
 type Derivation struct {
 	G      *Grammar
 	Groups []Group
@@ -30,12 +33,18 @@ type Group struct {
 }
 
 // Use says that the occurrences From..From+Times-1 of a group take Prod. Kids has
-// a group per nonterminal on the right, in order; [Hole] where a pump's turn goes
-// on.
+// a run of occurrences per nonterminal on the right, in order.
 type Use struct {
 	From, Times *big.Int
 	Prod        ProdID
-	Kids        []int
+	Kids        []Kid
+}
+
+// Kid is the occurrences from From on of a group; Group is [Hole] where a pump's
+// turn goes on.
+type Kid struct {
+	Group int
+	From  *big.Int
 }
 
 // Hole is the kid at which a turn of a pump ends and the next one begins.
@@ -51,21 +60,15 @@ type Pump struct {
 // ErrNoDerivation says that numbers of productions are not those of a derivation.
 var ErrNoDerivation = errors.New("parikh: these are not the productions of a derivation")
 
-// pending is a run of occurrences without a production.
-type pending struct {
-	group       int
-	from, times *big.Int
-}
-
 type deriver struct {
-	d     *Derivation
-	by    [][]ProdID
-	rem   []*big.Int // by production: how often still to use
-	pend  [][]pending
-	owed  []*big.Int // by nonterminal: sum over pend
-	place []int      // by nonterminal: a group with an occurrence that has a production; -1
-	rank  []int      // by nonterminal; -1: no way to an end
-	best  []ProdID
+	d      *Derivation
+	by     [][]ProdID
+	rem    []*big.Int // by production: how often still to use
+	open   []int      // by nonterminal: the group of occurrences without a production; -1
+	closed []int      // groups in the order in which they got productions
+	place  []int      // by nonterminal: a group with an occurrence that has a production; -1
+	rank   []int      // by nonterminal; -1: no way to an end
+	best   []ProdID
 }
 
 // Derive rebuilds a derivation of g that uses each production y[p] times. The
@@ -121,15 +124,15 @@ func Derive(g *Grammar, y []*big.Int) (*Derivation, error) {
 }
 
 func derive(g *Grammar, y []*big.Int) (*Derivation, error) {
-	w := &deriver{d: &Derivation{G: g}, by: g.byLhs(), place: make([]int, g.NumNT()), pend: make([][]pending, g.NumNT()), owed: make([]*big.Int, g.NumNT())}
+	w := &deriver{d: &Derivation{G: g}, by: g.byLhs(), place: make([]int, g.NumNT()), open: make([]int, g.NumNT())}
 	for a := range w.place {
 		w.place[a] = -1
-		w.owed[a] = new(big.Int)
+		w.open[a] = -1
 	}
 	for _, n := range y {
 		w.rem = append(w.rem, new(big.Int).Set(n))
 	}
-	w.owe(w.newGroup(g.Start, bigOne), bigOne)
+	w.owe(g.Start, bigOne)
 	if !w.grow() {
 		return nil, ErrNoDerivation
 	}
@@ -139,6 +142,7 @@ func derive(g *Grammar, y []*big.Int) (*Derivation, error) {
 			return nil, ErrNoDerivation
 		}
 		if cyc == nil {
+			w.renumber()
 			return w.d, nil
 		}
 		w.pump(cyc)
@@ -153,22 +157,25 @@ func (w *deriver) newGroup(a NT, size *big.Int) int {
 	return len(w.d.Groups) - 1
 }
 
-func (w *deriver) owe(group int, times *big.Int) {
-	a := w.d.Groups[group].NT
-	w.pend[a] = append(w.pend[a], pending{group, new(big.Int), new(big.Int).Set(times)})
-	w.owed[a].Add(w.owed[a], times)
+// owe adds occurrences without a production.
+func (w *deriver) owe(a NT, times *big.Int) Kid {
+	if w.open[a] < 0 {
+		w.open[a] = w.newGroup(a, new(big.Int))
+	}
+	size := w.d.Groups[w.open[a]].Size
+	from := new(big.Int).Set(size)
+	size.Add(size, times)
+	return Kid{w.open[a], from}
 }
 
 // use gives occurrences of a group a production; kids other than skip are owed.
-func (w *deriver) use(group int, from, times *big.Int, p ProdID, skip int) (kids []int) {
+func (w *deriver) use(group int, from, times *big.Int, p ProdID, skip int) (kids []Kid) {
 	for i, b := range w.d.G.Prods[p].Rhs {
 		if i == skip {
-			kids = append(kids, Hole)
+			kids = append(kids, Kid{Hole, nil})
 			continue
 		}
-		k := w.newGroup(b, times)
-		kids = append(kids, k)
-		w.owe(k, times)
+		kids = append(kids, w.owe(b, times))
 	}
 	g := &w.d.Groups[group]
 	g.Uses = append(g.Uses, Use{From: new(big.Int).Set(from), Times: new(big.Int).Set(times), Prod: p, Kids: kids})
@@ -177,6 +184,29 @@ func (w *deriver) use(group int, from, times *big.Int, p ProdID, skip int) (kids
 	}
 	w.rem[p].Sub(w.rem[p], times)
 	return kids
+}
+
+// renumber puts groups in the order in which they were closed.
+func (w *deriver) renumber() {
+	to := make([]int, len(w.d.Groups))
+	groups := make([]Group, 0, len(w.d.Groups))
+	for i, g := range w.closed {
+		to[g] = i
+		groups = append(groups, w.d.Groups[g])
+	}
+	for i := range groups {
+		for _, u := range groups[i].Uses {
+			for j := range u.Kids {
+				if u.Kids[j].Group != Hole {
+					u.Kids[j].Group = to[u.Kids[j].Group]
+				}
+			}
+		}
+		for j := range groups[i].Pumps {
+			groups[i].Pumps[j].Top = to[groups[i].Pumps[j].Top]
+		}
+	}
+	w.d.Groups = groups
 }
 
 // order ranks nonterminals by the height of their least tree of productions that
@@ -229,8 +259,8 @@ func (w *deriver) grow() bool {
 	for {
 		// The owed nonterminal of highest rank: what it brings has lower ranks.
 		top := NT(-1)
-		for a := range w.owed {
-			if w.owed[a].Sign() > 0 {
+		for a := range w.open {
+			if w.open[a] >= 0 {
 				if w.rank[a] < 0 {
 					return false
 				}
@@ -242,21 +272,28 @@ func (w *deriver) grow() bool {
 		if top < 0 {
 			return true
 		}
-		p := w.best[top]
-		if w.rem[p].Sign() <= 0 {
-			w.order()
-			continue
+		group := w.open[top]
+		w.open[top] = -1
+		w.closed = append(w.closed, group)
+		from := new(big.Int)
+		left := new(big.Int).Set(w.d.Groups[group].Size)
+		for left.Sign() > 0 {
+			p := w.best[top]
+			if w.rem[p].Sign() <= 0 {
+				if w.order(); w.rank[top] < 0 {
+					return false
+				}
+				continue
+			}
+			times := left
+			if times.Cmp(w.rem[p]) > 0 {
+				times = w.rem[p]
+			}
+			times = new(big.Int).Set(times)
+			w.use(group, from, times, p, -1)
+			from.Add(from, times)
+			left.Sub(left, times)
 		}
-		list := w.pend[top]
-		run := list[len(list)-1]
-		w.pend[top] = list[:len(list)-1]
-		times := run.times
-		if times.Cmp(w.rem[p]) > 0 {
-			times = new(big.Int).Set(w.rem[p])
-			w.pend[top] = append(w.pend[top], pending{run.group, new(big.Int).Add(run.from, times), new(big.Int).Sub(run.times, times)})
-		}
-		w.owed[top].Sub(w.owed[top], times)
-		w.use(run.group, run.from, times, p, -1)
 	}
 }
 
@@ -344,13 +381,12 @@ func (w *deriver) pump(cyc []link) {
 	w.d.Groups[host].Pumps = append(w.d.Groups[host].Pumps, Pump{At: new(big.Int).Set(at), Times: new(big.Int).Set(k), Top: top})
 	group := top
 	for i, l := range cyc {
-		last := i == len(cyc)-1
+		w.closed = append(w.closed, group)
 		kids := w.use(group, new(big.Int), k, l.p, l.next)
-		if !last {
+		if i < len(cyc)-1 {
 			// The next link's group takes the place of the hole.
-			next := w.newGroup(w.d.G.Prods[l.p].Rhs[l.next], k)
-			kids[l.next] = next
-			group = next
+			group = w.newGroup(w.d.G.Prods[l.p].Rhs[l.next], k)
+			kids[l.next] = Kid{group, new(big.Int)}
 		}
 	}
 }
@@ -367,14 +403,15 @@ func (d *Derivation) Check() ([]*big.Int, error) {
 	bad := func(g int, format string, args ...any) error {
 		return fmt.Errorf("parikh: derivation: group %d: %s", g, fmt.Sprintf(format, args...))
 	}
-	parents := make([]int, len(d.Groups)) // how often a group is a kid or a pump's top
-	holes := make([]*big.Int, len(d.Groups))
-	// Groups are made before their kids, so one backward pass sees kids first.
+	type span struct{ from, times *big.Int }
+	parts := make([][]span, len(d.Groups)) // which occurrences are kids or turns
+	parts[0] = []span{{new(big.Int), bigOne}}
+	holes := make([]bool, len(d.Groups)) // a hole lies below each occurrence
+	// Groups stand before those of their kids, so one backward pass sees kids first.
 	for i := len(d.Groups) - 1; i >= 0; i-- {
 		g := &d.Groups[i]
 		at := new(big.Int)
-		holes[i] = new(big.Int)
-		for _, u := range g.Uses {
+		for n, u := range g.Uses {
 			if u.From.Cmp(at) != 0 || u.Times.Sign() <= 0 {
 				return nil, bad(i, "a run begins at %v, expected %v", u.From, at)
 			}
@@ -383,17 +420,24 @@ func (d *Derivation) Check() ([]*big.Int, error) {
 			if p.Lhs != g.NT || len(u.Kids) != len(p.Rhs) {
 				return nil, bad(i, "production %d does not fit", u.Prod)
 			}
+			below := 0
 			for j, k := range u.Kids {
-				if k == Hole {
-					holes[i].Add(holes[i], u.Times)
+				if k.Group == Hole {
+					below++
 					continue
 				}
-				if k <= i || k >= len(d.Groups) || d.Groups[k].NT != p.Rhs[j] || d.Groups[k].Size.Cmp(u.Times) != 0 {
-					return nil, bad(i, "kid %d does not fit", k)
+				if k.Group <= i || k.Group >= len(d.Groups) || d.Groups[k.Group].NT != p.Rhs[j] {
+					return nil, bad(i, "kid %d does not fit", k.Group)
 				}
-				parents[k]++
-				holes[i].Add(holes[i], holes[k])
+				parts[k.Group] = append(parts[k.Group], span{k.From, u.Times})
+				if holes[k.Group] {
+					below++
+				}
 			}
+			if below > 1 || n > 0 && holes[i] != (below == 1) {
+				return nil, bad(i, "holes do not fit")
+			}
+			holes[i] = below == 1
 			y[u.Prod].Add(y[u.Prod], u.Times)
 		}
 		if at.Cmp(g.Size) != 0 {
@@ -404,44 +448,46 @@ func (d *Derivation) Check() ([]*big.Int, error) {
 				return nil, bad(i, "a pump is out of place")
 			}
 			t := &d.Groups[p.Top]
-			// One hole per turn, at a nonterminal equal to the first.
-			if t.NT != g.NT || t.Size.Cmp(p.Times) != 0 || holes[p.Top].Cmp(p.Times) != 0 || !d.holesFit(p.Top, g.NT, holes) {
+			if t.NT != g.NT || t.Size.Cmp(p.Times) != 0 || !holes[p.Top] || !d.holesFit(p.Top, g.NT, holes) {
 				return nil, bad(i, "the turns of a pump do not lead back")
 			}
-			parents[p.Top]++
+			parts[p.Top] = append(parts[p.Top], span{new(big.Int), p.Times})
 		}
 	}
-	for i, n := range parents {
-		if want := min(i, 1); n != want {
-			return nil, bad(i, "hangs at %d places", n)
+	for i, list := range parts {
+		slices.SortFunc(list, func(a, b span) int { return a.from.Cmp(b.from) })
+		at := new(big.Int)
+		for _, s := range list {
+			if s.from.Cmp(at) != 0 {
+				return nil, bad(i, "occurrence %v is a kid twice or never", at)
+			}
+			at.Add(at, s.times)
+		}
+		if at.Cmp(d.Groups[i].Size) != 0 {
+			return nil, bad(i, "%v of %v occurrences are kids", at, d.Groups[i].Size)
 		}
 	}
-	if d.Groups[0].NT != d.G.Start || d.Groups[0].Size.Cmp(bigOne) != 0 || holes[0].Sign() != 0 {
+	if d.Groups[0].NT != d.G.Start || holes[0] {
 		return nil, bad(0, "is not the start")
 	}
 	return y, nil
 }
 
-// holesFit: the holes below a pump's top stand for nonterminal a. holes has the
-// number of holes below each group.
-func (d *Derivation) holesFit(top int, a NT, holes []*big.Int) bool {
-	for {
-		if len(d.Groups[top].Uses) != 1 {
-			return false
-		}
-		u := &d.Groups[top].Uses[0]
-		next := Hole
+// holesFit: the holes below a pump's top stand for nonterminal a.
+func (d *Derivation) holesFit(top int, a NT, holes []bool) bool {
+	for _, u := range d.Groups[top].Uses {
 		for j, k := range u.Kids {
-			if k == Hole {
-				return d.G.Prods[u.Prod].Rhs[j] == a
-			}
-			if holes[k].Sign() > 0 {
-				next = k
+			switch {
+			case k.Group == Hole:
+				if d.G.Prods[u.Prod].Rhs[j] != a {
+					return false
+				}
+			case holes[k.Group]:
+				if !d.holesFit(k.Group, a, holes) {
+					return false
+				}
 			}
 		}
-		if next == Hole {
-			return false
-		}
-		top = next
 	}
+	return true
 }

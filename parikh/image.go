@@ -139,8 +139,8 @@ func (im *Image) scope(name string) (lia.Var, lia.Bool, bool) {
 
 // Ask asks for a derivation whose counts satisfy f.
 func (im *Image) Ask(ctx context.Context, f lia.Formula) Answer {
-	if im.data != nil && len(im.data.slotted) > 0 {
-		return im.askSlots(ctx, f)
+	if im.data != nil && len(im.data.undecided) > 0 {
+		return im.askRefining(ctx, f)
 	}
 	r, err := im.s.Check(ctx, f)
 	if err != nil {

@@ -56,7 +56,7 @@ func (d *dataLayer) addSlots(s *lia.Solver, sl *slotSystem, extra [][]lia.Lin) {
 		extra[preds[p].Count] = append(extra[preds[p].Count], lia.V(x))
 	}
 	s.Assert("possible", lia.Or(lia.LE(sl.m, lia.Const(0)), sl.g.possible(translation{d, d.params, d.copies(s, sl.g)})))
-	d.slotted = append(d.slotted, sl)
+	d.undecided = append(d.undecided, sl)
 	d.restOf(s, sl)
 	d.grow(s, sl, 4)
 }
@@ -208,52 +208,71 @@ func (d *dataLayer) grow(s *lia.Solver, sl *slotSystem, n int) {
 	}
 }
 
-// askSlots asks with growing numbers of slots.
-func (im *Image) askSlots(ctx context.Context, f lia.Formula) Answer {
-	ask := func(fs ...lia.Formula) Answer {
+func (sl *slotSystem) exactly() lia.Formula { return lia.LE(lia.V(sl.rest), lia.Const(0)) }
+
+func (sl *slotSystem) full() bool { return len(sl.slots) == sl.bound }
+
+func (sl *slotSystem) refine(_ context.Context, im *Image, _ lia.Model) (progress bool, budget string) {
+	if sl.full() {
+		return false, ""
+	}
+	im.data.grow(im.s, sl, len(sl.slots))
+	return true, ""
+}
+
+// undecided is a group whose outcomes are not listed: the image's system is too
+// large by what it leaves open, and too small once exactly is assumed.
+type undecided interface {
+	// exactly makes every model a true one.
+	exactly() lia.Formula
+	// full: exactly excludes nothing that is possible.
+	full() bool
+	// refine takes away some of what was left open, looking at a model of it.
+	refine(ctx context.Context, im *Image, m lia.Model) (progress bool, budget string)
+}
+
+// maxRefinements bounds the rounds of one question.
+const maxRefinements = 200
+
+// ask decides a question in systems with undecided groups.
+func (im *Image) askRefining(ctx context.Context, f lia.Formula) Answer {
+	check := func(fs ...lia.Formula) lia.Result {
 		r, err := im.s.Check(ctx, fs...)
 		if err != nil {
 			panic(fmt.Sprintf("parikh: ask: %v", err))
 		}
-		return im.answer(r.Status, r.Budget, r.Model)
+		return r
 	}
-	for {
-		if im.data.exact {
-			return ask(f)
+	for range maxRefinements {
+		open := check(f)
+		if open.Status != lia.Sat {
+			return im.answer(open.Status, open.Budget, open.Model)
 		}
-		if a := ask(f); a.Status != Yes {
-			return a
+		// The model itself may be a true one; then exactly costs little.
+		progress, full, budget := false, true, "slots"
+		for _, u := range im.data.undecided {
+			p, b := u.refine(ctx, im, open.Model)
+			progress = progress || p
+			full = full && u.full()
+			if b != "" {
+				budget = b
+			}
 		}
-		none := []lia.Formula{f}
-		full := true
-		for _, sl := range im.data.slotted {
-			none = append(none, lia.LE(lia.V(sl.rest), lia.Const(0)))
-			full = full && len(sl.slots) == sl.bound
+		fs := []lia.Formula{f}
+		for _, u := range im.data.undecided {
+			fs = append(fs, u.exactly())
 		}
-		if a := ask(none...); a.Status != No || full {
-			return a
+		r := check(fs...)
+		if r.Status == lia.Sat || full {
+			return im.answer(r.Status, r.Budget, r.Model)
 		}
-		for _, sl := range im.data.slotted {
-			im.data.grow(im.s, sl, len(sl.slots))
+		if !progress {
+			return Answer{Budget: budget}
 		}
 	}
+	return Answer{Budget: "slots"}
 }
 
-// exactSlots makes all slots, so that questions other than Ask can be put. False:
-// too many.
-func (im *Image) exactSlots() bool {
-	if im.data == nil || len(im.data.slotted) == 0 || im.data.exact {
-		return true
-	}
-	for _, sl := range im.data.slotted {
-		if sl.bound > 128 {
-			return false
-		}
-	}
-	for _, sl := range im.data.slotted {
-		im.data.grow(im.s, sl, sl.bound)
-		im.s.Assert("rest", lia.LE(lia.V(sl.rest), lia.Const(0)))
-	}
-	im.data.exact = true
-	return true
-}
+// exactSlots prepares for questions other than Ask. False: there are groups
+// whose outcomes are not listed.
+func (im *Image) exactSlots() bool { return im.data == nil || len(im.data.undecided) == 0 }

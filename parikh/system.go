@@ -22,8 +22,9 @@ type SystemOptions struct {
 	// Accept says in which states a run may empty its stack; nil: in all.
 	Accept func(pds.StateID) bool
 	// MaxCells is how many outcomes of one group of predicates are enumerated before
-	// slots take over; default 64, -1: slots at once.
+	// columns on demand or slots take over; default 64, -1: at once.
 	MaxCells int
+	Slots    bool  // slots, not columns, also where no parameter occurs; for tests
 	Budget   int64 // rule steps of the saturation; 0: the default of package summary
 }
 
@@ -137,11 +138,12 @@ type group struct {
 	class   *class
 	data    []int // of the event
 	conds   []*pds.Expr
-	preds   []int       // into Data.Predicates
-	weights []weight    // data that a predicate adds
-	params  bool        // a parameter occurs
-	cells   []cell      // all outcomes, unless slotted
-	slots   *slotSystem // nil if cells are complete
+	preds   []int         // into Data.Predicates
+	weights []weight      // data that a predicate adds
+	params  bool          // a parameter occurs
+	cells   []cell        // all outcomes, unless slotted
+	slots   *slotSystem   // if cells are incomplete and a parameter occurs
+	priced  *pricedSystem // if cells are incomplete and none occurs
 }
 
 // weight is a datum that predicates add, with cut points between which no formula
@@ -178,8 +180,8 @@ type dataLayer struct {
 	classes []class
 	strings stringTypes
 	params  []dataVar // in the image's solver
-	slotted []*slotSystem
-	exact   bool // slots: nothing is left outside them
+	// undecided lists the groups whose outcomes are not listed.
+	undecided []undecided
 }
 
 // dataVar is a parameter or datum in a solver. Strings are a type and a number
@@ -653,7 +655,11 @@ func (d *dataLayer) enumerate(g *group) error {
 				return &DataError{fmt.Sprintf("predicates[%d].by", g.preds[0]), fmt.Sprintf("more than %d outcomes of predicates that share data with it", limit)}
 			}
 			g.cells = nil
-			g.slots = &slotSystem{g: g}
+			if g.params || d.opt.Slots {
+				g.slots = &slotSystem{g: g}
+			} else {
+				g.priced = &pricedSystem{g: g}
+			}
 			return nil
 		}
 		c := cell{sample: d.sample(r.Model, g, t.env)}
@@ -678,7 +684,7 @@ func (d *dataLayer) enumerate(g *group) error {
 func (d *dataLayer) fixed() bool {
 	for _, c := range d.classes {
 		for _, g := range c.groups {
-			if g.params || g.slots != nil {
+			if g.params || g.slots != nil || g.priced != nil {
 				return false
 			}
 		}
@@ -726,6 +732,11 @@ func (d *dataLayer) cells(f *flow, counts []lia.Var) []lia.Var {
 			if g.slots != nil {
 				g.slots.m = m
 				d.addSlots(s, g.slots, extra)
+				continue
+			}
+			if g.priced != nil {
+				g.priced.m = m
+				d.addPriced(s, g.priced, extra)
 				continue
 			}
 			var sum []lia.Lin
@@ -829,6 +840,11 @@ func (d *dataLayer) values(m lia.Model) (params []Value, choices []Choice) {
 				if x.env != nil {
 					add(x.times, d.sample(m, g, x.env))
 				} else {
+					add(x.times, x.sample)
+				}
+			}
+			if g.priced != nil {
+				for _, x := range g.priced.columns {
 					add(x.times, x.sample)
 				}
 			}
