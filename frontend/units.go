@@ -237,6 +237,9 @@ func (m *Model) Settle(s properties.Settled) {
 		if u.u == 0 && u.fn.exports == exportsUnknown {
 			u.fn.exports = exportsNo
 		}
+		if s == properties.Spent && u.start.Inner && m.named(u.fn.fn) {
+			u.start.Inner, u.start.Kind = false, "cover"
+		}
 		return
 	}
 	if u.u == 0 {

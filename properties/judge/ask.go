@@ -51,8 +51,6 @@ type stopped struct {
 // A searcher answers asks about one model. engine (engine.go) is the one that
 // the program uses; tests put a search by brute force beside it.
 type searcher interface {
-	// limit sets the budget of the starts that are asked from now on, in steps.
-	limit(steps int64)
 	greatest(a ask) (greatestWeight, *stopped)
 	// witness gives a shortest path heavier than bound; nil if there is none.
 	witness(a ask, bound int64) ([]pds.Choice, *stopped)

@@ -29,13 +29,6 @@ func newEngine(m properties.Model, budget int64) *engine {
 	return &engine{m: m, e: summary.New(m, budget), budget: budget, solved: map[string]*summary.Solution{}, spent: map[pds.Head]summary.Answer{}, labels: map[pds.Head][]pds.LabelID{}}
 }
 
-// limit sets the budget of the starts that are asked from now on. One that ran
-// out of less goes on where it stopped.
-func (g *engine) limit(steps int64) {
-	g.budget = steps
-	clear(g.spent)
-}
-
 // saturate spends the budget of a start, once.
 func (g *engine) saturate(h pds.Head) *stopped {
 	a, ok := g.spent[h]

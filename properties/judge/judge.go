@@ -25,12 +25,10 @@ type Options struct {
 	Asked func(Verdict)
 }
 
-// lookShare is the part of a start's budget that is spent on finding out
-// whether its callers have to follow it.
-const lookShare = 8
-
 const (
-	DefaultSteps  = 200_000
+	// A start that is judged at all needs a few hundred steps, rarely thousands;
+	// one that takes more than this takes without end (an explosion of contexts).
+	DefaultSteps  = 30_000
 	DefaultCauses = 20
 )
 
@@ -82,11 +80,9 @@ func (o Options) causes() int {
 func newJudge(rule *properties.ResolvedRule, m properties.Model, s searcher, opt Options) *judge {
 	j := &judge{rule: rule, m: m, s: s, opt: opt, homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
 	if b, ok := m.(properties.BottomUp); ok {
-		j.s.limit(opt.steps() / lookShare)
 		for s, more := b.Next(); more; s, more = b.Next() {
 			b.Settle(j.closed(&s))
 		}
-		j.s.limit(opt.steps())
 	}
 	j.starts = m.Starts()
 	for i := range j.starts {
@@ -196,8 +192,7 @@ type answered struct {
 }
 
 // closed says whether callers of a function have to follow it: see
-// properties.BottomUp. It asks every claim, advice too, on or off, with a part
-// of the budget: there are many functions to look at.
+// properties.BottomUp. It asks every claim, advice too, on or off.
 func (j *judge) closed(s *properties.Start) properties.Settled {
 	of := func(stop *stopped) properties.Settled {
 		if stop != nil {
