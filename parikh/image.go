@@ -309,7 +309,17 @@ func (f *flow) entered(set []int32) lia.Formula {
 			}
 		}
 	}
-	return lia.Or(lia.LE(lia.Sum(used...), lia.Const(0)), lia.GE(lia.Sum(into...), lia.Const(1)))
+	// Number by number, so that divisibility arguments see that they are nothing; as
+	// one sum where that would be many atoms.
+	unused := lia.LE(lia.Sum(used...), lia.Const(0))
+	if len(used) <= 64 {
+		var each []lia.Formula
+		for _, x := range used {
+			each = append(each, lia.LE(x, lia.Const(0)))
+		}
+		unused = lia.And(each...)
+	}
+	return lia.Or(unused, lia.GE(lia.Sum(into...), lia.Const(1)))
 }
 
 // index lists for each nonterminal the productions that have it on the right.

@@ -59,6 +59,9 @@ const (
 // It ends: of infinitely many derivations with one support, two are comparable;
 // their difference is a circulation on that support and a natural combination of
 // the pumps found, so that the second vector was in a set of the first.
+//
+// Proving that nothing is left can be hard; each step has a budget of at most
+// 1,000 branching steps.
 func (im *Image) LinearSets(ctx context.Context, limit int) Union {
 	var u Union
 	if im.r.empty {
@@ -69,6 +72,14 @@ func (im *Image) LinearSets(ctx context.Context, limit int) Union {
 		u.Budget = "data"
 		return u
 	}
+	opt := im.opt
+	if opt.Solver.MaxNodes == 0 || opt.Solver.MaxNodes > 1000 {
+		opt.Solver.MaxNodes = 1000
+	}
+	if opt.Solver.MaxPivots == 0 || opt.Solver.MaxPivots > 100_000 {
+		opt.Solver.MaxPivots = 100_000
+	}
+	im = New(im.g, opt) // a system of its own, with small budgets
 	var total []lia.Lin
 	for _, x := range im.y {
 		total = append(total, lia.V(x))
