@@ -89,7 +89,7 @@ func (m *Model) captured(l *link, i int) Expr {
 
 // toCallee writes what the frame knows of the instance over the callee's frame.
 func (m *Model) toCallee(ns nset, l *link) nset {
-	out := nset{phase: ns.phase, outside: ns.outside}
+	out := nset{phase: ns.phase, outside: ns.outside, touched: ns.touched}
 	as := func(y Expr) Expr {
 		for i, a := range l.args {
 			if a == y {
@@ -221,6 +221,9 @@ func (m *Model) fromCallee(fr *frame, st state, l *link, call ssa.Value) {
 	}
 	if ns.phase == born && fr.ns.phase == unborn {
 		fr.ns = nset{phase: born, outside: ns.outside}
+	}
+	if ns.touched {
+		fr.ns.touched = true
 	}
 	as := func(y Expr) Expr {
 		if n := m.x.nodes[y]; n.kind == kParam && int(n.n) < len(l.args) {
@@ -468,7 +471,7 @@ func (m *Model) enters(fr *frame, l *link) bool {
 	}
 	in := m.toCallee(fr.ns, l)
 	for _, e := range in.names {
-		if m.concerns(g, e) {
+		if m.concernsNow(fr.ns, g, e) {
 			return true
 		}
 	}
@@ -558,7 +561,7 @@ func (m *Model) bears(fr *frame, l *link) bool {
 		return m.exportsBirth(g)
 	}
 	for _, e := range m.toCallee(fr.ns, l).names {
-		if m.concerns(g, e) || m.boundEvent(g.fn, e) {
+		if m.concernsNow(fr.ns, g, e) || m.boundEvent(g.fn, e) {
 			return true
 		}
 	}
@@ -701,7 +704,7 @@ func (m *Model) event(fr *frame, c *ssa.Call, s *shape, ms []match, dst []pds.Ru
 			dst = append(dst, m.goTo(base.clone(), 0))
 			for _, b := range births {
 				this := base.clone()
-				this.ns = nset{phase: born}
+				this.ns = nset{phase: born, touched: true}
 				this.ns.add(m.birthName(m.resultName(c, b.birth), b.path))
 				for _, b := range births {
 					m.setFact(this, m.resultName(c, b.birth), m.nonNil())
@@ -715,6 +718,9 @@ func (m *Model) event(fr *frame, c *ssa.Call, s *shape, ms []match, dst []pds.Ru
 				dst = append(dst, r)
 			}
 			continue
+		}
+		if fr.ns.phase == born {
+			base.ns.touched = true
 		}
 		r := m.goTo(base, m.label(label{kind: lblEvent, instr: c}))
 		if fr.ns.phase == unborn {
@@ -1277,7 +1283,7 @@ func (m *Model) inBody(ns nset, owner, body *ssa.Function) nset {
 		return ns
 	}
 	ns = m.inBody(ns, owner, body.Parent())
-	out := nset{phase: ns.phase, outside: ns.outside}
+	out := nset{phase: ns.phase, outside: ns.outside, touched: ns.touched}
 	for _, b := range body.Parent().Blocks {
 		for _, i := range b.Instrs {
 			mc, ok := i.(*ssa.MakeClosure)
@@ -1357,7 +1363,11 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 				if len(o.conds) == 0 && len(outcomes(live, doubtful)) > 1 && len(live) == 0 {
 					continue
 				}
-				r := pds.Rule{Kind: pds.Pop, State: m.state(st), Effect: m.effect(m.tally(live, o)), Mark: m.marks(live, o),
+				next := st
+				ns := fr.ns
+				ns.touched = ns.phase == born
+				next.ns = m.t.nset(ns)
+				r := pds.Rule{Kind: pds.Pop, State: m.state(next), Effect: m.effect(m.tally(live, o)), Mark: m.marks(live, o),
 					Label: m.label(label{kind: lblDeferredEvent, instr: d})}
 				if len(doubtful) > 0 {
 					r.DoubtEffect = m.effect(m.tally(doubtful, o))
@@ -1436,6 +1446,7 @@ func (m *Model) resumeDefer(st state, sym symbol, fr *frame, dst []pds.Rule) []p
 	if outerDefer(site.(*ssa.Defer)) {
 		owner = m.info(deferOwner(fr.fi.fn))
 		fr.ns.outside = fr.ns.outside || m.t.nsets[st.ns].outside
+		fr.ns.touched = fr.ns.touched || m.t.nsets[st.ns].touched
 	} else {
 		m.fromCallee(fr, st, l, nil)
 	}
@@ -1470,6 +1481,7 @@ func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
 		live, _ := m.concerned(fr.ns, ms)
 		if len(live) > 0 {
 			fr.i++
+			fr.ns.touched = fr.ns.phase == born
 			r := m.goTo(fr, m.label(label{kind: lblSpawn, instr: g}))
 			r.Effect = m.effect(m.tally(live, outcomeOf{}))
 			return append(dst, r), true
@@ -1501,6 +1513,7 @@ func (m *Model) spawn(fr *frame, g *ssa.Go, dst []pds.Rule) ([]pds.Rule, bool) {
 		return nil, false
 	}
 	fr.i++
+	fr.ns.touched = fr.ns.phase == born
 	if len(heads) == 1 {
 		r := m.goTo(fr, m.label(label{kind: lblSpawn, instr: g}))
 		r.Spawn = heads

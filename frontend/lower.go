@@ -1006,7 +1006,7 @@ func runsDefers(b *ssa.BasicBlock) bool {
 // exitState is what the caller learns when the frame ends.
 func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Value) state {
 	st := state{kind: stExit, exit: kind}
-	ns := nset{phase: fr.ns.phase, outside: fr.ns.outside}
+	ns := nset{phase: fr.ns.phase, outside: fr.ns.outside, touched: fr.ns.touched}
 	here := func(y Expr) Expr {
 		if m.x.frameFree(y) {
 			return y
@@ -1061,8 +1061,7 @@ func (m *Model) exitState(fr *frame, kind properties.ExitKind, results []ssa.Val
 	if a := fr.fs.get(m.x.pending()); a != 0 {
 		fs = fs.with(m.x.pending(), a)
 	}
-	st.ns, st.fs = m.t.nset(ns), m.t.factset(fs)
-	return st
+	return m.boundedExit(fr.fi, st, ns, fs)
 }
 
 var errorType = types.Universe.Lookup("error").Type()
@@ -1209,6 +1208,42 @@ func (m *Model) leaveBy(fr *frame, kind properties.ExitKind, lbl pds.LabelID) pd
 	}
 	r.Label = lbl
 	return r
+}
+
+// maxExits bounds the ways out of a function that its callers tell apart: past
+// it facts about memory are dropped, past three times as many all facts and the
+// names that are not exact. Fewer facts only add paths.
+const maxExits = 12
+
+type exitKey struct {
+	fn   int
+	full state
+}
+
+// boundedExit gives the exit its names and facts, or fewer; a decision stays.
+func (m *Model) boundedExit(fi *fnInfo, st state, ns nset, fs factset) state {
+	k := exitKey{fi.id, st}
+	k.full.ns, k.full.fs = m.t.nset(ns), m.t.factset(fs)
+	if d, ok := m.exits[k]; ok {
+		return d
+	}
+	n := m.exitCount[fi.id]
+	d := k.full
+	if n >= maxExits {
+		fs = fs.only(func(f fact) bool { return m.x.nodes[f.key].kind == kResult })
+		if n >= 3*maxExits {
+			fs = nil
+			ns.filter(func(e Expr) bool { k := m.x.nodes[e].kind; return k != kHeld && k != kMaybe })
+		}
+		d.ns, d.fs = m.t.nset(ns), m.t.factset(fs)
+	}
+	m.exits[k] = d
+	own := exitKey{fi.id, d}
+	if !m.exitSeen[own] {
+		m.exitSeen[own] = true
+		m.exitCount[fi.id]++
+	}
+	return d
 }
 
 // unwind starts to run the deferred calls of the frame. A normal return comes

@@ -49,6 +49,9 @@ type Model struct {
 	notes   noteSet
 
 	units       unitQueue
+	exits       map[exitKey]state // what the ways out of a function were reduced to
+	exitSeen    map[exitKey]bool
+	exitCount   map[int]int
 	writes      map[writeKey]bool
 	askedWrites map[*effects.Summary]bool
 	factsets    map[symbol]int         // symbols by everything but their facts
@@ -146,6 +149,9 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		doubtID:     map[doubtKey]pds.DoubtID{},
 		visited:     map[*ssa.Function]bool{},
 		factsets:    map[symbol]int{},
+		exits:       map[exitKey]state{},
+		exitSeen:    map[exitKey]bool{},
+		exitCount:   map[int]int{},
 		writes:      map[writeKey]bool{},
 		askedWrites: map[*effects.Summary]bool{},
 		funcIDs:     map[*ssa.Function]int{},

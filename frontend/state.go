@@ -21,6 +21,7 @@ const (
 type nset struct {
 	phase   phase
 	outside bool   // can be reached from out of sight for good (handed on)
+	touched bool   // an event has happened to it on this path
 	names   []Expr // sorted: expressions that equal the instance (kHeld, kMaybe: inexact ones)
 }
 
@@ -178,11 +179,14 @@ func (t *tables) absOf(v absVal) Abs {
 
 func (t *tables) nset(s nset) int32 {
 	b := append(t.buf[:0], byte(s.phase))
+	flags := byte(0)
 	if s.outside {
-		b = append(b, 1)
-	} else {
-		b = append(b, 0)
+		flags |= 1
 	}
+	if s.touched {
+		flags |= 2
+	}
+	b = append(b, flags)
 	for _, e := range s.names {
 		b = binary.LittleEndian.AppendUint32(b, uint32(e))
 	}

@@ -61,6 +61,7 @@ type unit struct {
 
 type unitQueue struct {
 	byKey map[unitKey]*unit
+	even  map[unitKey]bool // answers of evenUnit
 	order map[*fnInfo]int
 	heap  unitHeap
 	all   []*unit
@@ -89,7 +90,7 @@ func (h *unitHeap) Pop() any {
 // findStarts makes the first units: where events and births stand.
 func (m *Model) findStarts() {
 	q := &m.units
-	q.byKey = map[unitKey]*unit{}
+	q.byKey, q.even = map[unitKey]*unit{}, map[unitKey]bool{}
 	q.order = m.bottomUp()
 	if m.rule.Each == nil {
 		for _, fn := range m.sh.fns {
@@ -359,4 +360,50 @@ func (m *Model) followed(u *unit) bool {
 func (m *Model) named(fn *ssa.Function) bool {
 	p := m.sh.prog.PackageOfFunction(fn)
 	return p != nil && p.Named
+}
+
+// concernsNow tells whether a call of g has to be followed for the instance
+// that g knows as e. As long as nothing has happened to the instance, a callee
+// that is closed for it adds nothing: its own start has answered for it.
+func (m *Model) concernsNow(ns nset, g *fnInfo, e Expr) bool {
+	if !m.concerns(g, e) {
+		return false
+	}
+	return ns.touched || ns.phase != born || !m.evenBelow(g, e)
+}
+
+func (m *Model) evenBelow(g *fnInfo, e Expr) bool {
+	n := m.x.nodes[e]
+	switch n.kind {
+	case kMaybe:
+		return m.evenBelow(g, n.x)
+	case kHeld:
+		for _, u := range g.subjList {
+			if m.x.within(n.x, u) && !m.evenUnit(unitKey{g, u}) {
+				return false
+			}
+		}
+		return true
+	}
+	if g.subjects[e] {
+		return m.evenUnit(unitKey{g, e})
+	}
+	return m.evenUnit(unitKey{g, m.x.ghosted(e)})
+}
+
+// evenUnit tells whether the unit is known to be closed. What is answered once
+// stays, also when recursion makes it a unit later.
+func (m *Model) evenUnit(k unitKey) bool {
+	q := &m.units
+	if even, ok := q.even[k]; ok {
+		return even
+	}
+	even := false
+	if u, ok := q.byKey[k]; ok {
+		even = u.settled && u.closed
+	} else if q.done || q.now != nil && q.order[k.fn] < q.now.pos {
+		even = true // none of its callees does anything that is not closed
+	}
+	q.even[k] = even
+	return even
 }
