@@ -96,10 +96,42 @@ func (s *nset) reindex(t *exprs, f func(c, y Expr) Expr) {
 	}
 }
 
+// Bounds on inexact names: each is a place from which the instance may be
+// fetched again. Past them it is not: a fetch of it then is one of another
+// object, whose own start answers for it.
+const (
+	maxHolders     = 8 // of an instance that moves
+	maxStayHolders = 2 // of one that stays where it is (a lock): near ones only
+)
+
 // tidy drops what other names cover: what a part of an object may hold, the
-// object may hold.
+// object may hold. Of an instance that stays and to which nothing has happened
+// yet, holders are not worth knowing: met there, it is met for the first time.
 func (m *Model) tidy(ns *nset) {
 	held := 0
+	defer func() {
+		if held == 0 {
+			return
+		}
+		left := maxHolders
+		if !m.rule.Moves {
+			left = maxStayHolders
+			if !ns.touched {
+				left = 0
+			}
+		}
+		ns.filter(func(e Expr) bool {
+			n := m.x.nodes[e]
+			if n.kind != kHeld {
+				return true
+			}
+			if left == 0 || !m.rule.Moves && m.x.depth[n.x] > 2 {
+				return false
+			}
+			left--
+			return true
+		})
+	}()
 	for _, e := range ns.names {
 		if m.x.nodes[e].kind == kHeld {
 			held++

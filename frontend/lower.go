@@ -37,6 +37,7 @@ func (m *Model) frameOf(s symbol) *frame {
 }
 
 func (m *Model) point(fr *frame) pds.SymbolID {
+	m.tidy(&fr.ns)
 	return m.bounded(symbol{kind: symPoint, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i),
 		ns: m.t.nset(fr.ns), aux: int32(fr.rec)}, fr.fs)
 }
@@ -1222,6 +1223,7 @@ type exitKey struct {
 
 // boundedExit gives the exit its names and facts, or fewer; a decision stays.
 func (m *Model) boundedExit(fi *fnInfo, st state, ns nset, fs factset) state {
+	m.tidy(&ns)
 	k := exitKey{fi.id, st}
 	k.full.ns, k.full.fs = m.t.nset(ns), m.t.factset(fs)
 	if d, ok := m.exits[k]; ok {
