@@ -106,9 +106,13 @@ const (
 
 // tidy drops what other names cover: what a part of an object may hold, the
 // object may hold. Of an instance that stays and to which nothing has happened
-// yet, holders are not worth knowing: met there, it is met for the first time.
+// yet, only exact names are worth knowing: met there, it is met for the first time.
 func (m *Model) tidy(ns *nset) {
 	held := 0
+	if ns.phase == born && !m.rule.Moves && !ns.touched {
+		ns.filter(func(e Expr) bool { k := m.x.nodes[e].kind; return k != kHeld && k != kMaybe })
+		return
+	}
 	defer func() {
 		if held == 0 {
 			return
@@ -116,9 +120,6 @@ func (m *Model) tidy(ns *nset) {
 		left := maxHolders
 		if !m.rule.Moves {
 			left = maxStayHolders
-			if !ns.touched {
-				left = 0
-			}
 		}
 		ns.filter(func(e Expr) bool {
 			n := m.x.nodes[e]

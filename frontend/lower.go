@@ -672,14 +672,24 @@ func (m *Model) prune(fr *frame) {
 		}
 		return false
 	}
-	alive := 0
+	// rank: 0 exact, 1 may be it, 2 may hold it.
+	rank := func(e Expr) int {
+		switch m.x.nodes[e].kind {
+		case kMaybe:
+			return 1
+		case kHeld:
+			return 2
+		}
+		return 0
+	}
+	best := 3 // of the names that are alive
 	for _, e := range fr.ns.names {
-		if k := m.x.nodes[e].kind; !dead(e) && k != kHeld && k != kMaybe {
-			alive++
+		if r := rank(e); !dead(e) {
+			best = min(best, r)
 		}
 	}
-	if alive > 0 {
-		fr.ns.filter(func(e Expr) bool { return !dead(e) })
+	if best < 3 {
+		fr.ns.filter(func(e Expr) bool { return !dead(e) || rank(e) < best })
 	}
 }
 
