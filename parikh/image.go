@@ -4,6 +4,7 @@ package parikh
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"math/big"
 
@@ -17,7 +18,8 @@ type Options struct {
 	Plain  bool        // no merging of productions; for tests
 	Eager  bool        // assert the clauses of all regions at once, not when needed
 	// MaxCuts is the number of lazy clauses inside one region after which it gets
-	// rank variables; default 50, -1: at once.
+	// rank variables, if it is also an eighth of the region's size; default 50, -1: at
+	// once.
 	MaxCuts int
 }
 
@@ -61,10 +63,12 @@ type Image struct {
 	r   *reduced
 	opt Options
 	*flow
-	names  []string     // of the counts that questions speak of
-	counts []lia.Var    // by name
-	data   *dataLayer   // nil without data
-	circ   *circulation // made when first needed
+	names    []string     // of the counts that questions speak of
+	counts   []lia.Var    // by name
+	data     *dataLayer   // nil without data
+	asked    *lia.Formula // the question of the running Ask
+	repaired Answer
+	circ     *circulation // made when first needed
 }
 
 // New makes the image of a grammar.
@@ -79,7 +83,16 @@ func New(g *Grammar, opt Options) *Image {
 		s.Assert("empty", lia.False())
 	}
 	im.names, im.counts = g.Counts, im.flow.countVars(g.Counts)
-	s.OnModel(func(m lia.Model) ([]lia.Formula, error) { return im.flow.cut(m), nil })
+	s.OnModel(func(m lia.Model) ([]lia.Formula, error) {
+		lemmas := im.flow.cut(m)
+		if lemmas != nil && im.asked != nil && im.data == nil {
+			if a, ok := im.repair(m); ok {
+				im.repaired = a
+				return nil, errRepaired
+			}
+		}
+		return lemmas, nil
+	})
 	return im
 }
 
@@ -142,11 +155,78 @@ func (im *Image) Ask(ctx context.Context, f lia.Formula) Answer {
 	if im.data != nil && len(im.data.undecided) > 0 {
 		return im.askRefining(ctx, f)
 	}
+	im.asked = &f
 	r, err := im.s.Check(ctx, f)
+	im.asked = nil
+	if err == errRepaired {
+		return im.repaired
+	}
 	if err != nil {
 		panic(fmt.Sprintf("parikh: ask: %v", err))
 	}
 	return im.answer(r.Status, r.Budget, r.Model)
+}
+
+// errRepaired ends a search whose answer is Image.repaired.
+var errRepaired = errors.New("parikh: a disconnected point was repaired")
+
+// repair takes what is not reached out of a disconnected point. What is left is a
+// derivation, unless what was taken out led into it; often its counts answer the
+// question too.
+func (im *Image) repair(m lia.Model) (Answer, bool) {
+	y := make([]*big.Int, len(im.y))
+	reached := im.flow.reach(m)
+	for i, x := range im.y {
+		y[i] = new(big.Int)
+		if reached[im.r.prods[i].lhs] {
+			y[i] = m.Int(x)
+		}
+	}
+	rest := make([]*big.Int, im.r.numNT)
+	for i := range rest {
+		rest[i] = new(big.Int)
+	}
+	rest[0].SetInt64(1)
+	for i, n := range y {
+		if n.Sign() == 0 {
+			continue
+		}
+		p := &im.r.prods[i]
+		rest[p.lhs].Sub(rest[p.lhs], n)
+		for _, b := range p.rhs {
+			rest[b].Add(rest[b], n)
+		}
+	}
+	for _, n := range rest {
+		if n.Sign() != 0 {
+			return Answer{}, false
+		}
+	}
+	a := Answer{Status: Yes, Counts: im.r.effect(y, allCounts(len(im.counts)))}
+	most := lia.Var(0)
+	for _, c := range im.counts {
+		most = max(most, c)
+	}
+	ints := make([]*big.Int, most+1)
+	for i := range ints {
+		ints[i] = new(big.Int)
+	}
+	for i, c := range im.counts {
+		ints[c] = a.Counts[i]
+	}
+	if !lia.NewModel(ints, nil).Holds(*im.asked) {
+		return Answer{}, false
+	}
+	a.prods = im.r.expand(y)
+	return a, true
+}
+
+func allCounts(n int) []int {
+	out := make([]int, n)
+	for i := range out {
+		out[i] = i
+	}
+	return out
 }
 
 func (im *Image) answer(st lia.Status, budget string, m lia.Model) Answer {
@@ -338,6 +418,35 @@ func (f *flow) index() {
 	}
 }
 
+// reach says which nonterminals are reached from the roots along productions in
+// use.
+func (f *flow) reach(m lia.Model) []bool {
+	reached := make([]bool, f.r.numNT)
+	var work []int32
+	for _, a := range f.roots {
+		if !reached[a] {
+			reached[a] = true
+			work = append(work, a)
+		}
+	}
+	for len(work) > 0 {
+		a := work[len(work)-1]
+		work = work[:len(work)-1]
+		for p, end := f.prodsOf(a); p < end; p++ {
+			if m.Int(f.y[p]).Sign() <= 0 {
+				continue
+			}
+			for _, b := range f.r.prods[p].rhs {
+				if !reached[b] {
+					reached[b] = true
+					work = append(work, b)
+				}
+			}
+		}
+	}
+	return reached
+}
+
 // cut gives clauses that a disconnected point breaks and every derivation keeps;
 // none if the point is connected. For each source component of what is active but
 // not reached: the clause of the outermost region around it that the point breaks,
@@ -351,29 +460,7 @@ func (f *flow) cut(m lia.Model) (lemmas []lia.Formula) {
 			active[f.r.prods[i].lhs] = true
 		}
 	}
-	reached := make([]bool, f.r.numNT)
-	var work []int32
-	for _, a := range f.roots {
-		if !reached[a] {
-			reached[a] = true
-			work = append(work, a)
-		}
-	}
-	for len(work) > 0 {
-		a := work[len(work)-1]
-		work = work[:len(work)-1]
-		for p, end := f.prodsOf(a); p < end; p++ {
-			if !fires[p] {
-				continue
-			}
-			for _, b := range f.r.prods[p].rhs {
-				if !reached[b] {
-					reached[b] = true
-					work = append(work, b)
-				}
-			}
-		}
-	}
+	reached := f.reach(m)
 	loose := func(a int32) bool { return active[a] && !reached[a] }
 	any := false
 	for a := range active {
@@ -457,7 +544,7 @@ func (f *flow) cutFor(c []int32, m lia.Model, done map[int32]bool) []lia.Formula
 	}
 	if len(around) > 0 {
 		s := &f.regions[around[0]]
-		if s.cuts++; s.cuts > f.opt.MaxCuts && !s.ranked {
+		if s.cuts++; s.cuts > f.opt.MaxCuts && (f.opt.MaxCuts < 0 || s.cuts > len(s.nts)/8) && !s.ranked {
 			s.ranked = true
 			return []lia.Formula{f.entered(c), f.ranks(s.nts)}
 		}
