@@ -31,6 +31,10 @@
 //     productions; a point that is not is cut off (cut) by the clause of a region or
 //     of a set of nonterminals, "unused, or entered from outside"; a region that
 //     needs many clauses gets rank variables, which excludes all such points at once.
+//   - repair: a disconnected point without what is not reached is often a derivation
+//     whose counts answer the question.
+//   - cells, addPriced, addSlots: in systems with data ([NewSystem]), what guards and
+//     predicates add: outcomes listed, columns on demand, or slots.
 //   - Derive: from numbers of productions to a derivation in run-length form.
 //
 // # What is exact
@@ -48,5 +52,14 @@
 // processes, Fundamenta Informaticae 1997, for flow plus connectivity; Parikh, On
 // context-free languages, JACM 1966.
 //
-// Read next: image.go, then explore.go.
+// Eisenbrand and Shmonin, Carathéodory bounds for integer cones, 2006, for slots.
+//
+// # Limits
+//
+// Linear sets, rays and bounds of systems with data are answered only where no
+// parameter decides outcomes (bounds) or not at all (sets, rays). Minimal vectors
+// and bounds need listed outcomes. The replay of runs past 10,000 steps executes
+// each repeated piece twice.
+//
+// Read next: image.go, explore.go, then system.go.
 package parikh

@@ -125,7 +125,9 @@ func BenchmarkFamily(b *testing.B) {
 						b.Fatal(err)
 					}
 					began := time.Now()
-					a := im.Ask(context.Background(), f)
+					ctx, cancel := context.WithTimeout(context.Background(), *familyLimit+10*time.Second)
+					a := im.Ask(ctx, f)
+					cancel()
 					d := time.Since(began)
 					ours += d
 					line := fmt.Sprintf("%-45s %-7s %10v", q, a.Status, d.Round(time.Millisecond/10))
