@@ -154,6 +154,10 @@ func (m *Model) factsToCallee(fr *frame, l *link, at *ssa.BasicBlock) factset {
 // upKeys writes a key of the callee over the caller's frame, in the forms the
 // caller may keep it under.
 func (m *Model) upKeys(k Expr, l *link, at *ssa.BasicBlock) []Expr {
+	memo := upKeyOf{k, l.site, l.fi, l.closure, l.made, at}
+	if out, ok := m.upOf[memo]; ok {
+		return out
+	}
 	var out []Expr
 	if e := m.upKey(k, l, func(v ssa.Value) Expr { return m.key(v, at) }); e != 0 {
 		out = append(out, e)
@@ -161,7 +165,18 @@ func (m *Model) upKeys(k Expr, l *link, at *ssa.BasicBlock) []Expr {
 	if e := m.upKey(k, l, m.x.name); e != 0 && (len(out) == 0 || out[0] != e) {
 		out = append(out, e)
 	}
+	m.upOf[memo] = out
 	return out
+}
+
+// upKeyOf is what upKeys depends on.
+type upKeyOf struct {
+	k       Expr
+	site    ssa.CallInstruction
+	fi      *fnInfo
+	closure Expr
+	made    *ssa.MakeClosure
+	at      *ssa.BasicBlock
 }
 
 func (m *Model) upKey(k Expr, l *link, form func(ssa.Value) Expr) Expr {

@@ -58,6 +58,7 @@ type exprNode struct {
 type exprs struct {
 	nodes []exprNode
 	ids   map[exprNode]Expr
+	names map[ssa.Value]Expr // answers of name
 	root  []Expr  // root[e]: the innermost subject (a kParam, kFree, kGlobal, kReg, kRes, kResult node)
 	loads []int16 // number of kLoad, kIndex and kHeld selectors in e
 	depth []int16
@@ -68,7 +69,7 @@ type exprs struct {
 const maxDepth = 9
 
 func newExprs() *exprs {
-	x := &exprs{ids: map[exprNode]Expr{}}
+	x := &exprs{ids: map[exprNode]Expr{}, names: map[ssa.Value]Expr{}}
 	x.nodes = append(x.nodes, exprNode{})
 	x.root = append(x.root, 0)
 	x.loads = append(x.loads, 0)
@@ -363,6 +364,15 @@ func (t *exprs) rootKind(e Expr) exprKind { return t.nodes[t.root[e]].kind }
 // arithmetic and conversions that keep identity are looked through; loads and
 // φs are registers of their own.
 func (t *exprs) name(v ssa.Value) Expr {
+	if e, ok := t.names[v]; ok {
+		return e
+	}
+	e := t.nameNew(v)
+	t.names[v] = e
+	return e
+}
+
+func (t *exprs) nameNew(v ssa.Value) Expr {
 	switch v := v.(type) {
 	case *ssa.Parameter:
 		for i, p := range v.Parent().Params {

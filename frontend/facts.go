@@ -15,7 +15,18 @@ import (
 // two loads of one place, as long as nothing can have changed the place between
 // the load and the use. v's own register otherwise.
 func (m *Model) key(v ssa.Value, at *ssa.BasicBlock) Expr {
-	return m.keyDepth(v, at, 0)
+	k := valueAt{v, at}
+	e, ok := m.keyOf[k]
+	if !ok {
+		e = m.keyDepth(v, at, 0)
+		m.keyOf[k] = e
+	}
+	return e
+}
+
+type valueAt struct {
+	v  ssa.Value
+	at *ssa.BasicBlock
 }
 
 func (m *Model) keyDepth(v ssa.Value, at *ssa.BasicBlock, depth int) Expr {

@@ -54,6 +54,8 @@ type Model struct {
 	exitCount   map[int]int
 	writes      map[writeKey]bool
 	askedWrites map[*effects.Summary]bool
+	keyOf       map[valueAt]Expr
+	upOf        map[upKeyOf][]Expr
 	factsets    map[symbol]int         // symbols by everything but their facts
 	visited     map[*ssa.Function]bool // functions whose code the exploration entered
 	funcIDs     map[*ssa.Function]int
@@ -149,6 +151,8 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		doubtID:     map[doubtKey]pds.DoubtID{},
 		visited:     map[*ssa.Function]bool{},
 		factsets:    map[symbol]int{},
+		keyOf:       map[valueAt]Expr{},
+		upOf:        map[upKeyOf][]Expr{},
 		exits:       map[exitKey]state{},
 		exitSeen:    map[exitKey]bool{},
 		exitCount:   map[int]int{},
