@@ -608,7 +608,11 @@ func (m *Model) callbacks(fr *frame, c *ssa.Call, targets []*ssa.Function, dst [
 		}
 		how := m.callbackModel(c, targets, fn)
 		if how == cbNone {
-			m.note(c, "callback", "the function handed to "+m.calleeText(c)+" is taken to be called later or never")
+			// It may be called later: it has the instance now.
+			m.note(c, "callback", "the function handed to "+m.calleeText(c)+" is taken to be called later")
+			if fr.ns.phase == born && m.rule.Moves {
+				fr.ns.outside = true
+			}
 			continue
 		}
 		return m.callbackRules(fr, c, v, l, how, dst), true

@@ -108,18 +108,39 @@ func givesInstance(e *properties.EventMatch) bool {
 	return false
 }
 
-// Coverage counts the functions that have an event, and those of them that
-// some path entered.
-func (m *Model) Coverage() (events, entered int) {
+// Coverage counts the functions that have an event, and those of them that the
+// starts answer for: a start was made for the function itself, or no count of
+// the rule can be tipped over by what it does (a Close of what was opened
+// elsewhere is followed from where it was opened). The two must be equal once
+// Next has answered false.
+func (m *Model) Coverage() (events, answered int) {
+	own := map[*fnInfo]bool{}
+	for _, u := range m.units.all {
+		own[u.fn] = true
+	}
+	existing := m.existingMatters()
 	for _, fi := range m.fns {
-		if fi.events && !m.isEventFunc(fi.fn) {
-			events++
-			if m.visited[fi.fn] {
-				entered++
-			}
+		if !fi.events || m.isEventFunc(fi.fn) {
+			continue
+		}
+		events++
+		if own[fi] || m.rule.Each == nil || !existing && !fi.direct {
+			answered++
 		}
 	}
-	return events, entered
+	return events, answered
+}
+
+// WithEvents implements properties.Ledger: the functions of the judged packages
+// that hold an event.
+func (m *Model) WithEvents() []properties.Func {
+	var out []properties.Func
+	for _, fn := range m.sh.fns {
+		if fi, ok := m.fnOf[fn]; ok && fi.events && !m.isEventFunc(fn) && m.named(fn) {
+			out = append(out, m.funcOf(fn))
+		}
+	}
+	return out
 }
 
 // typeOf is the type of e's value in the frame of fn, nil if it is not known.
