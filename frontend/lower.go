@@ -47,28 +47,29 @@ func (m *Model) point(fr *frame) pds.SymbolID {
 // past twice as many all facts: that only adds paths.
 const maxFactsets = 40
 
-// bounded interns the symbol s with the facts fs, or with fewer. A symbol that
-// exists with all its facts is found again however many there are by now, so
-// the answer for a frame does not change.
+// bounded interns the symbol s with the facts fs, or with fewer. What a symbol
+// was reduced to is remembered: the answer for a frame does not change, however
+// many others there are by the time it is asked again.
 func (m *Model) bounded(s symbol, fs factset) pds.SymbolID {
 	full := s
 	full.fs = m.t.factset(fs)
-	if id, ok := m.symID[full]; ok {
+	if id, ok := m.reduced[full]; ok {
 		return id
 	}
 	n := m.factsets[s]
-	if n >= 2*maxFactsets {
-		full.fs = m.t.factset(nil)
-		return m.symbol(full)
+	less := full
+	switch {
+	case n >= 2*maxFactsets:
+		less.fs = m.t.factset(nil)
+	case n >= maxFactsets:
+		less.fs = m.t.factset(fs.only(func(f fact) bool { return m.t.abs[f.val].kind != aInt && m.x.nodes[f.key].kind != kBin }))
 	}
-	if n >= maxFactsets {
-		full.fs = m.t.factset(fs.only(func(f fact) bool { return m.t.abs[f.val].kind != aInt && m.x.nodes[f.key].kind != kBin }))
-		if id, ok := m.symID[full]; ok {
-			return id
-		}
+	if _, known := m.symID[less]; !known {
+		m.factsets[s] = n + 1
 	}
-	m.factsets[s] = n + 1
-	return m.symbol(full)
+	id := m.symbol(less)
+	m.reduced[full] = id
+	return id
 }
 
 // Rules implements pds.System: it walks from the head's point to the next step

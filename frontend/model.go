@@ -56,8 +56,9 @@ type Model struct {
 	askedWrites map[*effects.Summary]bool
 	keyOf       map[valueAt]Expr
 	upOf        map[upKeyOf][]Expr
-	factsets    map[symbol]int         // symbols by everything but their facts
-	visited     map[*ssa.Function]bool // functions whose code the exploration entered
+	reduced     map[symbol]pds.SymbolID // what symbols were reduced to, themselves included
+	factsets    map[symbol]int          // symbols by everything but their facts
+	visited     map[*ssa.Function]bool  // functions whose code the exploration entered
 	funcIDs     map[*ssa.Function]int
 }
 
@@ -151,6 +152,7 @@ func (sh *Shared) lower(rule *properties.ResolvedRule) *Model {
 		doubtID:     map[doubtKey]pds.DoubtID{},
 		visited:     map[*ssa.Function]bool{},
 		factsets:    map[symbol]int{},
+		reduced:     map[symbol]pds.SymbolID{},
 		keyOf:       map[valueAt]Expr{},
 		upOf:        map[upKeyOf][]Expr{},
 		exits:       map[exitKey]state{},
