@@ -1137,7 +1137,7 @@ func (m *Model) overwritesNew(sum *effects.Summary, addr Expr, fn *ssa.Function)
 		if !ok {
 			return m.cellWritten(sum, addr, fn)
 		}
-		return escapes(a) && sum.MayOverwriteCell(a.Type().Underlying().(*types.Pointer).Elem())
+		return storedOutside(a) && sum.MayOverwriteCell(a.Type().Underlying().(*types.Pointer).Elem())
 	case kFree, kParam, kLoad, kCap, kFieldVal, kRes, kResult:
 		return m.cellWritten(sum, addr, fn)
 	}
@@ -1169,6 +1169,36 @@ func (m *Model) elemWritten(sum *effects.Summary, c Expr, fn *ssa.Function) bool
 	}
 	return sum.Writes()
 }
+
+// storedOutside tells whether code outside the function that has the cell may
+// store to it: it holds the address, and not only to read, as a closure does
+// whose captured variable it never assigns.
+func storedOutside(cell ssa.Value) bool {
+	for _, r := range *cell.Referrers() {
+		switch r := r.(type) {
+		case *ssa.Store:
+			if r.Val == cell || isFreeVar(cell) {
+				return true
+			}
+		case *ssa.UnOp, *ssa.DebugRef:
+		case *ssa.FieldAddr, *ssa.IndexAddr:
+			if isFreeVar(cell) {
+				return true // a part may be stored to, or handed on
+			}
+		case *ssa.MakeClosure:
+			for i, b := range r.Bindings {
+				if b == cell && storedOutside(r.Fn.(*ssa.Function).FreeVars[i]) {
+					return true
+				}
+			}
+		default:
+			return true
+		}
+	}
+	return false
+}
+
+func isFreeVar(v ssa.Value) bool { _, ok := v.(*ssa.FreeVar); return ok }
 
 // escapes tells whether code outside the function may hold the cell's address.
 func escapes(a *ssa.Alloc) bool {
