@@ -54,6 +54,7 @@ type unit struct {
 	pos     int // of the function in the bottom-up order
 	seq     int // of the unit's making
 	start   properties.Start
+	level   int // calls above the function where the event or birth stands
 	settled bool
 	closed  bool
 	parents []unitKey // callers that follow it
@@ -230,10 +231,32 @@ func (m *Model) Next() (properties.Start, bool) {
 	return u.start, true
 }
 
+// maxClimb bounds how many calls above an event a function is still followed
+// that is not even: what is uneven that far up is judged there, as if it were a
+// root, and not from the hundreds of roots further up.
+const maxClimb = 12
+
+// climb makes a unit of a caller of u.
+func (m *Model) climb(u *unit, k unitKey) {
+	_, known := m.units.byKey[k]
+	v := m.addUnit(k)
+	if !known {
+		v.level = u.level + 1
+	}
+}
+
 // Settle implements properties.BottomUp.
 func (m *Model) Settle(s properties.Settled) {
 	u := m.units.now
+	if s == properties.Closed && m.callsRecover(u.fn.fn) {
+		// It was asked as if nothing panicked: what it does behind a recover that
+		// answers is seen by whoever defers it only.
+		s = properties.NotClosed
+	}
 	u.settled, u.closed = true, s == properties.Closed
+	if s == properties.NotClosed && u.level >= maxClimb {
+		s = properties.Spent
+	}
 	if s != properties.NotClosed {
 		if u.u == 0 && u.fn.exports == exportsUnknown {
 			u.fn.exports = exportsNo
@@ -257,7 +280,7 @@ func (m *Model) Settle(s properties.Settled) {
 		}
 		if u.u == 0 {
 			u.parents = append(u.parents, unitKey{g, 0})
-			m.addUnit(unitKey{g, 0})
+			m.climb(u, unitKey{g, 0})
 			continue
 		}
 		for _, o := range m.translate(g, u.u, c, u.fn.fn) {
@@ -269,11 +292,11 @@ func (m *Model) Settle(s properties.Settled) {
 				if g.subjects[o.s] && !m.x.hasGhost(o.s) {
 					k := unitKey{g, o.s}
 					u.parents = append(u.parents, k)
-					m.addUnit(k)
+					m.climb(u, k)
 				}
 			case len(g.births[o.b]) > 0:
 				u.parents = append(u.parents, unitKey{g, 0})
-				m.addUnit(unitKey{g, 0})
+				m.climb(u, unitKey{g, 0})
 			}
 		}
 	}

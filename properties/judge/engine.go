@@ -21,6 +21,9 @@ type engine struct {
 	solved map[string]*summary.Solution
 	// spent lists heads whose saturation ran out, so that it is not tried again.
 	spent map[pds.Head]summary.Answer
+	// masked names the last solution with something switched off.
+	masked         string
+	maskedSolution *summary.Solution
 	// labels: per head, the labels of its rules; filled where labels are switched off.
 	labels map[pds.Head][]pds.LabelID
 }
@@ -54,8 +57,15 @@ func grouped(n int64) string {
 }
 
 func (g *engine) solution(a ask) *summary.Solution {
-	q := summary.Question{Weights: a.weights, StopMarks: a.stops, AnyMoment: a.moment, TakeDoubts: a.mend}
+	q := summary.Question{Weights: a.weights, StopMarks: a.stops, AnyMoment: a.moment, TakeDoubts: a.mend, FearDoubts: a.fear}
 	if len(a.off)+len(a.offLabels) > 0 {
+		// Starts that are asked with the causes found so far switched off share
+		// the solution, as long as no cause is new.
+		masked := fmt.Sprint(a.weights, a.stops, a.moment, a.mend, a.off, a.offLabels)
+		if masked == g.masked {
+			return g.maskedSolution
+		}
+		defer func() { g.masked = masked }()
 		off := make(map[ruleAt]bool, len(a.off))
 		for _, r := range a.off {
 			off[r] = true
@@ -63,9 +73,10 @@ func (g *engine) solution(a ask) *summary.Solution {
 		q.Off = func(h pds.Head, rule int) bool {
 			return off[ruleAt{h, rule}] || len(a.offLabels) > 0 && slices.Contains(a.offLabels, g.labelsOf(h)[rule])
 		}
-		return g.e.Solve(q)
+		g.maskedSolution = g.e.Solve(q)
+		return g.maskedSolution
 	}
-	key := fmt.Sprint(a.weights, a.stops, a.moment, a.mend)
+	key := fmt.Sprint(a.weights, a.stops, a.moment, a.mend, a.fear)
 	s, ok := g.solved[key]
 	if !ok {
 		s = g.e.Solve(q)

@@ -55,6 +55,7 @@ type judge struct {
 	surpluses map[string]surplus
 	res       *RuleResult
 	keyAt     map[string]int // index into res.findings
+	known     map[string]*causesSoFar
 }
 
 // Judge gives the verdicts of one rule on one model. It panics with a *Bug if
@@ -78,7 +79,7 @@ func (o Options) causes() int {
 }
 
 func newJudge(rule *properties.ResolvedRule, m properties.Model, s searcher, opt Options) *judge {
-	j := &judge{rule: rule, m: m, s: s, opt: opt, homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}}
+	j := &judge{rule: rule, m: m, s: s, opt: opt, homes: map[string][]int{}, surpluses: map[string]surplus{}, res: &RuleResult{}, keyAt: map[string]int{}, known: map[string]*causesSoFar{}}
 	if b, ok := m.(properties.BottomUp); ok {
 		for s, more := b.Next(); more; s, more = b.Next() {
 			b.Settle(j.closed(&s))
@@ -209,6 +210,7 @@ func (j *judge) closed(s *properties.Start) properties.Settled {
 		for qi := range c.Questions {
 			w := c.Questions[qi].Weights
 			a := j.asks(s, c, w)
+			a.fear = true
 			if isEnd(c.Point) {
 				// Whatever way the function is left, and whoever recovers.
 				a.stops = pds.MarkLoss
@@ -256,6 +258,12 @@ func (j *judge) answer(si int, c *properties.Claim, q *properties.Question) answ
 		return j.undecided(s, c, stop)
 	}
 	if x.ground != "" {
+		if o, stop := j.fears(s, c, x); o != nil || stop != nil {
+			if stop != nil {
+				return j.undecided(s, c, stop)
+			}
+			return answered{verdict: Undecided, open: o}
+		}
 		return answered{ground: x.ground}
 	}
 	a := x.a
@@ -317,6 +325,37 @@ func (j *judge) suspect(si int, c *properties.Claim, q *properties.Question) (su
 	return x, nil
 }
 
+// fears asks what held once more with every doubt taken that would make a path
+// heavier: what is broken then hangs on a doubt, and does not hold. nil: it holds.
+func (j *judge) fears(s *properties.Start, c *properties.Claim, x suspected) (*Open, *stopped) {
+	a := x.a
+	a.fear = true
+	most, stop := j.s.greatest(a)
+	if stop != nil || !most.over(x.bound) {
+		return nil, stop
+	}
+	o := j.openFor(s, c, "a doubt", 0)
+	choices, stop := j.s.witness(a, x.bound)
+	if stop != nil {
+		o.StoppedBy = stop.reason
+		return o, nil
+	}
+	t, err := replay(j.m, a.start, choices)
+	if err != nil {
+		j.bug("replaying an undecided path", s, err.Error())
+	}
+	if d := j.firstDoubt(t.run, choices, negated(a.weights), true); d != 0 {
+		n := j.m.Doubt(d)
+		o.Doubt = n
+		o.StoppedBy = "doubt: " + n.Text
+		if n.Place.Line > 0 {
+			o.Place = n.Place
+		}
+		o.SoFar = "the claim is broken if this step concerns the instance, and holds if it does not"
+	}
+	return o, nil
+}
+
 // doubtOf names the doubt that an answer hangs on: the first one on the
 // shortest breaking path that would make the path lighter.
 func (j *judge) doubtOf(s *properties.Start, c *properties.Claim, a ask, bound int64) *Open {
@@ -330,7 +369,7 @@ func (j *judge) doubtOf(s *properties.Start, c *properties.Claim, a ask, bound i
 	if err != nil {
 		j.bug("replaying an undecided path", s, err.Error())
 	}
-	if d := j.firstDoubt(t.run, choices, a.weights); d != 0 {
+	if d := j.firstDoubt(t.run, choices, a.weights, false); d != 0 {
 		n := j.m.Doubt(d)
 		o.Doubt = n
 		o.StoppedBy = "doubt: " + n.Text
@@ -342,15 +381,17 @@ func (j *judge) doubtOf(s *properties.Start, c *properties.Claim, a ask, bound i
 	return o
 }
 
-func (j *judge) firstDoubt(r pds.Run, choices []pds.Choice, w []int64) pds.DoubtID {
+// firstDoubt is the first doubt of a path that would make it lighter, among
+// those that the path took or among those that it did not.
+func (j *judge) firstDoubt(r pds.Run, choices []pds.Choice, w []int64, taken bool) pds.DoubtID {
 	for i := range choices {
 		rule := r.Configs[i].Rule
-		if rule.Doubt != 0 && !choices[i].Doubt && dot(w, j.m.Vector(rule.DoubtEffect)) < dot(w, j.m.Vector(rule.Effect)) {
+		if rule.Doubt != 0 && choices[i].Doubt == taken && dot(w, j.m.Vector(rule.DoubtEffect)) < dot(w, j.m.Vector(rule.Effect)) {
 			return rule.Doubt
 		}
 		for k, sub := range r.Configs[i].Spawned {
 			if k < len(choices[i].Spawned) {
-				if d := j.firstDoubt(sub, choices[i].Spawned[k], w); d != 0 {
+				if d := j.firstDoubt(sub, choices[i].Spawned[k], w, taken); d != 0 {
 					return d
 				}
 			}
@@ -367,6 +408,28 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 	found := map[string]bool{}
 	first, off, soft := "", "", true
 	var blamed []properties.Func
+	// What earlier starts have shown is switched off: a start that is even
+	// without it is broken by nothing else, and no path has to be found again.
+	var known *causesSoFar
+	if fits == nil {
+		key := fmt.Sprint(c.Name, " ", q.Text, " ", s.Home, " ", s.Born)
+		if known = j.known[key]; known == nil {
+			known = &causesSoFar{}
+			j.known[key] = known
+		}
+		known.starts++
+		if known.starts > searchedStarts && len(known.off)+len(known.offLabels) > 0 {
+			b := a
+			b.off, b.offLabels = known.off, known.offLabels
+			most, stop := j.s.greatest(b)
+			if stop == nil && !most.over(bound) {
+				return known.answer
+			}
+			if stop == nil {
+				a = b
+			}
+		}
+	}
 	// The same cause may show in several contexts: those turns are bounded too.
 	for turn := 0; ; turn++ {
 		if len(found) >= limit || turn >= 4*limit {
@@ -379,7 +442,7 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 			return answered{verdict: Undecided, open: j.openFor(s, c, stop.reason, stop.steps)}
 		}
 		if choices == nil {
-			if turn == 0 && stop == nil {
+			if turn == 0 && stop == nil && (known == nil || known.answer.verdict != Broken) {
 				j.bug("finding a witness", s, fmt.Sprintf("%s has a path over %d and no witness", c.Name, bound))
 			}
 			break
@@ -424,7 +487,30 @@ func (j *judge) causes(si int, c *properties.Claim, q *properties.Question, a as
 	if len(found) > 0 && !j.reported(found) {
 		return answered{ground: "switched off in " + off + ", where it is broken"}
 	}
-	return answered{verdict: Broken, ground: first, soft: soft, blame: blamed}
+	v := answered{verdict: Broken, ground: first, soft: soft, blame: blamed}
+	if known != nil {
+		known.off = union(known.off, a.off)
+		known.offLabels = union(known.offLabels, a.offLabels)
+		if known.answer.verdict == Broken && len(found) == 0 {
+			return known.answer
+		}
+		known.answer = v
+	}
+	return v
+}
+
+// searchedStarts is how many starts that share a cause are searched for the
+// shortest path to it; the others are broken by the same causes or searched for
+// others.
+const searchedStarts = 4
+
+// causesSoFar is what the starts asked so far have shown of one question about
+// one place.
+type causesSoFar struct {
+	starts    int
+	off       []ruleAt
+	offLabels []pds.LabelID
+	answer    answered
 }
 
 // reported says that a finding with one of the keys was kept.
@@ -617,4 +703,15 @@ func holdsText(q *properties.Question, names []string, g greatestWeight) string 
 func fingerprint(parts ...string) string {
 	h := sha256.Sum256([]byte(strings.Join(parts, "\x00")))
 	return hex.EncodeToString(h[:8])
+}
+
+// union appends to a what b has besides.
+func union[T comparable](a, b []T) []T {
+	out := slices.Clone(a)
+	for _, x := range b {
+		if !slices.Contains(out, x) {
+			out = append(out, x)
+		}
+	}
+	return out
 }
