@@ -956,7 +956,7 @@ func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pd
 		m.kill(p, c)
 		dst = append(dst, m.leaveBy(p, properties.ExitPanic, m.label(label{kind: lblCallPanics, instr: c})))
 	}
-	if ex&effects.Goexits != 0 && ex&effects.Returns == 0 {
+	if m.goexits(c, ex) {
 		p := fr.clone()
 		m.kill(p, c)
 		dst = append(dst, m.leaveBy(p, properties.ExitGoexit, m.label(label{kind: lblGoexit, instr: c})))
@@ -983,6 +983,18 @@ func (m *Model) silent(fr *frame, c *ssa.Call, targets []*ssa.Function, dst []pd
 		return append(dst, m.goTo(fr, 0)), true
 	}
 	return nil, false
+}
+
+// goexits tells whether a call that is not entered may end the goroutine.
+func (m *Model) goexits(site ssa.CallInstruction, ex effects.Exit) bool {
+	if ex&effects.Goexits == 0 {
+		return false
+	}
+	if ex&effects.Returns == 0 {
+		return true
+	}
+	g := site.Common().StaticCallee()
+	return g != nil && m.sh.goexits[g]
 }
 
 // mayMend gives what a call of unknown code counts if it does to the instance
@@ -1432,7 +1444,7 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 	if ex&effects.Panics != 0 && (m.panicMatters[fi.fn] || ex&effects.Returns == 0) {
 		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitPanic), Label: m.label(label{kind: lblCallPanics, instr: d})})
 	}
-	if ex&effects.Goexits != 0 && ex&effects.Returns == 0 {
+	if m.goexits(d, ex) {
 		dst = append(dst, pds.Rule{Kind: pds.Pop, State: m.unwindState(fr, properties.ExitGoexit), Label: m.label(label{kind: lblGoexit, instr: d})})
 	}
 	if ex&effects.Returns != 0 {

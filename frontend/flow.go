@@ -380,7 +380,7 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 	}
 	sum := m.sh.effectsAt(c)
 	ex := m.sh.exitsAt(c)
-	if ex&effects.Returns == 0 || ex&(effects.Goexits|effects.ExitsAll) != 0 && ex&effects.Returns == 0 {
+	if ex&effects.Returns == 0 || m.goexits(c, ex) {
 		return false
 	}
 	if ex&effects.Panics != 0 && m.panicMatters[fi.fn] {

@@ -30,6 +30,7 @@ type Shared struct {
 	dynamic    []ssa.CallInstruction            // calls of function values
 	taken      map[*ssa.Function]bool           // its value is used other than by being called
 	spawned    map[*ssa.Function]bool           // started by a go statement that names it
+	goexits    map[*ssa.Function]bool           // may end its goroutine
 	events     map[*types.Func]bool             // functions that are events of the rules judged together
 	syntaxOnce sync.Once
 	syntax     map[string]*ast.File // by absolute file name
@@ -100,7 +101,38 @@ func Analyze(prog *load.Program, paths ...string) *Shared {
 	for i := 0; i < len(sh.fns); i++ { // grows by wrappers that calls name
 		sh.scan(sh.fns[i])
 	}
+	sh.findGoexits()
 	return sh
+}
+
+// findGoexits marks the functions that may end their goroutine: they call, by
+// name, one of which nothing else is known, or one that may. What only a candidate of a
+// call by value or through an interface does is taken not to happen, or nearly
+// every such call would have this way out.
+func (sh *Shared) findGoexits() {
+	sh.goexits = map[*ssa.Function]bool{}
+	var work []*ssa.Function
+	for g := range sh.callers {
+		if ex := sh.eff.Of(g).Exits(); ex&^effects.Blocks == effects.Goexits {
+			work = append(work, g)
+		}
+	}
+	for len(work) > 0 {
+		g := work[len(work)-1]
+		work = work[:len(work)-1]
+		if sh.goexits[g] {
+			continue
+		}
+		sh.goexits[g] = true
+		for _, c := range sh.callers[g] {
+			if c.site == nil || c.site.Common().StaticCallee() == nil {
+				continue
+			}
+			if _, ok := c.site.(*ssa.Go); !ok {
+				work = append(work, c.fn)
+			}
+		}
+	}
 }
 
 // know adds a function that nobody listed (a wrapper).

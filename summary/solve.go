@@ -29,6 +29,8 @@ type Question struct {
 	Prefixes bool
 	// TakeDoubts: a step with a doubt weighs what is less, with or without it.
 	TakeDoubts bool
+	// FearDoubts: a step with a doubt weighs what is more, with or without it.
+	FearDoubts bool
 	// Off takes rules out of the system: index into Rules(head). Nil: none.
 	Off func(h pds.Head, rule int) bool
 }
@@ -187,8 +189,11 @@ func (e *Engine) Solve(q Question) *Solution {
 	}
 	s := &Solution{e: e, q: q, pumps: map[NT][]pumpStep{}, endless: map[node]bool{}, searches: map[int64]*search{}, allowance: pumpAllowance}
 	s.q.Weights = slices.Clone(q.Weights)
-	if q.TakeDoubts {
+	switch {
+	case q.TakeDoubts:
 		s.doubt = 1
+	case q.FearDoubts:
+		s.doubt = -1
 	}
 	return s
 }

@@ -24,6 +24,8 @@ type ask struct {
 	moment bool     // also stop anywhere
 	// mend takes every doubt that lowers the weight of the path.
 	mend bool
+	// fear takes every doubt that raises the weight of the path.
+	fear bool
 	off  []ruleAt // rules that no path may take
 	// offLabels switches off all rules with one of these labels.
 	offLabels []pds.LabelID

@@ -30,6 +30,13 @@ func (j *judge) answerCase(si int, c *properties.Claim, all []properties.Questio
 			return j.undecided(s, c, stop)
 		}
 		if x.ground != "" {
+			o, stop := j.fears(s, c, x)
+			switch {
+			case stop != nil:
+				return j.undecided(s, c, stop)
+			case o != nil:
+				return answered{verdict: Undecided, open: o}
+			}
 			return answered{ground: x.ground}
 		}
 		notes = append(notes, x.notes...)

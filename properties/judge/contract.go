@@ -57,7 +57,7 @@ type span struct {
 func (s span) is(n int64) bool { return !s.none && s.ok && s.lo == n && s.hi == n }
 
 func (j *judge) span(head pds.Head, w []int64, accept func(properties.Exit) bool) (span, *stopped) {
-	a := ask{start: head, weights: w, accept: func(q pds.StateID) bool { return accept(j.m.Exit(q)) }}
+	a := ask{start: head, weights: w, fear: true, accept: func(q pds.StateID) bool { return accept(j.m.Exit(q)) }}
 	hi, stop := j.s.greatest(a)
 	if stop != nil || hi.none {
 		return span{none: stop == nil}, stop

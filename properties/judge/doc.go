@@ -23,7 +23,9 @@
 //  1. ask for the greatest weight of the claim's questions over the accepted
 //     exits (ask.go: which exits a checkpoint accepts);
 //  2. look for a contract that excuses the answer (contract.go);
-//  3. ask again with every doubt taken that would mend the path;
+//  3. ask again with every doubt taken that would mend the path, or, of what
+//     held, with every doubt taken that would break it: undecided if that
+//     changes the answer;
 //  4. take the shortest witness and replay it (path.go) with code that shares
 //     nothing with the search;
 //  5. find the frame and the step to blame (blame.go), word the finding
