@@ -54,7 +54,7 @@ func (m *Model) flowOf(fi *fnInfo) *flowInfo {
 
 // maxRounds bounds how often the functions of the cone are prepared again
 // because callers and callees ask more of each other.
-const maxRounds = 6
+const maxRounds = 3
 
 // buildFlows prepares all functions of the cone, again until the facts that
 // callers and callees ask of each other no longer grow (recursion) or a fixed
@@ -396,6 +396,9 @@ func (m *Model) inertCall(fi *fnInfo, c *ssa.Call) bool {
 		if isBound(g) && m.isEventFunc(g) {
 			return false // an event, if the function value is bound to the instance
 		}
+	}
+	if !c.Call.IsInvoke() && m.carriesValue(c.Call.Value) {
+		return false
 	}
 	for _, a := range c.Call.Args {
 		if m.carriesValue(a) {

@@ -28,7 +28,7 @@ type Options struct {
 const (
 	// A start that is judged at all needs a few hundred steps, rarely thousands;
 	// one that takes more than this takes without end (an explosion of contexts).
-	DefaultSteps  = 12_000
+	DefaultSteps  = 4_000
 	DefaultCauses = 20
 )
 
@@ -222,6 +222,15 @@ func (j *judge) closed(s *properties.Start) properties.Settled {
 			most, stop := j.s.greatest(a)
 			if stop != nil || most.over(c.Questions[qi].Bound) {
 				return of(stop)
+			}
+			if qi == 0 && ci == 0 {
+				armed, stop := j.s.greatest(ask{start: s.Head, weights: w, fear: true, accept: func(q pds.StateID) bool {
+					e := j.m.Exit(q)
+					return e.Armed && matters(e)
+				}})
+				if stop != nil || !armed.none {
+					return of(stop)
+				}
 			}
 			if s.Born {
 				continue
