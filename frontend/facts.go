@@ -4,6 +4,7 @@ import (
 	"go/constant"
 	"go/token"
 	"go/types"
+	"slices"
 
 	"golang.org/x/tools/go/ssa"
 
@@ -371,6 +372,9 @@ func (m *Model) absDepth(fr *frame, v ssa.Value, at *ssa.BasicBlock, depth int) 
 			}
 		}
 	case *ssa.BinOp:
+		if a := m.moved(fr, v, at); a != 0 {
+			return a
+		}
 		return m.binAbs(v.Op, m.absDepth(fr, v.X, at, depth+1), m.absDepth(fr, v.Y, at, depth+1), v)
 	case *ssa.Call:
 		if b, ok := v.Call.Value.(*ssa.Builtin); ok && (b.Name() == "len" || b.Name() == "cap") {
@@ -393,6 +397,47 @@ func (m *Model) absDepth(fr *frame, v ssa.Value, at *ssa.BasicBlock, depth int) 
 		}
 	}
 	return 0
+}
+
+// moved answers whether two pointers are equal of which one is a variable that
+// began as the other and may have gone on, as in a walk along a chain: they are
+// equal if the instance lies at the same place in both, and different if it lies
+// in one of them only. 0 if nothing tells. A chain that comes back to where it
+// began is not thought of: two names of different places are different objects.
+func (m *Model) moved(fr *frame, v *ssa.BinOp, at *ssa.BasicBlock) Abs {
+	if fr.ns.phase != born || v.Op != token.EQL && v.Op != token.NEQ || v.Block() != at {
+		return 0
+	}
+	if _, ok := v.X.Type().Underlying().(*types.Pointer); !ok || !beganAs(v.X, v.Y) && !beganAs(v.Y, v.X) {
+		return 0
+	}
+	x, y := m.x.name(v.X), m.x.name(v.Y)
+	inX, inY := false, false
+	for _, e := range fr.ns.names {
+		switch k := m.x.nodes[e].kind; {
+		case k == kMaybe || k == kHeld:
+			if m.x.within(x, e) || m.x.within(y, e) {
+				return 0
+			}
+		case k == kField && m.x.within(x, e) && m.x.loads[e] == m.x.loads[x]:
+			inX = true
+			if fr.ns.has(m.x.rebase(e, x, y)) {
+				return m.boolAbs(v.Op == token.EQL)
+			}
+		case k == kField && m.x.within(y, e) && m.x.loads[e] == m.x.loads[y]:
+			inY = true
+		}
+	}
+	if inX != inY {
+		return m.boolAbs(v.Op == token.NEQ)
+	}
+	return 0
+}
+
+// beganAs tells whether v is a φ that has the value from on one of its edges.
+func beganAs(v, from ssa.Value) bool {
+	phi, ok := v.(*ssa.Phi)
+	return ok && slices.Contains(phi.Edges, from)
 }
 
 // globalAbs is what is known of a package variable that only its package's
