@@ -489,6 +489,10 @@ func (m *Model) enters(fr *frame, l *link) bool {
 		if m.concernsNow(fr.ns, g, e) {
 			return true
 		}
+		// A function value that the callee may call.
+		if k := m.x.rootKind(e); (k == kParam || k == kFree) && m.armed(e, false) {
+			return true
+		}
 	}
 	sum := m.sh.eff.Of(g.fn)
 	for _, e := range in.names {

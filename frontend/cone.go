@@ -101,6 +101,20 @@ func (m *Model) buildCone() {
 			push(fi)
 		}
 	}
+	for _, mc := range m.sh.boundEvents(m.rule) {
+		// Whoever calls the method value later: the instance is named here.
+		if fn := mc.Parent(); !m.isEventFunc(fn) && valueUsed(mc) {
+			fi := m.info(fn)
+			fi.events, fi.cone, fi.near = true, true, true
+			for _, o := range m.origins(fi, mc.Bindings[0]) {
+				m.addSubject(fi, o)
+				if o.b == nil && o.s != 0 && m.typeFits(fi.fn, o.s) && !slices.Contains(fi.own, o.s) {
+					fi.own = append(fi.own, o.s)
+				}
+			}
+			push(fi)
+		}
+	}
 	for len(work) > 0 {
 		fi := work[0]
 		work = work[1:]

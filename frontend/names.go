@@ -60,6 +60,35 @@ func (m *Model) closureFn(ns nset, x Expr) *ssa.Function {
 	return nil
 }
 
+// armed tells whether the name e of the instance says that a function value
+// captured it which does something to it when it is called. With leaves, only a
+// value that the caller did not hand in itself counts.
+func (m *Model) armed(e Expr, leaves bool) bool {
+	for x := e; m.x.isSel(x); x = m.x.nodes[x].x {
+		n := m.x.nodes[x]
+		fn, ok := n.ref.(*ssa.Function)
+		if n.kind != kCap || !ok {
+			continue
+		}
+		if k := m.x.rootKind(n.x); leaves && (k == kParam || k == kFree) && m.x.loads[n.x] == 0 {
+			continue
+		}
+		if isBound(fn) && m.isEventFunc(fn) {
+			if x == e {
+				return true
+			}
+			continue
+		}
+		if g, ok := m.fnOf[fn]; ok && g.cone {
+			in := m.x.rename(e, x, m.x.free(int(n.n)))
+			if m.concerns(g, in) && !m.evenBelow(g, in) {
+				return true
+			}
+		}
+	}
+	return false
+}
+
 // reaches tells whether e is a name under val, or under what the closure val captures.
 func (m *Model) reaches(e Expr, val ssa.Value) bool {
 	if m.x.within(m.x.name(val), e) {

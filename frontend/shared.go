@@ -27,6 +27,7 @@ type Shared struct {
 	callers    map[*ssa.Function][]caller
 	targets    map[ssa.CallInstruction][]*ssa.Function
 	byName     map[string][]ssa.CallInstruction // sites by the name of the method or function called
+	bound      map[string][]*ssa.MakeClosure    // method values by the method's name
 	dynamic    []ssa.CallInstruction            // calls of function values
 	taken      map[*ssa.Function]bool           // its value is used other than by being called
 	spawned    map[*ssa.Function]bool           // started by a go statement that names it
@@ -88,6 +89,7 @@ func Analyze(prog *load.Program, paths ...string) *Shared {
 		callers: map[*ssa.Function][]caller{},
 		targets: map[ssa.CallInstruction][]*ssa.Function{},
 		byName:  map[string][]ssa.CallInstruction{},
+		bound:   map[string][]*ssa.MakeClosure{},
 		taken:   map[*ssa.Function]bool{},
 		spawned: map[*ssa.Function]bool{},
 	}
@@ -151,6 +153,10 @@ func (sh *Shared) scan(fn *ssa.Function) {
 				g := i.Fn.(*ssa.Function)
 				sh.know(g)
 				sh.callers[g] = append(sh.callers[g], caller{fn: fn, made: i})
+				if isBound(g) {
+					n := funcObject(g).Name()
+					sh.bound[n] = append(sh.bound[n], i)
+				}
 				if valueUsed(i) {
 					sh.taken[g] = true
 				}
@@ -361,6 +367,31 @@ func (sh *Shared) candidateSites(rule *properties.ResolvedRule) []ssa.CallInstru
 	}
 	if dynamic {
 		out = append(out, sh.dynamic...)
+	}
+	return out
+}
+
+// boundEvents lists the method values whose methods are events of the rule, in
+// a fixed order.
+func (sh *Shared) boundEvents(rule *properties.ResolvedRule) []*ssa.MakeClosure {
+	var out []*ssa.MakeClosure
+	seen := map[*types.Func]bool{}
+	for i := range rule.Events {
+		e := &rule.Events[i]
+		if _, ok := e.On.(properties.PatInstance); !ok {
+			continue
+		}
+		for _, c := range e.Callees {
+			if seen[c.Obj] {
+				continue
+			}
+			seen[c.Obj] = true
+			for _, mc := range sh.bound[c.Obj.Name()] {
+				if funcObject(mc.Fn.(*ssa.Function)) == c.Obj {
+					out = append(out, mc)
+				}
+			}
+		}
 	}
 	return out
 }

@@ -132,6 +132,9 @@ type Exit struct {
 	Unborn bool
 	// Named: the instance has a name that whoever is returned to may know it by.
 	Named bool
+	// Armed: a function value that does something to the instance when it is
+	// called leaves the function; its callers have to follow it.
+	Armed bool
 	// True is set if the last result is a bool known to be true, False if known
 	// to be false (for contracts like TryTake).
 	True, False bool
