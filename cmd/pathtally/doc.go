@@ -7,6 +7,8 @@
 //	pathtally check [packages]      judge the rules
 //	pathtally accept [packages]     record findings with a reason; see package accept
 //	pathtally rules list|show|try   look at the rules, run their examples
+//	pathtally count FUNCTION        the count image of a function or system (count.go)
+//	pathtally export [packages]     the system or the question behind count (export.go)
 //	pathtally join FILES            put the parts of a run together (part.go)
 //	pathtally completion SHELL      for bash, zsh, fish and powershell
 //

@@ -112,8 +112,10 @@ func wantsJSON(args []string) bool {
 const rootHelp = `pathtally: do things that belong in pairs come out even on every call path?
 
   pathtally check [packages]      judge the rules; exit 1 if something is broken
+  pathtally count FUNCTION        which counts can this function produce?
   pathtally accept [packages]     record today's findings; later runs stop only for new ones
   pathtally rules  COMMAND        list, show, try
+  pathtally export [packages]     the model as JSON or DOT, a question as SMT-LIB 2
   pathtally join FILES            one result out of the parts of a run
   pathtally completion SHELL      completion of commands and flags
 
@@ -129,7 +131,7 @@ func command(ctx context.Context, s streams) *cobra.Command {
 		SilenceUsage:  true,
 		Args: func(_ *cobra.Command, args []string) error {
 			if len(args) > 0 {
-				return fmt.Errorf("there is no command %s: there are check, accept, rules, join and completion", args[0])
+				return fmt.Errorf("there is no command %s: there are check, count, accept, rules, export, join and completion", args[0])
 			}
 			return nil
 		},
@@ -139,12 +141,12 @@ func command(ctx context.Context, s streams) *cobra.Command {
 	root.SetHelpCommand(&cobra.Command{Use: "help", Hidden: true, RunE: func(c *cobra.Command, args []string) error {
 		target, _, err := root.Find(args)
 		if err != nil || target == nil {
-			return fmt.Errorf("there is no command %s: there are check, accept, rules, join and completion", strings.Join(args, " "))
+			return fmt.Errorf("there is no command %s: there are check, count, accept, rules, export, join and completion", strings.Join(args, " "))
 		}
 		return target.Help()
 	}})
 	setHelp(root, rootHelp)
-	root.AddCommand(checkCommand(ctx, s), acceptCommand(ctx, s), rulesCommand(ctx, s), joinCommand(s), completionCommand(s))
+	root.AddCommand(checkCommand(ctx, s), acceptCommand(ctx, s), rulesCommand(ctx, s), countCommand(ctx, s), exportCommand(ctx, s), joinCommand(s), completionCommand(s))
 	return root
 }
 

@@ -184,7 +184,7 @@ func TestHelpNamesTheFlags(t *testing.T) {
 	for _, c := range []struct {
 		path []string
 		text string
-	}{{[]string{"check"}, checkHelp}, {[]string{"accept"}, acceptHelp}, {[]string{"join"}, joinHelp}, {[]string{"rules", "try"}, rulesHelp}} {
+	}{{[]string{"check"}, checkHelp}, {[]string{"accept"}, acceptHelp}, {[]string{"count"}, countHelp}, {[]string{"export"}, exportHelp}, {[]string{"join"}, joinHelp}, {[]string{"rules", "try"}, rulesHelp}} {
 		cmd, _, err := root.Find(c.path)
 		if err != nil {
 			t.Fatal(err)
