@@ -59,8 +59,8 @@ type exprs struct {
 	nodes []exprNode
 	ids   map[exprNode]Expr
 	names map[ssa.Value]Expr // answers of name
-	root  []Expr  // root[e]: the innermost subject (a kParam, kFree, kGlobal, kReg, kRes, kResult node)
-	loads []int16 // number of kLoad, kIndex and kHeld selectors in e
+	root  []Expr             // root[e]: the innermost subject (a kParam, kFree, kGlobal, kReg, kRes, kResult node)
+	loads []int16            // number of kLoad, kIndex and kHeld selectors in e
 	depth []int16
 }
 

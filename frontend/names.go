@@ -270,8 +270,14 @@ func (m *Model) typeFits(fn *ssa.Function, e Expr) bool {
 		if p, ok := t.Underlying().(*types.Pointer); ok && types.Identical(p.Elem(), want) {
 			return true
 		}
-		if p, ok := want.Underlying().(*types.Pointer); ok && types.Identical(p.Elem(), t) {
-			return true
+		if p, ok := want.Underlying().(*types.Pointer); ok {
+			if types.Identical(p.Elem(), t) {
+				return true
+			}
+			// A type with the instance's as underlying type (sync.rlocker).
+			if q, ok := t.Underlying().(*types.Pointer); ok && types.Identical(p.Elem().Underlying(), q.Elem().Underlying()) {
+				return true
+			}
 		}
 	}
 	return false
