@@ -706,7 +706,7 @@ func examine(ctx context.Context, f *countFlags, u *subject) (*countImage, error
 				im.Parameters = append(im.Parameters, p.Name+" = "+p.Text)
 			}
 			for _, c := range a.Choices {
-				im.Data = append(im.Data, fmt.Sprintf("%s: %s times %s", cmp.Or(c.Event, "condition"), c.Times, c))
+				im.Data = append(im.Data, dataText(u.sys.Table, c))
 			}
 			if err := u.path(a, im); err != nil {
 				return nil, err
@@ -727,8 +727,7 @@ func examine(ctx context.Context, f *countFlags, u *subject) (*countImage, error
 		if len(shown) > parikh.MaxRayCounts {
 			return nil, countUsage("--rays looks at %d counts at most: choose them with --counts", parikh.MaxRayCounts)
 		}
-		r := u.sys.Rays(ctx, shown)
-		im.Rays = &countRays{Rays: rows(r.Rays), Lines: rows(r.Lines), Complete: r.Status != parikh.Unknown, Budget: r.Budget}
+		im.findRays(ctx, u.sys, shown)
 	}
 	if f.grid > 0 {
 		if len(shown) < 2 {
@@ -746,6 +745,33 @@ func examine(ctx context.Context, f *countFlags, u *subject) (*countImage, error
 		im.Grid.Budget = g.Budget
 	}
 	return im, nil
+}
+
+// dataText describes events of one kind. A datum that a count adds up stands for
+// a range: only the counts say how much it was in all.
+func dataText(t *pds.Table, c parikh.Choice) string {
+	d := t.Data()
+	added := func(name string) bool {
+		return slices.ContainsFunc(d.Predicates, func(p pds.Predicate) bool {
+			e := &d.Events[p.Event]
+			return p.By >= 0 && e.Name == c.Event && e.Data[p.By].Name == name
+		})
+	}
+	text := cmp.Or(c.Event, "parameters")
+	if c.Times != nil {
+		text = c.Times.String() + " × " + text
+	}
+	for _, v := range c.Values {
+		if added(v.Name) {
+			text += " " + v.Name + " as counted"
+			continue
+		}
+		text += " " + v.Name + "=" + v.Text
+	}
+	if c.Guard != "" {
+		text += "   (" + c.Guard + ")"
+	}
+	return text
 }
 
 func askFailure(text string, names []string, err error) error {

@@ -140,7 +140,7 @@ func sameVector(a, b []*big.Int) bool {
 func (im *countImage) whole(ctx context.Context, sys *parikh.System, shown []int) {
 	u := sys.LinearSets(ctx, maxSets)
 	im.Whole, im.Stopped = u.Complete, u.Budget
-	for _, s := range u.Sets {
+	for _, s := range foldSets(u.Sets) {
 		set := countSet{Base: project(s.Base, shown), Periods: [][]*big.Int{}}
 		for _, p := range s.Periods {
 			q := project(p, shown)
@@ -155,6 +155,9 @@ func (im *countImage) whole(ctx context.Context, sys *parikh.System, shown []int
 		if !slices.ContainsFunc(im.Sets, same) {
 			im.Sets = append(im.Sets, set)
 		}
+	}
+	if !u.Complete && u.Budget != "data" && len(shown) <= parikh.MaxRayCounts {
+		im.findRays(ctx, sys, shown)
 	}
 	form := func(name string, plus, minus int) {
 		f := make(parikh.Form, len(sys.Names()))
@@ -188,6 +191,57 @@ func (im *countImage) whole(ctx context.Context, sys *parikh.System, shown []int
 		}
 	}
 	im.findMinimal(ctx, sys, shown)
+}
+
+// foldSets says the same with fewer sets. A set that lies in another one goes; and
+// what a set misses one turn before its base is often a set beside it,
+//
+//	(b - p + N(P without p)) and (b + N P)   is   b - p + N P
+//
+// Each turn of the loop takes a set away.
+func foldSets(sets []parikh.LinearSet) []parikh.LinearSet {
+	within := func(a, b [][]*big.Int) bool {
+		return !slices.ContainsFunc(a, func(p []*big.Int) bool {
+			return !slices.ContainsFunc(b, func(o []*big.Int) bool { return sameVector(o, p) })
+		})
+	}
+	fold := func(i, j int) bool {
+		s, x := sets[i], sets[j]
+		if !within(x.Periods, s.Periods) {
+			return false
+		}
+		if s.Contains(x.Base) {
+			return true
+		}
+		for k, p := range s.Periods {
+			before := make([]*big.Int, len(p))
+			for c := range p {
+				before[c] = new(big.Int).Sub(s.Base[c], p[c])
+			}
+			rest := slices.Concat(s.Periods[:k], s.Periods[k+1:])
+			if sameVector(before, x.Base) && within(rest, x.Periods) {
+				sets[i].Base = before
+				return true
+			}
+		}
+		return false
+	}
+again:
+	for i := range sets {
+		for j := range sets {
+			if i != j && fold(i, j) {
+				sets = slices.Delete(sets, j, j+1)
+				goto again
+			}
+		}
+	}
+	return sets
+}
+
+// findRays finds the directions in which the image extends.
+func (im *countImage) findRays(ctx context.Context, sys *parikh.System, shown []int) {
+	r := sys.Rays(ctx, shown)
+	im.Rays = &countRays{Rays: rows(r.Rays), Lines: rows(r.Lines), Complete: r.Status != parikh.Unknown, Budget: r.Budget}
 }
 
 // findMinimal lists minimal vectors. Those of a projection are projections of
@@ -322,13 +376,13 @@ func writeCountText(w io.Writer, r *countResult) error {
 			}
 		}
 		fmt.Fprintf(&b, "%s%s\n", im.Title, where)
-		im.text(&b, r)
+		im.text(&b)
 	}
 	_, err := io.WriteString(w, b.String())
 	return err
 }
 
-func (im *countImage) text(b *strings.Builder, r *countResult) {
+func (im *countImage) text(b *strings.Builder) {
 	if im.Doubts > 0 {
 		fmt.Fprintf(b, "  in doubt: %s may count or not; both ways are in the answer\n", counted1(im.Doubts, "step"))
 	}
@@ -407,9 +461,12 @@ func (im *countImage) text(b *strings.Builder, r *countResult) {
 			line("  + n"+strconv.Itoa(k+1)+" times", p, "")
 		}
 	}
+	if len(im.Sets) == 0 && im.Stopped != "" {
+		fmt.Fprintf(b, "  not split into base and periods: %s\n", reasonText(im.Stopped))
+	}
 	if len(im.Sets) > 0 {
 		switch {
-		case im.Whole && len(im.Counts) > 0:
+		case im.Whole:
 			fmt.Fprintf(b, "  these are all\n")
 		case im.Stopped == "limit":
 			fmt.Fprintf(b, "  there are more; these are the first %d sets\n", len(im.Sets))
@@ -456,23 +513,31 @@ func (im *countImage) text(b *strings.Builder, r *countResult) {
 			fmt.Fprintf(b, "  there may be more rays: %s\n", reasonText(r.Budget))
 		}
 	}
-	wide := 0
+	wide, known := 0, false
 	for _, x := range im.Bounds {
+		known = known || x.LeastKnown || x.MostKnown
 		wide = max(wide, utf8.RuneCountInString(x.Form))
 	}
+	if len(im.Bounds) > 0 && !known {
+		fmt.Fprintf(b, "  how large the counts get is not known\n")
+	}
 	for _, x := range im.Bounds {
+		if !known {
+			break
+		}
 		fmt.Fprintf(b, "  %s  %s\n", pad1(x.Form, max(wide, side)), x.words())
 	}
 	if im.Grid != nil {
 		im.Grid.text(b)
 	}
-	_ = r
 }
 
 func reasonText(reason string) string {
 	switch reason {
 	case "", "a count can fall":
 		return reason
+	case "data":
+		return "the system has data; --ask, --member and --grid answer for it"
 	case "slots":
 		return "outcomes of the data are too many to list"
 	}
