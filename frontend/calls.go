@@ -403,6 +403,9 @@ func (m *Model) resolve(fr *frame, site ssa.CallInstruction) (*shape, []*ssa.Fun
 				return &t, []*ssa.Function{fn}, 0
 			}
 		}
+		if isLocker(c.Value.Type()) {
+			return s, nil, 0
+		}
 		return s, targets, 0
 	}
 	if c.StaticCallee() != nil {
@@ -438,6 +441,15 @@ func (m *Model) resolve(fr *frame, site ssa.CallInstruction) (*shape, []*ssa.Fun
 		return s, []*ssa.Function{a.fn}, closure
 	}
 	return s, targets, closure
+}
+
+// isLocker tells whether t is sync.Locker. Which lock is behind one is not
+// guessed from all the locks there are, each time anew: Lock and Unlock of one
+// field would be calls of two different locks. A lock behind a Locker counts
+// where its type is known.
+func isLocker(t types.Type) bool {
+	n, ok := types.Unalias(t).(*types.Named)
+	return ok && n.Obj().Pkg() != nil && n.Obj().Pkg().Path() == "sync" && n.Obj().Name() == "Locker"
 }
 
 func (m *Model) method(t types.Type, obj *types.Func) *ssa.Function {
