@@ -64,6 +64,7 @@ type unitQueue struct {
 	byKey map[unitKey]*unit
 	even  map[unitKey]bool // answers of evenUnit
 	order map[*fnInfo]int
+	last  map[*fnInfo]int // highest number of the function's component
 	heap  unitHeap
 	all   []*unit
 	now   *unit
@@ -92,7 +93,7 @@ func (h *unitHeap) Pop() any {
 func (m *Model) findStarts() {
 	q := &m.units
 	q.byKey, q.even = map[unitKey]*unit{}, map[unitKey]bool{}
-	q.order = m.bottomUp()
+	q.order, q.last = m.bottomUp()
 	if m.rule.Each == nil {
 		for _, fn := range m.sh.fns {
 			if fi, ok := m.fnOf[fn]; ok && fi.cone && !m.isEventFunc(fn) && fn.Blocks != nil {
@@ -124,13 +125,11 @@ func (m *Model) findStarts() {
 }
 
 // bottomUp numbers the functions of the cone, callees (and closures) before
-// callers as far as recursion allows.
-func (m *Model) bottomUp() map[*fnInfo]int {
-	order := map[*fnInfo]int{}
-	type frame struct {
-		fi   *fnInfo
-		next []*fnInfo
-	}
+// callers; those of one strongly connected component follow each other, and
+// last holds the highest number of each one's component. Tarjan, Depth-first
+// search and linear graph algorithms, 1972.
+func (m *Model) bottomUp() (order, last map[*fnInfo]int) {
+	order, last = map[*fnInfo]int{}, map[*fnInfo]int{}
 	callees := func(fi *fnInfo) []*fnInfo {
 		var out []*fnInfo
 		for _, b := range fi.fn.Blocks {
@@ -151,30 +150,62 @@ func (m *Model) bottomUp() map[*fnInfo]int {
 		}
 		return out
 	}
-	seen := map[*fnInfo]bool{}
+	type frame struct {
+		fi   *fnInfo
+		next []*fnInfo
+	}
+	index, low := map[*fnInfo]int{}, map[*fnInfo]int{}
+	var open []*fnInfo // met, not yet in a component
+	closed := map[*fnInfo]bool{}
+	var stack []frame
+	enter := func(fi *fnInfo) {
+		index[fi] = len(index) + 1
+		low[fi] = index[fi]
+		open = append(open, fi)
+		stack = append(stack, frame{fi, callees(fi)})
+	}
 	for _, fn := range m.sh.fns {
 		fi, ok := m.fnOf[fn]
-		if !ok || !fi.cone || seen[fi] {
+		if !ok || !fi.cone || index[fi] != 0 {
 			continue
 		}
-		seen[fi] = true
-		stack := []frame{{fi, callees(fi)}}
+		enter(fi)
 		for len(stack) > 0 {
 			top := &stack[len(stack)-1]
-			if len(top.next) == 0 {
-				order[top.fi] = len(order)
-				stack = stack[:len(stack)-1]
+			if len(top.next) > 0 {
+				g := top.next[0]
+				top.next = top.next[1:]
+				switch {
+				case index[g] == 0:
+					enter(g)
+				case !closed[g]:
+					low[top.fi] = min(low[top.fi], index[g])
+				}
 				continue
 			}
-			g := top.next[0]
-			top.next = top.next[1:]
-			if !seen[g] {
-				seen[g] = true
-				stack = append(stack, frame{g, callees(g)})
+			f := top.fi
+			stack = stack[:len(stack)-1]
+			if len(stack) > 0 {
+				up := stack[len(stack)-1].fi
+				low[up] = min(low[up], low[f])
+			}
+			if low[f] != index[f] {
+				continue
+			}
+			first := slices.Index(open, f)
+			part := open[first:]
+			open = open[:first]
+			// Within a component the one met last is deepest: it comes first.
+			for k := len(part) - 1; k >= 0; k-- {
+				closed[part[k]] = true
+				order[part[k]] = len(order)
+			}
+			for _, g := range part {
+				last[g] = len(order) - 1
 			}
 		}
 	}
-	return order
+	return order, last
 }
 
 func (m *Model) addUnit(k unitKey) *unit {
@@ -424,7 +455,7 @@ func (m *Model) evenUnit(k unitKey) bool {
 	even := false
 	if u, ok := q.byKey[k]; ok {
 		even = u.settled && u.closed
-	} else if q.done || q.now != nil && q.order[k.fn] < q.now.pos {
+	} else if q.done || q.now != nil && q.last[k.fn] < q.now.pos {
 		even = true // none of its callees does anything that is not closed
 	}
 	q.even[k] = even

@@ -28,7 +28,7 @@ type Options struct {
 const (
 	// A start that is judged at all needs a few hundred steps, rarely thousands;
 	// one that takes more than this takes without end (an explosion of contexts).
-	DefaultSteps  = 4_000
+	DefaultSteps  = 10_000
 	DefaultCauses = 20
 )
 
