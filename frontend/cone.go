@@ -101,6 +101,21 @@ func (m *Model) buildCone() {
 			push(fi)
 		}
 	}
+	for _, n := range m.namings() {
+		fi := m.info(n.fn)
+		before := len(fi.subjList)
+		born := fi.direct
+		for _, o := range m.origins(fi, n.v) {
+			m.addSubject(fi, o)
+			if o.b == nil && o.s != 0 && fi.subjects[o.s] && !slices.Contains(fi.own, o.s) {
+				fi.own = append(fi.own, o.s)
+			}
+		}
+		if len(fi.subjList) > before || fi.direct && !born {
+			fi.cone, fi.near = true, true
+			push(fi)
+		}
+	}
 	for _, mc := range m.sh.boundEvents(m.rule) {
 		// Whoever calls the method value later: the instance is named here.
 		if fn := mc.Parent(); !m.isEventFunc(fn) && valueUsed(mc) {
@@ -146,6 +161,59 @@ func (m *Model) buildCone() {
 		}
 	}
 	m.coverBirths()
+}
+
+// naming is a place where an instance that stays gets a name elsewhere: its
+// address is stored or returned.
+type naming struct {
+	fn *ssa.Function
+	v  ssa.Value
+}
+
+// namings lists the places where the address of an instance is stored or
+// returned, in a fixed order. An instance that moves is followed anyhow.
+func (m *Model) namings() []naming {
+	if m.rule.Moves || m.eventBirths || m.rule.Each == nil {
+		return nil
+	}
+	named := map[*types.TypeName]bool{}
+	for _, t := range m.rule.Each.Types {
+		if p, ok := t.(*types.Pointer); ok {
+			t = p.Elem()
+		}
+		if n, ok := types.Unalias(t).(*types.Named); ok && !types.IsInterface(n) {
+			named[n.Origin().Obj()] = true
+		}
+	}
+	var out []naming
+	add := func(fn *ssa.Function, v ssa.Value) {
+		p, ok := v.Type().(*types.Pointer)
+		if !ok {
+			return
+		}
+		n, ok := types.Unalias(p.Elem()).(*types.Named)
+		if !ok || !named[n.Origin().Obj()] || m.isEventFunc(fn) {
+			return
+		}
+		if _, ok := v.(*ssa.Const); !ok {
+			out = append(out, naming{fn, v})
+		}
+	}
+	for _, fn := range m.sh.fns {
+		for _, b := range fn.Blocks {
+			for _, i := range b.Instrs {
+				switch i := i.(type) {
+				case *ssa.Store:
+					add(fn, i.Val)
+				case *ssa.Return:
+					for _, r := range i.Results {
+						add(fn, r)
+					}
+				}
+			}
+		}
+	}
+	return out
 }
 
 // maxPath bounds the loads on the way from a root's parameter to an instance.

@@ -255,7 +255,7 @@ func (m *Model) Exit(q pds.StateID) properties.Exit {
 	e.Outside = ns.outside
 	e.Named = len(ns.names) > 0
 	for _, n := range ns.names {
-		e.Armed = e.Armed || m.armed(n, true)
+		e.Armed = e.Armed || m.armed(n, true) || m.renamed(n)
 		switch m.x.rootKind(n) {
 		case kResult:
 			if s.exit == properties.ExitReturn && s.outcome != properties.Failure {

@@ -89,6 +89,23 @@ func (m *Model) armed(e Expr, leaves bool) bool {
 	return false
 }
 
+// renamed tells whether e, at an exit of the unit that is being judged, is a
+// name by which the caller knows an instance that stays under another one: its
+// address was stored, or is a result.
+func (m *Model) renamed(e Expr) bool {
+	if m.rule.Moves || m.eventBirths || m.units.now == nil || m.units.now.u == e {
+		return false
+	}
+	switch m.x.nodes[e].kind {
+	case kResult:
+		return true
+	case kLoad:
+		k := m.x.rootKind(e)
+		return k == kParam || k == kFree || k == kGlobal || k == kResult
+	}
+	return false
+}
+
 // reaches tells whether e is a name under val, or under what the closure val captures.
 func (m *Model) reaches(e Expr, val ssa.Value) bool {
 	if m.x.within(m.x.name(val), e) {

@@ -133,7 +133,8 @@ type Exit struct {
 	// Named: the instance has a name that whoever is returned to may know it by.
 	Named bool
 	// Armed: a function value that does something to the instance when it is
-	// called leaves the function; its callers have to follow it.
+	// called leaves the function, or a new name of the instance; callers have to
+	// follow it.
 	Armed bool
 	// True is set if the last result is a bool known to be true, False if known
 	// to be false (for contracts like TryTake).
