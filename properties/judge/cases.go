@@ -2,6 +2,7 @@ package judge
 
 import (
 	"fmt"
+	"slices"
 
 	"pathtally/properties"
 )
@@ -12,11 +13,12 @@ var factors = []int64{8, 64}
 // answerCase decides one way of breaking a claim that is no single inequality:
 // is there one path on which all of several inequalities w·c > b are true?
 //
-// Exact answers take the count image. Two cheap ones come first, and each is
-// proof: if all are true on a path, then so is every sum of them with positive
+// Exact answers take the count image (image.go). Two cheap ones come first, and
+// each is proof: if all are true on a path, then so is every sum of them with positive
 // factors, Σ λ(w·c) ≥ Σ λ(b+1), so a greatest weight below that excludes the
 // case; and a path past such a sum that makes them all true breaks the claim.
-// What neither decides is undecided.
+// The image decides what they leave, within its budget and where no doubt
+// matters; what remains is undecided.
 func (j *judge) answerCase(si int, c *properties.Claim, all []properties.Question) answered {
 	s := &j.starts[si]
 	if len(all) == 0 {
@@ -24,6 +26,7 @@ func (j *judge) answerCase(si int, c *properties.Claim, all []properties.Questio
 	}
 	var notes []properties.Note
 	var base ask
+	strict := slices.Clone(all) // with what contracts excuse
 	for i := range all {
 		x, stop := j.suspect(si, c, &all[i])
 		if stop != nil {
@@ -40,6 +43,7 @@ func (j *judge) answerCase(si int, c *properties.Claim, all []properties.Questio
 			return answered{ground: x.ground}
 		}
 		notes = append(notes, x.notes...)
+		strict[i].Bound = x.bound
 		base = x.a
 	}
 	if len(all) == 1 {
@@ -78,6 +82,29 @@ func (j *judge) answerCase(si int, c *properties.Claim, all []properties.Questio
 		if fits(t.total()) {
 			return j.causes(si, c, &sums[i], base, sums[i].Bound, notes, fits)
 		}
+	}
+	reason := ""
+	if im, ok := j.s.(imager); ok {
+		b := im.together(j.asks(s, c, sums[0].Weights), all)
+		switch {
+		case b.none:
+			return answered{ground: fmt.Sprintf("no path makes all %d inequalities true at once (count image)", len(all))}
+		case b.path != nil && len(notes) > 0:
+			b = im.together(base, strict) // a path that no contract excuses
+		}
+		if b.path != nil {
+			old := j.s
+			j.s = &pathFirst{searcher: old, path: b.path}
+			defer func() { j.s = old }()
+			base.weights, base.mend = sums[0].Weights, false
+			return j.causes(si, c, &sums[0], base, sums[0].Bound, notes, fits)
+		}
+		reason = b.budget
+	}
+	if reason != "" {
+		o := j.openFor(s, c, fmt.Sprintf("budget of the count image: %s", reason), 0)
+		o.SoFar = "each of the inequalities alone is true on some path"
+		return answered{verdict: Undecided, open: o}
 	}
 	o := j.openFor(s, c, fmt.Sprintf("form of the claim: it asks for %d inequalities on one path, which takes the set of all count vectors", len(all)), 0)
 	o.SoFar = "each of them alone is true on some path"
