@@ -259,6 +259,11 @@ func (m *Model) addSubject(fi *fnInfo, o origin) bool {
 	if m.eventBirths || m.x.hasGhost(o.s) {
 		return false // instances of this rule are born at its events only; elements where they are selected
 	}
+	if m.x.nodes[o.s].kind == kLoad {
+		if t := m.typeOf(fi.fn, o.s); t != nil && isLocker(t) {
+			return false // mostly a lock of the struct around it, which has a name of its own
+		}
+	}
 	switch o.b.(type) {
 	case *ssa.Alloc:
 		if m.x.loads[o.n] > 0 {
