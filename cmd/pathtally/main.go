@@ -6,6 +6,7 @@ import (
 	"io"
 	"os"
 	"os/signal"
+	"runtime/debug"
 	"strings"
 
 	"context"
@@ -28,6 +29,11 @@ const (
 )
 
 func main() {
+	if os.Getenv("GOGC") == "" {
+		// A run allocates what it keeps: collecting less often costs memory for a
+		// while and saves a fifth of the time.
+		debug.SetGCPercent(250)
+	}
 	ctx, stop := signal.NotifyContext(context.Background(), os.Interrupt)
 	status := run(ctx, os.Args[1:], streams{out: os.Stdout, err: os.Stderr,
 		outTerminal: term.IsTerminal(int(os.Stdout.Fd())), errTerminal: term.IsTerminal(int(os.Stderr.Fd())),
