@@ -2,6 +2,7 @@ package frontend
 
 import (
 	"container/heap"
+	"go/types"
 	"slices"
 
 	"golang.org/x/tools/go/ssa"
@@ -355,11 +356,15 @@ func (m *Model) finishStarts() {
 		}
 		answered[u] = true
 		for _, c := range children[u.unitKey] {
+			if isIterator(c.fn.fn) && c.fn.fn.Parent() == u.fn.fn {
+				continue // made there; whoever ranges over it runs it
+			}
 			mark(c)
 		}
 	}
 	for _, u := range q.all {
-		if !u.start.Inner {
+		// One that is closed was asked with all that it calls.
+		if !u.start.Inner || u.closed {
 			mark(u)
 		}
 	}
@@ -403,6 +408,17 @@ func (m *Model) finishStarts() {
 		}
 	}
 	m.starts = starts
+}
+
+// isIterator tells whether fn is a closure for a range statement: its only
+// parameter is the function that is called with each element.
+func isIterator(fn *ssa.Function) bool {
+	ps := fn.Signature.Params()
+	if fn.Parent() == nil || ps.Len() != 1 || fn.Signature.Results().Len() != 0 {
+		return false
+	}
+	yield, ok := ps.At(0).Type().Underlying().(*types.Signature)
+	return ok && yield.Results().Len() == 1 && isBool(yield.Results().At(0).Type())
 }
 
 // followed tells whether another function follows the unit.
