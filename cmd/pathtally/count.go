@@ -145,7 +145,8 @@ type subject struct {
 	model properties.Model // nil for a system
 	rule  *properties.ResolvedRule
 	sys   *parikh.System
-	both  int // steps whose effect is in doubt; both ways are in the image
+	opt   parikh.SystemOptions // that sys was made with
+	both  int                  // steps whose effect is in doubt; both ways are in the image
 }
 
 func count(ctx context.Context, s streams, f *countFlags, args []string) error {
@@ -249,7 +250,7 @@ func systemSubject(f *countFlags) ([]*subject, error) {
 		if len(t.Starts()) > 1 {
 			title += fmt.Sprintf(", from %s %s", t.StateName(h.State), t.SymbolName(h.Symbol))
 		}
-		out = append(out, &subject{title: title, sys: sys})
+		out = append(out, &subject{title: title, start: properties.Start{Head: h}, sys: sys, opt: opt})
 	}
 	return out, nil
 }
@@ -467,7 +468,8 @@ func (u *subject) build(f *countFlags) error {
 	if err != nil {
 		return err
 	}
-	u.sys, err = parikh.NewSystem(t, u.start.Head, parikh.SystemOptions{Accept: accept, Question: q, Budget: f.steps})
+	u.opt = parikh.SystemOptions{Accept: accept, Question: q, Budget: f.steps}
+	u.sys, err = parikh.NewSystem(t, u.start.Head, u.opt)
 	if err != nil {
 		return engineFailure(u.title, err)
 	}
@@ -708,7 +710,7 @@ func examine(ctx context.Context, f *countFlags, u *subject) (*countImage, error
 			for _, c := range a.Choices {
 				im.Data = append(im.Data, dataText(u.sys.Table, c))
 			}
-			if err := u.path(a, im); err != nil {
+			if err := u.path(ctx, a, im); err != nil {
 				return nil, err
 			}
 		}
@@ -785,8 +787,24 @@ func askFailure(text string, names []string, err error) error {
 }
 
 // path adds the path of an answer.
-func (u *subject) path(a parikh.Answer, im *countImage) error {
+func (u *subject) path(ctx context.Context, a parikh.Answer, im *countImage) error {
 	w, err := u.sys.Path(a)
+	if errors.Is(err, parikh.ErrNoDerivation) {
+		// What merged productions stand for need not fit together: ask for the same
+		// counts once more, with productions as they are.
+		opt := u.opt
+		opt.Plain = true
+		plain, err2 := parikh.NewSystem(u.sys.Table, u.start.Head, opt)
+		if err2 != nil {
+			return engineFailure(u.title, err2)
+		}
+		b := plain.Ask(ctx, plain.Is(a.Counts))
+		if b.Status == parikh.Unknown {
+			im.NoPath = fmt.Sprintf("a path was not found: the budget of %s ran out", b.Budget)
+			return nil
+		}
+		w, err = plain.Path(b)
+	}
 	if errors.Is(err, parikh.ErrTooLong) {
 		im.NoPath = "the path is too long to be written out"
 		return nil

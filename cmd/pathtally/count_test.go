@@ -216,6 +216,61 @@ func TestCountFunction(t *testing.T) {
 	}
 }
 
+// Every answer of a function with a loop and two ways through it has its path.
+func TestCountPaths(t *testing.T) {
+	dir := module(t, map[string]string{"m.go": `package m
+
+type Desk struct{ n int }
+
+func (d *Desk) Six() { d.n += 6 }
+func (d *Desk) Two() { d.n += 2 }
+
+func Use(d *Desk, more []bool) {
+	for _, m := range more {
+		if m {
+			d.Six()
+			d.Two()
+			d.Six()
+		} else {
+			d.Two()
+			d.Six()
+			d.Two()
+		}
+	}
+}
+`, "pathtally.rules": `import "example/m"
+
+rule desk {
+  each d *m.Desk stays
+  count six: call (*m.Desk).Six on d
+  count two: call (*m.Desk).Two on d
+  claim apart at end: six != 3 || two != 3
+  claim uneven at end: six != 2 || two != 2
+}
+`})
+	for _, ask := range []string{"six == 2", "six == 3 && two == 3", "six == 20", "two == 2*six"} {
+		status, out, errs := start(t, "count", "-C", dir, "Use", "--rule", "desk", "--ask", ask, "--format", "json")
+		var r countResult
+		if err := json.Unmarshal([]byte(out), &r); err != nil || status != exitHolds {
+			t.Fatalf("%s: %d %v\n%s%s", ask, status, err, out, errs)
+		}
+		path := r.Images[0].Path
+		for name, n := range r.Images[0].With {
+			if len(path) == 0 || path[len(path)-1].Counts[name] != n.Int64() {
+				t.Errorf("%s: the path does not end in %v\n%s", ask, r.Images[0].With, out)
+			}
+		}
+	}
+	// Claims that take the count image are judged.
+	status, out, errs := start(t, "check", "-C", dir, "--only", "desk/apart")
+	if status != exitBroken || !strings.Contains(out, "3 != 3 is false") {
+		t.Errorf("apart: %d\n%s%s", status, out, errs)
+	}
+	if status, out, errs := start(t, "check", "-C", dir, "--only", "desk/uneven"); status != exitHolds {
+		t.Errorf("uneven: %d\n%s%s", status, out, errs)
+	}
+}
+
 // foldSets keeps the union.
 func TestFoldSets(t *testing.T) {
 	v := func(n ...int64) []*big.Int {

@@ -23,7 +23,7 @@ func TestReadme(t *testing.T) {
 	if !strings.Contains(out, shown) {
 		t.Errorf("the README shows\n%s\na run prints\n%s%s", shown, out, errs)
 	}
-	known := checkHelp + acceptHelp + joinHelp + rulesHelp + rootHelp
+	known := checkHelp + countHelp + exportHelp + acceptHelp + joinHelp + rulesHelp + rootHelp
 	for _, word := range strings.FieldsFunc(string(text), func(r rune) bool { return !(r == '-' || r >= 'a' && r <= 'z' || r >= 'A' && r <= 'Z') }) {
 		if strings.HasPrefix(word, "--") && len(word) > 4 && strings.Trim(word, "-") != "" && !strings.Contains(known, word) {
 			t.Errorf("the README names %s, which no help has", word)
@@ -33,7 +33,7 @@ func TestReadme(t *testing.T) {
 
 // Help fits a screen.
 func TestHelpFitsAScreen(t *testing.T) {
-	for name, text := range map[string]string{"pathtally": rootHelp, "check": checkHelp, "accept": acceptHelp, "rules": rulesHelp, "join": joinHelp, "completion": completionHelp} {
+	for name, text := range map[string]string{"pathtally": rootHelp, "check": checkHelp, "accept": acceptHelp, "rules": rulesHelp, "join": joinHelp, "count": countHelp, "export": exportHelp, "completion": completionHelp} {
 		lines := strings.Split(strings.TrimSuffix(text, "\n"), "\n")
 		if len(lines) > 24 {
 			t.Errorf("%s: %d lines", name, len(lines))

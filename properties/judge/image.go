@@ -69,7 +69,7 @@ func (g *engine) together(a ask, all []properties.Question) both {
 		}
 		wide.Prods = append(wide.Prods, twin)
 	}
-	im, answer := askImage(wide, all)
+	answer := askImage(wide, all, false).answer
 	switch answer.Status {
 	case parikh.No:
 		return both{none: true}
@@ -81,15 +81,18 @@ func (g *engine) together(a ask, all []properties.Question) both {
 		if sg, err = g.e.Grammar(a.start, accepting(a), q); err != nil {
 			return both{}
 		}
-		if im, answer = askImage(g.grammar(sg), all); answer.Status != parikh.Yes {
-			return both{budget: answer.Budget}
-		}
 	}
-	d, err := parikh.Derive(im.Grammar(), answer.Productions())
+	// A path is asked of productions as they are: what merged ones stand for need
+	// not fit together.
+	exact := askImage(g.grammar(sg), all, true)
+	if exact.answer.Status != parikh.Yes {
+		return both{budget: exact.answer.Budget}
+	}
+	d, err := parikh.Derive(exact.image.Grammar(), exact.answer.Productions())
 	if err != nil {
 		panic("judge: an answer of a count image is no derivation: " + err.Error())
 	}
-	w, err := (&parikh.System{Image: im, Start: a.start, Summary: sg}).Word(d)
+	w, err := (&parikh.System{Image: exact.image, Start: a.start, Summary: sg}).Word(d)
 	if err != nil {
 		return both{budget: "the length of a path"}
 	}
@@ -109,9 +112,15 @@ func (g *engine) grammar(sg *summary.Grammar) *parikh.Grammar {
 	return parikh.FromSummary(sg, counts, func(p summary.Production) []int64 { return g.m.Vector(p.Effect) }, nil)
 }
 
-// askImage asks for a derivation on which all inequalities are true.
-func askImage(g *parikh.Grammar, all []properties.Question) (*parikh.Image, parikh.Answer) {
-	im := parikh.New(g, parikh.Options{Solver: lia.Options{MaxNodes: imageNodes, MaxPivots: imagePivots}})
+type asked struct {
+	image  *parikh.Image
+	answer parikh.Answer
+}
+
+// askImage asks for a derivation on which all inequalities are true. plain keeps
+// productions apart that could be merged.
+func askImage(g *parikh.Grammar, all []properties.Question, plain bool) asked {
+	im := parikh.New(g, parikh.Options{Plain: plain, Solver: lia.Options{MaxNodes: imageNodes, MaxPivots: imagePivots}})
 	var fs []lia.Formula
 	for i := range all {
 		var terms []lia.Lin
@@ -120,7 +129,7 @@ func askImage(g *parikh.Grammar, all []properties.Question) (*parikh.Image, pari
 		}
 		fs = append(fs, lia.GT(lia.Sum(terms...), lia.Const(all[i].Bound)))
 	}
-	return im, im.Ask(context.Background(), lia.And(fs...))
+	return asked{im, im.Ask(context.Background(), lia.And(fs...))}
 }
 
 // pathFirst is a searcher that has one path to give.
