@@ -157,8 +157,9 @@ func (j *judge) causeInSpawned(s *properties.Start, a ask, bound int64, t *trace
 
 // decides says whether a fork of activation act can be what loses the instance
 // for the blamed one: it stands in it or below it, and not in a call that
-// returned as usual and either opened the instance and is right on its own, or
-// leaves the counts as they are whatever it does.
+// returned as usual and either opened the instance and is right on its own or
+// keeps a contract, or leaves the counts as they are whatever it does, or tells
+// its caller by its error what it left.
 func (j *judge) decides(s *properties.Start, a ask, bound int64, t *trace, act, blamed, opening int, by leaving) (bool, *stopped) {
 	if !t.inside(act, blamed) {
 		return false, nil
@@ -168,11 +169,15 @@ func (j *judge) decides(s *properties.Start, a ask, bound int64, t *trace, act, 
 			continue
 		}
 		if opening >= 0 && t.inside(t.moves[opening].act, act) {
-			right, _, stop := j.alone(s, a, bound, t, act, by)
-			if stop != nil || right {
+			right, contract, stop := j.alone(s, a, bound, t, act, by)
+			if stop != nil || right || contract {
 				return false, stop
 			}
 			continue
+		}
+		own, stop := j.surplusOf(t.acts[act].entry, s.Born, direction(a.weights))
+		if stop != nil || own.told {
+			return false, stop
 		}
 		all, stop := j.span(t.acts[act].entry, a.weights, func(properties.Exit) bool { return true })
 		if stop != nil || all.is(0) {

@@ -14,6 +14,9 @@ type surplus struct {
 	uniform bool
 	success int64 // on exactly the returns that say success, none on the others; meaningful if split
 	split   bool
+	// told: it is not uniform, but what is left is the same on all returns whose
+	// error is nil and on all others, and every return says which it is.
+	told bool
 	// onFailure: a return whose error is known not to be nil leaves it too.
 	onFailure bool
 }
@@ -104,12 +107,29 @@ func (j *judge) surplusOf(head pds.Head, born bool, u []int64) (surplus, *stoppe
 		if stop != nil {
 			return s, stop
 		}
+		if s.told, stop = j.tells(head, u, normal); stop != nil {
+			return s, stop
+		}
 		if mute.none && no.is(0) && !yes.none && yes.ok && yes.lo == yes.hi {
 			s.split, s.success = true, yes.lo
 		}
 	}
 	j.surpluses[key] = s
 	return s, nil
+}
+
+// tells says whether a function's error tells what it left on the ledger u.
+func (j *judge) tells(head pds.Head, u []int64, normal func(properties.Exit) bool) (bool, *stopped) {
+	for _, o := range []properties.Outcome{properties.Success, properties.Failure} {
+		p, stop := j.span(head, u, func(e properties.Exit) bool { return normal(e) && e.Outcome == o })
+		if stop != nil || p.none || !p.ok || p.lo != p.hi {
+			return false, stop
+		}
+	}
+	mute, stop := j.span(head, u, func(e properties.Exit) bool {
+		return normal(e) && e.Outcome != properties.Success && e.Outcome != properties.Failure
+	})
+	return mute.none, stop
 }
 
 // An excuse is a contract that explains an answer.
