@@ -624,6 +624,28 @@ func (m *Model) assume(fr *frame, v ssa.Value, truth bool, at *ssa.BasicBlock) b
 	return true
 }
 
+// asksType is the parameter of which fn answers whether it has some type, and
+// does nothing else: a nil interface has none. -1 if fn is not of that kind.
+func asksType(fn *ssa.Function) int {
+	if len(fn.Blocks) != 1 {
+		return -1
+	}
+	for _, instr := range fn.Blocks[0].Instrs {
+		ret, ok := instr.(*ssa.Return)
+		if !ok || len(ret.Results) != 1 {
+			continue
+		}
+		if e, ok := ret.Results[0].(*ssa.Extract); ok && e.Index == 1 {
+			if ta, ok := e.Tuple.(*ssa.TypeAssert); ok {
+				if p, ok := ta.X.(*ssa.Parameter); ok {
+					return slices.Index(fn.Params, p)
+				}
+			}
+		}
+	}
+	return -1
+}
+
 // errorTest is the error that a call asks about, if its answer true says that
 // the error is not nil: errors.Is with a target that is not nil, errors.As, and
 // the older questions of package os. Source: the documentation of the standard library.
@@ -631,6 +653,9 @@ func (m *Model) errorTest(c *ssa.Call) ssa.Value {
 	fn := c.Call.StaticCallee()
 	if fn == nil || len(c.Call.Args) == 0 {
 		return nil
+	}
+	if i := asksType(fn); i >= 0 && i < len(c.Call.Args) {
+		return c.Call.Args[i]
 	}
 	obj := funcObject(fn)
 	if obj == nil {
