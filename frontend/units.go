@@ -372,7 +372,7 @@ func (m *Model) finishStarts() {
 	for _, strict := range []bool{true, false} {
 		for i := len(q.all) - 1; i >= 0; i-- {
 			u := q.all[i]
-			if u.closed || answered[u] || strict && m.followed(u) || !m.named(u.fn.fn) {
+			if u.closed || answered[u] || strict && m.followed(u) || !m.named(u.fn.fn) || m.unreached(u.fn.fn) {
 				continue
 			}
 			u.start.Inner, u.start.Kind = false, "cover"
@@ -408,6 +408,27 @@ func (m *Model) finishStarts() {
 		}
 	}
 	m.starts = starts
+}
+
+// unreached tells whether fn is a method on no call path: nobody outside its
+// package can name it, nothing in sight calls it or takes its value, and where
+// a method of its name is called through an interface, others are meant. (One
+// that nothing at all calls is covered: its callers are still to be written.)
+func (m *Model) unreached(fn *ssa.Function) bool {
+	obj := funcObject(fn)
+	if obj == nil || obj.Exported() || fn.Signature.Recv() == nil || fn.Parent() != nil || m.sh.taken[fn] || len(m.sh.callers[fn]) > 0 {
+		return false
+	}
+	dispatched := false
+	for _, site := range m.sh.byName[obj.Name()] {
+		if site.Common().IsInvoke() {
+			if len(m.sh.targets[site]) == 0 {
+				return false
+			}
+			dispatched = true
+		}
+	}
+	return dispatched
 }
 
 // isIterator tells whether fn is a closure for a range statement: its only
