@@ -1266,8 +1266,15 @@ func (m *Model) deferRule(fr *frame, d *ssa.Defer) pds.Rule {
 	if outerDefer(d) {
 		return m.deferOutside(after, fr, d)
 	}
+	var fs factset
+	if !d.Call.IsInvoke() && d.Call.StaticCallee() == nil {
+		// The function is the one of now, whatever its variable holds later.
+		if a := m.absOf(fr, d.Call.Value, fr.b); m.t.abs[a].kind == aFunc {
+			fs = fs.with(m.key(d.Call.Value, fr.b), a).with(m.x.reg(d.Call.Value), a)
+		}
+	}
 	return pds.Rule{Kind: pds.Push, State: runState, Top: m.point(after),
-		Below: m.symbol(symbol{kind: symDeferred, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i), ns: m.t.nset(pushed)}),
+		Below: m.symbol(symbol{kind: symDeferred, fn: int32(fr.fi.id), blk: int32(fr.b.Index), idx: int32(fr.i), ns: m.t.nset(pushed), fs: m.t.factset(fs)}),
 		Label: m.label(label{kind: lblDefer, instr: d})}
 }
 
@@ -1392,6 +1399,9 @@ func (m *Model) runDeferred(st state, sym symbol, dst []pds.Rule) []pds.Rule {
 		for _, e := range pushed.names {
 			at.ns.add(e)
 		}
+	}
+	for _, f := range m.t.facts[sym.fs] {
+		at.fs = at.fs.with(f.key, f.val)
 	}
 	if b, ok := d.Call.Value.(*ssa.Builtin); ok {
 		if b.Name() == "panic" {
