@@ -44,12 +44,38 @@ func (m *Model) linkOf(site ssa.CallInstruction, g *ssa.Function, closure Expr) 
 		l.vals = append(l.vals, c.Value)
 	} else if mc, ok := c.Value.(*ssa.MakeClosure); ok {
 		l.made = mc
+	} else if mc := onlyClosure(c.Value, g); mc != nil {
+		l.made = mc
 	}
 	for _, a := range c.Args {
 		l.args = append(l.args, m.x.name(a))
 		l.vals = append(l.vals, a)
 	}
 	return l
+}
+
+// onlyClosure is the closure that a variable of the function holds, if g is made
+// once in it, is all that is ever stored to the variable, and nothing outside stores to it.
+func onlyClosure(v ssa.Value, g *ssa.Function) *ssa.MakeClosure {
+	u, ok := v.(*ssa.UnOp)
+	if !ok {
+		return nil
+	}
+	a, ok := u.X.(*ssa.Alloc)
+	if !ok || storedOutside(a) {
+		return nil
+	}
+	var only *ssa.MakeClosure
+	for _, r := range *a.Referrers() {
+		if st, ok := r.(*ssa.Store); ok {
+			mc := closureOf(st.Val)
+			if mc == nil || mc.Fn != g || only != nil {
+				return nil
+			}
+			only = mc
+		}
+	}
+	return only
 }
 
 // callbackLink is the link of a function value that the callee of site calls.
