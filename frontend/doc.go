@@ -79,6 +79,11 @@
 // eight candidates are not followed (their candidates are judged on their own);
 // generic functions that nothing instantiates are left out.
 //
+// Not sound yet, and no assumption says so where it happens: an unknown function
+// value that no name of the instance leads to; an instance stored under a
+// parameter's field in some shapes; Goexit through interfaces. Package gentest
+// lists them (`open`).
+//
 // SSA is built with ssa.InstantiateGenerics. Read units.go next for where paths
 // start, lower.go for the walk, calls.go for what a call does.
 package frontend
